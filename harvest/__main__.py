@@ -1,0 +1,5 @@
+"""`python -m harvest` runs the command line."""
+
+from harvest.cli import main
+
+main()

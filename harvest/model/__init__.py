@@ -1,0 +1,1 @@
+"""The case, the batch, the coupled stack and the estimate."""

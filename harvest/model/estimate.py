@@ -1,0 +1,431 @@
+"""The estimate: solves a batch at its loads and works out what is reported."""
+
+from __future__ import annotations
+
+import dataclasses
+from dataclasses import dataclass
+
+import numpy as np
+
+from harvest.model.assessment import assess
+from harvest.model.batch import Batch
+from harvest.model.case import Case, case_hash
+from harvest.model.design import Design, Stream, design, maximum_power_load
+from harvest.model.pressure import PressureDrop, pressure_drop, side_drive_power
+from harvest.model.results import SCALARS, Estimate, Estimates, Rows
+from harvest.model.stack import (
+    MATCHED,
+    MAXIMUM_POWER,
+    OPEN_CIRCUIT,
+    Circuit,
+    Load,
+    StackProblem,
+    StackState,
+    solve_stack,
+)
+from harvest.physics.arrays import FloatArray, IntArray
+from harvest.physics.thermoelectrics import carnot_efficiency, hot_junction_heat
+from harvest.version import VERSION
+
+# Gauss-Legendre, five points on -1 to 1, for the integral of cp/T
+_POINTS, _WEIGHTS = np.polynomial.legendre.leggauss(5)
+
+
+@dataclass(frozen=True)
+class Solution:
+    """A solved batch at one load, with what follows from the state row by row, (rows, cases) unless said."""
+
+    state: StackState
+    active: FloatArray
+    share: FloatArray
+    seebeck: FloatArray
+    resistance: FloatArray
+    conductance: FloatArray
+    row_current: FloatArray
+    module_heat: FloatArray
+    module_power: FloatArray
+    hot_face: FloatArray
+    cold_face: FloatArray
+    hot_metal: FloatArray
+    cold_metal: FloatArray
+    hot_heat: FloatArray
+    cold_heat: FloatArray
+    hot_outlet: FloatArray
+    cold_outlet: FloatArray
+
+    def total(self, per_module: FloatArray) -> FloatArray:
+        """Sum of a quantity of one module over the whole stack, (cases,)."""
+        return np.asarray((per_module * self.share).sum(axis=0))
+
+    def largest(self, values: FloatArray) -> FloatArray:
+        """Largest value along the rows that a case has, (cases,)."""
+        return np.asarray(np.where(self.active > 0, values, -np.inf).max(axis=0))
+
+    def smallest(self, values: FloatArray) -> FloatArray:
+        """Smallest value along the rows that a case has, (cases,)."""
+        return np.asarray(np.where(self.active > 0, values, np.inf).min(axis=0))
+
+
+def terminal_power(problem: StackProblem, state: StackState) -> FloatArray:
+    """DC power at the terminals [W], (cases,)."""
+    return np.asarray(problem.circuit.parallel * (state.current * state.string_voltage).sum(axis=0))
+
+
+def _side_heat(
+    stream: Stream, problem: StackProblem, solution_wall: FloatArray, outlet: FloatArray, share: FloatArray
+) -> FloatArray:
+    """Heat that a stream gives by its enthalpies, or a reservoir by its film [W], (cases,)."""
+    if stream.fluid is not None:
+        ends = stream.fluid.enthalpy(np.stack([stream.inlet_temperature, outlet]))
+        return stream.mass_flow * (ends[0] - ends[1])
+    side = problem.hot if stream.name == "hot" else problem.cold
+    conductance = side.film_conductance / (1.0 + side.film_conductance * side.wall_resistance)
+    return np.asarray((conductance * (side.inlet_temperature - solution_wall) * share).sum(axis=0))
+
+
+def unfold(made: Design, problem: StackProblem, state: StackState) -> Solution:
+    """Work out heat flows and face temperatures of a solved state."""
+    rows = np.arange(problem.rows)[:, None]
+    active = (rows < problem.active_rows).astype(float)
+    per_row = made.module_count / problem.active_rows
+    lengths = np.diff(np.append(problem.circuit.block_starts, problem.rows))
+    current = state.current[np.repeat(np.arange(len(lengths)), lengths)]
+    seebeck, resistance, conductance = problem.module.parameters(state.hot_junction, state.cold_junction)[:3]
+    difference = state.hot_junction - state.cold_junction
+    heat = hot_junction_heat(seebeck, resistance, conductance, state.hot_junction, state.cold_junction, current)
+    power = current * (seebeck * difference - current * resistance)
+    share = active * per_row
+    hot_q = (
+        heat
+        + problem.bypass * (state.hot_wall - state.cold_wall)
+        + problem.loss * (state.hot_wall - problem.ambient_temperature)
+    )
+    cold_q = heat - power + problem.bypass * (state.hot_wall - state.cold_wall)
+    return Solution(
+        state=state,
+        active=active,
+        share=share,
+        seebeck=seebeck,
+        resistance=resistance,
+        conductance=conductance,
+        row_current=current,
+        module_heat=heat,
+        module_power=power,
+        hot_face=state.hot_junction + heat * made.substrate_resistance,
+        cold_face=state.cold_junction - (heat - power) * made.substrate_resistance,
+        hot_metal=state.hot_wall + hot_q * problem.hot.wall_resistance,
+        cold_metal=state.cold_wall - cold_q * problem.cold.wall_resistance,
+        hot_heat=_side_heat(made.hot, problem, state.hot_wall, state.hot_stream[-1], share),
+        cold_heat=-_side_heat(made.cold, problem, state.cold_wall, state.cold_stream[0], share),
+        hot_outlet=state.hot_stream[-1],
+        cold_outlet=state.cold_stream[0],
+    )
+
+
+def _rows_apart(problem: StackProblem, segments: int) -> StackProblem:
+    """Return the same stack with a converter for every row and nothing lost in leads or diodes."""
+    starts = np.arange(0, problem.rows, segments, dtype=np.int64)
+    return dataclasses.replace(problem, circuit=_bare(problem.circuit, starts, independent=True))
+
+
+def _bare(circuit: Circuit, starts: IntArray, independent: bool) -> Circuit:
+    nothing = np.zeros_like(circuit.lead)
+    return dataclasses.replace(circuit, block_starts=starts, lead=nothing, diode_drop=nothing, independent=independent)
+
+
+def _spread_blocks(state: StackState, problem: StackProblem, to: StackProblem) -> StackState:
+    """Return a state of one wiring as the start for another wiring of the same stack."""
+    ends = np.searchsorted(problem.circuit.block_starts, to.circuit.block_starts, side="right") - 1
+    return dataclasses.replace(state, current=state.current[ends], string_voltage=state.string_voltage[ends])
+
+
+def _mismatch(problem: StackProblem, segments: int, load: Load, maximum: StackState, power: FloatArray) -> FloatArray:
+    """One less the maximum power over the maximum with every row on its own, both settled [-], (cases,)."""
+    circuit = problem.circuit
+    ideal = not (np.any(circuit.lead) or np.any(circuit.diode_drop) or load.lowest is not None)
+    if not ideal:
+        bare = dataclasses.replace(problem, circuit=_bare(circuit, circuit.block_starts, circuit.independent))
+        power = terminal_power(bare, solve_stack(bare, Load(MAXIMUM_POWER), maximum))
+    apart = _rows_apart(problem, segments)
+    state = solve_stack(apart, Load(MAXIMUM_POWER), _spread_blocks(maximum, problem, apart))
+    best = np.where(state.converged, terminal_power(apart, state), np.nan)
+    with np.errstate(invalid="ignore", divide="ignore"):
+        return 1.0 - power / best
+
+
+def _entropy_given(stream: Stream, outlet: FloatArray, heat: FloatArray) -> FloatArray:
+    """Entropy that a side gives away [W/K], (cases,): integral of m cp dT / T, or heat over a reservoir's temperature."""
+    if stream.fluid is None:
+        return heat / stream.inlet_temperature
+    middle, half = 0.5 * (stream.inlet_temperature + outlet), 0.5 * (stream.inlet_temperature - outlet)
+    points = middle + _POINTS[:, None] * half
+    return np.asarray(
+        stream.mass_flow * half * (_WEIGHTS[:, None] * stream.fluid.heat_capacity(points) / points).sum(axis=0)
+    )
+
+
+@dataclass(frozen=True)
+class Solved:
+    """All the solutions that an estimate stands on."""
+
+    made: Design
+    chosen: Solution
+    matched_power: FloatArray
+    maximum_power: FloatArray
+    open_circuit: Solution
+    mismatch: FloatArray
+    hot_drop: PressureDrop
+    cold_drop: PressureDrop
+
+
+def _solve(made: Design) -> Solved:
+    """Solve a design at its own load, matched, at the true maximum and without current."""
+    problem, batch = made.problem, made.batch
+    best_load = maximum_power_load(batch)
+    best = solve_stack(problem, best_load)
+    matched = solve_stack(problem, Load(MATCHED), best)
+    opened = solve_stack(problem, Load(OPEN_CIRCUIT), best)
+    ready = {MAXIMUM_POWER: best, MATCHED: matched, OPEN_CIRCUIT: opened}
+    state = ready.get(made.load.mode)
+    if state is None:
+        state = solve_stack(problem, made.load, matched)
+    for name, each in (("at its load", state), ("at maximum power", best), ("at matched load", matched)):
+        made.faults.add(~each.converged, f"no solution found {name}; the operating point may not exist")
+    made.faults.add(~opened.converged, "no solution found without current")
+    chosen = unfold(made, problem, state)
+    open_circuit = unfold(made, problem, opened)
+    best_power = terminal_power(problem, best)
+    row_length = batch.number("stack.row_pitch") / made.segments
+    drops = [
+        pressure_drop(batch, stream, boundaries, outlet, chosen.active, row_length)
+        for stream, boundaries, outlet in (
+            (made.hot, state.hot_stream, chosen.hot_outlet),
+            (made.cold, state.cold_stream[::-1], chosen.cold_outlet),
+        )
+    ]
+    return Solved(
+        made,
+        chosen,
+        terminal_power(problem, matched),
+        best_power,
+        open_circuit,
+        _mismatch(problem, made.segments, best_load, best, best_power),
+        drops[0],
+        drops[1],
+    )
+
+
+def _scalars(solved: Solved) -> dict[str, FloatArray]:
+    """Scalar results by name, (cases,)."""
+    made, chosen, batch = solved.made, solved.chosen, solved.made.batch
+    problem, circuit, state = made.problem, made.problem.circuit, solved.chosen.state
+    generated = terminal_power(problem, state)
+    efficiency = batch.number("electrical.converter_efficiency", 1.0)
+    hot_drive = side_drive_power(batch, made.hot, solved.hot_drop.total)
+    cold_drive = side_drive_power(batch, made.cold, solved.cold_drop.total)
+    converted = efficiency * generated
+    current = circuit.parallel * state.current.sum(axis=0)
+    voltage = state.string_voltage[0]
+    weight = circuit.series * chosen.active
+    starts = circuit.block_starts
+    string_emf = np.add.reduceat(weight * chosen.seebeck * (state.hot_junction - state.cold_junction), starts, axis=0)
+    string_resistance = np.add.reduceat(weight * chosen.resistance, starts, axis=0) + circuit.lead
+    emf = (string_emf / string_resistance).sum(axis=0) / (1.0 / string_resistance).sum(axis=0)
+    opened = solved.open_circuit.state.string_voltage[0]
+    if circuit.independent:
+        current = voltage = emf = opened = np.full(batch.cases, np.nan)
+    flowing = np.abs(current) > 1e-12
+    internal = np.where(
+        flowing, (emf - voltage) / current, 1.0 / (circuit.parallel * (1.0 / string_resistance).sum(axis=0))
+    )
+    load_resistance = np.where(flowing, voltage / current, np.inf)
+    if circuit.independent:
+        internal = load_resistance = current
+    lost = problem.loss * (state.hot_wall - problem.ambient_temperature)
+    in_leads = circuit.parallel * (state.current**2 * circuit.lead + state.current * circuit.diode_drop).sum(axis=0)
+    lost_heat = chosen.total(lost)
+    unclosed = chosen.hot_heat - chosen.cold_heat - generated - in_leads - lost_heat
+    scale = np.maximum(np.abs(chosen.hot_heat), np.abs(chosen.cold_heat))
+    entropy = (
+        -_entropy_given(made.hot, chosen.hot_outlet, chosen.hot_heat)
+        - _entropy_given(made.cold, chosen.cold_outlet, -chosen.cold_heat)
+        + lost_heat / problem.ambient_temperature
+        + in_leads / problem.ambient_temperature
+    )
+    upper = np.maximum(made.hot.inlet_temperature, made.cold.inlet_temperature)
+    lower = np.minimum(made.hot.inlet_temperature, made.cold.inlet_temperature)
+    module_heat = chosen.total(chosen.module_heat)
+    layers = batch.number("stack.layers")
+    height = sum(
+        (stream.ducts * 1.0) * (_gap(batch, stream) + 2.0 * batch.number(f"{stream.name}.duct.wall_thickness", 0.0))
+        + stream.half_ducts
+        * (0.5 * _gap(batch, stream) + 2.0 * batch.number(f"{stream.name}.duct.wall_thickness", 0.0))
+        for stream in (made.hot, made.cold)
+    ) + layers * batch.number("module.thickness")
+    return {
+        "generated_power": generated,
+        "converted_power": converted,
+        "hot_drive_power": hot_drive,
+        "cold_drive_power": cold_drive,
+        "net_power": converted
+        - batch.number("electrical.converter_standby_power", 0.0)
+        - batch.number("electrical.auxiliary_power", 0.0)
+        - hot_drive
+        - cold_drive,
+        "matched_load_power": solved.matched_power,
+        "maximum_power": solved.maximum_power,
+        "current": current,
+        "voltage": voltage,
+        "open_circuit_voltage": opened,
+        "operating_emf": emf,
+        "internal_resistance": internal,
+        "load_resistance": load_resistance,
+        "load_ratio": load_resistance / internal,
+        "hot_heat_flow": chosen.hot_heat,
+        "cold_heat_flow": chosen.cold_heat,
+        "bypass_heat_flow": chosen.total(problem.bypass * (state.hot_wall - state.cold_wall)),
+        "lost_heat_flow": lost_heat,
+        "module_heat_flow": module_heat,
+        "hot_outlet_temperature": chosen.hot_outlet,
+        "cold_outlet_temperature": chosen.cold_outlet,
+        "hot_mass_flow": _of_stream(made.hot, made.hot.mass_flow),
+        "cold_mass_flow": _of_stream(made.cold, made.cold.mass_flow),
+        "hot_pressure_drop": solved.hot_drop.total,
+        "cold_pressure_drop": solved.cold_drop.total,
+        "hot_velocity": _velocity(made.hot),
+        "cold_velocity": _velocity(made.cold),
+        "conversion_efficiency": generated / chosen.hot_heat,
+        "module_efficiency": generated / module_heat,
+        "carnot_efficiency": carnot_efficiency(upper, lower),
+        "mismatch_loss": solved.mismatch,
+        "module_count": made.module_count,
+        "hot_duct_count": made.hot.ducts,
+        "cold_duct_count": made.cold.ducts,
+        "cold_end_duct_count": made.cold.half_ducts,
+        "stack_length": batch.number("stack.rows") * batch.number("stack.row_pitch"),
+        "stack_width": batch.number("stack.columns") * batch.number("stack.column_pitch"),
+        "stack_height": height,
+        "module_mass": made.module_count * batch.number("module.mass"),
+        "hottest_face_temperature": chosen.largest(chosen.hot_face),
+        "open_circuit_face_temperature": solved.open_circuit.largest(solved.open_circuit.hot_face),
+        "energy_closure": unclosed / scale,
+        "entropy_generation": entropy,
+    }
+
+
+def _gap(batch: Batch, stream: Stream) -> FloatArray:
+    return batch.number(f"{stream.name}.duct.gap") if stream.fluid is not None else np.zeros(batch.cases)
+
+
+def _of_stream(stream: Stream, value: FloatArray) -> FloatArray:
+    return value if stream.fluid is not None else np.full(len(value), np.nan)
+
+
+def _velocity(stream: Stream) -> FloatArray:
+    """Velocity in the ducts at inlet density [m/s], (cases,)."""
+    if stream.fluid is None or stream.film is None:
+        return np.full(len(stream.inlet_temperature), np.nan)
+    return stream.film.mass_flux / stream.fluid.density(stream.inlet_temperature[None])[0]
+
+
+def _rows(made: Design, chosen: Solution) -> dict[str, FloatArray]:
+    """Row results by name, (rows, cases); segments of a row are averaged."""
+    state = chosen.state
+    hot, cold = (
+        0.5 * (state.hot_stream[:-1] + state.hot_stream[1:]),
+        0.5 * (state.cold_stream[:-1] + state.cold_stream[1:]),
+    )
+
+    def reynolds(stream: Stream, temperature: FloatArray) -> FloatArray:
+        if stream.fluid is None or stream.film is None:
+            return np.full_like(temperature, np.nan)
+        return stream.film.reynolds(stream.fluid.viscosity(temperature))
+
+    values = {
+        "hot_stream_temperature": hot,
+        "hot_face_temperature": chosen.hot_face,
+        "hot_junction_temperature": state.hot_junction,
+        "cold_junction_temperature": state.cold_junction,
+        "cold_face_temperature": chosen.cold_face,
+        "cold_stream_temperature": cold,
+        "current": chosen.row_current,
+        "module_power": chosen.module_power,
+        "module_heat_flow": chosen.module_heat,
+        "hot_reynolds": reynolds(made.hot, hot),
+        "cold_reynolds": reynolds(made.cold, cold),
+    }
+    segments, cases = made.segments, made.batch.cases
+    return {
+        name: np.where(chosen.active > 0, value, np.nan).reshape(-1, segments, cases).mean(axis=1)
+        for name, value in values.items()
+    }
+
+
+def _sources(made: Design) -> tuple[str, ...]:
+    """Where the numbers of a batch come from, one line each."""
+    module = made.batch.base.module
+    lines = [f"{stream.name} fluid: {table.source}" for stream in (made.hot, made.cold) for table in stream.tables[:1]]
+    lines.append(f"module: {module.source or 'as given in the case'}")
+    lines += [f"material {each.name}: {each.source}" for each in {item.name: item for item in made.materials}.values()]
+    return tuple(lines)
+
+
+def _grid_effect(batch: Batch, power: FloatArray) -> FloatArray:
+    """Relative change of the maximum power when every row is split in two, (cases,)."""
+    stack = dataclasses.replace(batch.base.stack, segments=2 * batch.base.stack.segments)
+    finer = design(dataclasses.replace(batch, base=dataclasses.replace(batch.base, stack=stack)))
+    state = solve_stack(finer.problem, maximum_power_load(batch))
+    return np.where(state.converged, terminal_power(finer.problem, state), np.nan) / power - 1.0
+
+
+def estimate_batch(batch: Batch, *, grid: bool = False) -> Estimates:
+    """Answer all cases of a batch with one run of the solver at each load.
+
+    Parameters: `batch`; `grid`, whether to solve again with every row split in two, for the check of the grid's
+    effect. A case without an answer is NaN throughout and says why in `problem`. Raises InputError for faults of all.
+    """
+    with np.errstate(all="ignore"):
+        made = design(batch)
+        usable = made.hot.tables or made.hot.film is None and batch.base.hot.fluid == "reservoir"
+        usable_cold = made.cold.tables or batch.base.cold.fluid == "reservoir"
+        if not (usable and usable_cold) or not made.faults.valid.any():
+            return _nothing(batch, made)
+        solved = _solve(made)
+        scalars = _scalars(solved)
+        effect = _grid_effect(batch, scalars["maximum_power"]) if grid else np.full(batch.cases, np.nan)
+        made.faults.add(~np.isfinite(scalars["net_power"]), "the result is not a finite number")
+        checks = assess(solved, scalars, effect)
+        valid = made.faults.valid
+        scalars = {name: np.where(valid, value, np.nan) for name, value in scalars.items()}
+        rows = {name: np.where(valid, value, np.nan) for name, value in _rows(made, solved.chosen).items()}
+    return Estimates(scalars, rows, batch.number("stack.rows"), checks, made.faults.text, _sources(made))
+
+
+def _nothing(batch: Batch, made: Design) -> Estimates:
+    """Return the answer of a batch in which no case can be solved."""
+    nan = np.full(batch.cases, np.nan)
+    return Estimates({name: nan for name in SCALARS}, {}, batch.number("stack.rows"), (), made.faults.text, ())
+
+
+def estimate(case: Case) -> Estimate:
+    """Power, heat, temperatures, losses and checks of one design.
+
+    Returns a frozen `Estimate` of SI floats; where there is no answer, `valid` is False, `problem` says why and every
+    number is NaN. Raises InputError for a case that names an unknown material.
+    """
+    answers = estimate_batch(Batch(case), grid=True)
+    valid = bool(answers.valid[0])
+    rows = {
+        item.name: answers.rows[item.name][: case.stack.rows, 0] if valid else np.empty(0)
+        for item in dataclasses.fields(Rows)
+    }
+    return Estimate(
+        **{name: float(value[0]) for name, value in answers.scalars.items()},
+        rows=Rows(**rows),
+        checks=tuple(check.of(0) for check in answers.checks) if valid else (),
+        valid=valid,
+        problem=str(answers.problem[0]),
+        sources=answers.sources,
+        version=VERSION,
+        case_hash=case_hash(case),
+    )

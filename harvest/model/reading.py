@@ -1,0 +1,593 @@
+"""From a case file to a validated Case: all faults at once, each with its line."""
+
+from __future__ import annotations
+
+import copy
+import functools
+import itertools
+import math
+import numbers
+from collections.abc import Mapping, Sequence
+from pathlib import Path
+from typing import Any, NamedTuple
+
+from harvest.errors import CaseError, InputError, QuantityError
+from harvest.model.case import (
+    DECLARATIONS,
+    Case,
+    Curve,
+    FluidRows,
+    limits_text,
+    nearest_field,
+    nearest_name,
+)
+from harvest.model.case_fields import REQUIRED, Declaration, declared, walk
+from harvest.model.case_rules import (
+    ALTERNATIVES,
+    CURVES,
+    UnknownValueError,
+    Values,
+    applies,
+    broken_rules,
+    selector_path,
+)
+from harvest.model.case_text import bounded_text, key_lines, toml_document, toml_value
+from harvest.quantities import (
+    HIGHEST_DEGREE,
+    KINDS,
+    StandardVolumeFlow,
+    example_of,
+    from_pint,
+    is_pint_quantity,
+    one_line,
+    parse_quantity,
+    parse_standard_volume_flow,
+    per_kelvin,
+    shown,
+    unit_of,
+)
+
+OPTION = "--set"
+DATA = Path(__file__).parents[1] / "data"
+LATER = {"cooler_rating", "generator_rating"}
+FLUID_COLUMNS = {
+    "temperature": "temperature",
+    "density": "density",
+    "heat_capacity": "heat capacity",
+    "viscosity": "viscosity",
+    "conductivity": "conductivity",
+}
+CONSTANT_FLUID_TEMPERATURE = 300.0
+MOST_CURVE_POINTS = 1000
+MOST_SUGGESTIONS = 50
+
+
+class Origin(NamedTuple):
+    """Where a value was given: a file with its line, or an option."""
+
+    label: str
+    line: int = 0
+
+    def fault(self, path: str, message: str) -> str:
+        """One line that says where, which field, and what is wrong."""
+        place = f"{self.label} " if self.label == OPTION else f"{self.label}{f':{self.line}' if self.line else ''}: "
+        return f"{place}{one_line(path, 100)}: {message}"
+
+
+def load_case(source: str | Path, overrides: Sequence[str] = ()) -> Case:
+    """Read a case file, or the text of one if `source` is a str with line ends.
+
+    `overrides` are texts "hot.mass_flow=0.4 kg/s" that go before what the file says.
+    Raises CaseError with all faults, one line each.
+    """
+    if isinstance(source, str) and "\n" in source:
+        return read_case(source, overrides)
+    path = Path(source)
+    try:
+        text = bounded_text(path)
+    except InputError as error:
+        raise CaseError([str(error)]) from None
+    return read_case(text, overrides, label=str(source), folder=path.parent)
+
+
+def read_case(text: str, overrides: Sequence[str] = (), *, label: str = "case", folder: Path | None = None) -> Case:
+    """Read the text of a case file; `label` names it in faults, `folder` is where its relative paths start.
+
+    Raises CaseError with all faults, one line each.
+    """
+    if not text.strip():
+        raise CaseError([f'{label}: is empty; a case begins for example with [hot] and fluid = "water"'])
+    try:
+        document = toml_document(text, label)
+    except InputError as error:
+        raise CaseError([str(error)]) from None
+    origins = {path: Origin(label, line) for path, line in key_lines(text).items()}
+    faults = []
+    for override in overrides:
+        path, equals, value = (part.strip() for part in override.partition("="))
+        try:
+            if not equals:
+                raise InputError(f'{one_line(path)}: has no "="; write for example --set hot.mass_flow="0.4 kg/s"')
+            _put(document, path, toml_value(value))
+            origins[path] = Origin(OPTION)
+        except InputError as error:
+            faults.append(f"{OPTION} {error}")
+    try:
+        case = case_from(document, label=label, folder=folder, origins=origins)
+    except CaseError as error:
+        raise CaseError([*error.faults, *faults]) from None
+    if faults:
+        raise CaseError(faults)
+    return case
+
+
+def case_from(
+    document: Mapping[str, Any],
+    *,
+    label: str = "case",
+    folder: Path | None = None,
+    origins: Mapping[str, Origin] | None = None,
+) -> Case:
+    """Validate a nested mapping that is laid out as a case file; raises CaseError with all faults."""
+    given = copy.deepcopy(dict(document))
+    reading = _Reading(label, folder or Path(), dict(origins or {}))
+    reading.read(given)
+    if reading.faults:
+        raise CaseError([origin.fault(path, message) for origin, path, message in reading.in_order()])
+    case: Case = _built(Case, "", reading.values, given=given, assumed=tuple(reading.assumed), folder=reading.folder)
+    return case
+
+
+def replace(case: Case, changes: Mapping[str, Any]) -> Case:
+    """Make a validated case with other values, by path: SI numbers, texts with units, or pint quantities.
+
+    Raises CaseError with all faults.
+    """
+    document = copy.deepcopy(case.given)
+    faults = []
+    for path, value in changes.items():
+        try:
+            _put(document, path, _as_typed(path, value))
+        except QuantityError as error:
+            faults.append(f"{path}: {error}")
+        except InputError as error:
+            faults.append(str(error))
+    if faults:
+        raise CaseError(faults)
+    return case_from(document, folder=case.folder)
+
+
+def _put(document: dict[str, Any], path: str, value: Any) -> None:
+    """Set a value in a document; what is an alternative to it goes."""
+    if path not in DECLARATIONS and not path.startswith(("size.", "sweep.")):
+        raise InputError(f"{one_line(path)}: unknown field; {nearest_field(path[:60])}")
+    *parents, name = path.split(".", 1) if path.startswith("sweep.") else path.split(".")
+    table = document
+    for parent in parents:
+        table = table.setdefault(parent, {})
+        if not isinstance(table, dict):
+            raise InputError(f"{path}: {parent} is not a table in the case")
+    table[name] = value
+    for alternatives in ALTERNATIVES:
+        if path in alternatives:
+            for other in alternatives:
+                if other != path:
+                    table.pop(other.rpartition(".")[2], None)
+
+
+def _as_typed(path: str, value: Any) -> Any:
+    """Write a value from Python as it would stand in a case file, exact to the last digit."""
+    declaration = DECLARATIONS.get(path)
+    if declaration is None or isinstance(value, str | bool | Mapping):
+        return value
+    if isinstance(value, Curve):
+        if value.kind == "polynomial":
+            return list(value.values)
+        return [
+            [f"{t!r} K", f"{v!r} {unit_of(declaration.kind)}"]
+            for t, v in zip(value.temperatures, value.values, strict=True)
+        ]
+    if isinstance(value, StandardVolumeFlow):
+        return str(value)
+    if isinstance(value, tuple | list):
+        return [_as_typed(path, each) for each in value]
+    if is_pint_quantity(value):
+        value = from_pint(value, declaration.kind)
+    if isinstance(value, numbers.Integral):
+        value = int(value)
+    elif isinstance(value, numbers.Real):
+        value = float(value)
+    if declaration.form in ("quantity", "pair") and isinstance(value, int | float) and not KINDS[declaration.kind].bare:
+        return f"{value!r} {unit_of(declaration.kind)}"
+    return value
+
+
+def _built(owner: type, prefix: str, values: Values, **more: Any) -> Any:
+    """Make a section's object from the values by path."""
+    items = {}
+    for name, declaration in declared(owner):
+        path = prefix + name
+        if declaration.section is None:
+            items[name] = values[path]
+        elif declaration.optional and values[path] is None:
+            items[name] = None
+        else:
+            items[name] = _built(declaration.section, f"{path}.", values)
+    return owner(**items, **more)
+
+
+class _Reading:
+    """One pass over a document: values by path, and what is wrong."""
+
+    def __init__(self, label: str, folder: Path, origins: dict[str, Origin]) -> None:
+        self.label = label
+        self.folder = folder
+        self.origins = origins
+        self.values = Values()
+        self.assumed: list[str] = []
+        self.faults: list[tuple[Origin, str, str]] = []
+
+    def read(self, document: Mapping[str, Any]) -> None:
+        """Judge every field, then the rules between them."""
+        self.section(Case, "", document)
+        for path, message in broken_rules(self.values):
+            self.fault(path, message)
+
+    def in_order(self) -> list[tuple[Origin, str, str]]:
+        """Faults in the order of the file's lines, options last, without repetitions."""
+        return sorted(dict.fromkeys(self.faults), key=lambda each: (each[0].label != self.label, each[0].line))
+
+    def fault(self, path: str, message: str) -> None:
+        self.values.faulty.add(path)
+        self.values.pop(path, None)
+        self.faults.append((self.origin(path), path, message))
+
+    def origin(self, path: str) -> Origin:
+        """Where the value, or else the table that would hold it, was given."""
+        if path in self.origins:
+            return self.origins[path]
+        while path:
+            path = path.rpartition(".")[0]
+            if path in self.origins and self.origins[path].label != OPTION:
+                return self.origins[path]
+        return Origin(self.label)
+
+    def section(self, owner: type, prefix: str, table: Mapping[str, Any]) -> None:
+        known = dict(declared(owner))
+        for name in table:
+            if name not in known:
+                self.unknown(prefix, str(name), list(known))
+        for name, declaration in known.items():
+            path = prefix + name
+            if declaration.section is None:
+                self.field(path, declaration, table.get(name))
+            elif isinstance(inside := table.get(name, {}), Mapping):
+                self.subsection(path, declaration, inside, name in table)
+            else:
+                self.fault(path, f"is a section; write [{path}] and its fields below it")
+                self.give_up(path, declaration)
+
+    def subsection(self, path: str, declaration: Declaration, inside: Mapping[str, Any], is_there: bool) -> None:
+        assert declaration.section is not None
+        if is_there or not declaration.optional:
+            needs = [
+                name
+                for name, each in declared(declaration.section)
+                if each.default is REQUIRED and each.section is None and each.applies is None
+            ]
+            if needs and not is_there:
+                self.fault(path, f"the section [{path}] is missing; it gives {', '.join(needs)} and more")
+                self.give_up(path, declaration)
+                return
+            if path == "module" and "use" in inside:
+                try:
+                    inside = self.with_record(inside)
+                except InputError as error:
+                    self.fault("module.use", str(error))
+                    self.give_up(path, declaration)
+                    return
+            self.values[path] = path
+            self.section(declaration.section, f"{path}.", inside)
+        else:
+            self.values[path] = None
+            for name, _ in walk(declaration.section, f"{path}."):
+                self.values[name] = None
+
+    def give_up(self, path: str, declaration: Declaration) -> None:
+        """Nothing inside the section can be judged."""
+        assert declaration.section is not None
+        self.values.faulty.update(name for name, _ in walk(declaration.section, f"{path}."))
+
+    def unknown(self, prefix: str, name: str, known: list[str]) -> None:
+        path = prefix + name
+        if prefix == "module." and name in LATER:
+            message = "is not available yet; give seebeck, resistance and conductance, or [module.legs]"
+        elif len(self.faults) > MOST_SUGGESTIONS:  # finding the nearest name takes a millisecond
+            message = "unknown field"
+        else:
+            message = f"unknown field; {nearest_name(name[:60], known)}"
+        self.faults.append((self.origin(path), path, message))
+
+    def field(self, path: str, declaration: Declaration, raw: Any) -> None:
+        """Value of one field, or its default, or a fault."""
+        try:
+            decided = applies(declaration, path, self.values)
+            if raw is None:
+                self.values[path] = self.default(path, declaration, decided is None)
+                return
+            if decided is not None:
+                owner, value = decided
+                assert declaration.applies is not None
+                self.fault(
+                    path,
+                    f'does not apply to {owner} = "{value}", only to {", ".join(declaration.applies[1])}; remove it',
+                )
+                return
+            self.values[path] = self.value(path, declaration, raw)
+        except UnknownValueError:  # what decides has a fault; the value itself may have another one
+            self.values.faulty.add(path)
+            if raw is not None:
+                self.check_alone(path, declaration, raw)
+        except QuantityError as error:
+            self.fault(path, str(error))
+
+    def check_alone(self, path: str, declaration: Declaration, raw: Any) -> None:
+        """Report what is wrong with a value of which it is not known whether it applies."""
+        try:
+            self.value(path, declaration, raw)
+        except QuantityError as error:
+            self.fault(path, str(error))
+        except UnknownValueError:
+            return
+
+    def default(self, path: str, declaration: Declaration, asked: bool) -> Any:
+        if declaration.default is REQUIRED:
+            if not asked:
+                return None
+            raise QuantityError(f"is missing; {_how_to_write(declaration)}")
+        if asked:
+            self.assumed.append(path)
+        if declaration.default_from:
+            return self.values[declaration.default_from]
+        if declaration.default_by is not None and asked:
+            selector, defaults = declaration.default_by
+            return defaults[self.values[selector_path(selector, path, self.values)]]
+        return declaration.default
+
+    def value(self, path: str, declaration: Declaration, raw: Any) -> Any:
+        """SI value of what was given; raises QuantityError or UnknownValueError."""
+        form, kind = declaration.form, declaration.kind
+        if form == "quantity":
+            return self.number(path, declaration, raw)
+        if form == "integer":
+            return _integer(declaration, raw)
+        if form == "choice":
+            return _choice(declaration, raw)
+        if form == "text":
+            return _text(raw)
+        if form == "file":
+            return _file(_text(raw), kind, self.folder)
+        if form == "boolean":
+            if not isinstance(raw, bool):
+                raise QuantityError(f"{shown(raw)} is not true or false; write it without quotes")
+            return raw
+        if form == "pair":
+            if not isinstance(raw, list | tuple) or len(raw) != 2:
+                raise QuantityError(f'{shown(raw)} is not a pair; write ["{example_of(kind)}", "{example_of(kind)}"]')
+            return tuple(self.number(path, declaration, each) for each in raw)
+        if form == "integers":
+            if not isinstance(raw, list | tuple) or not raw:
+                raise QuantityError(f"{shown(raw)} is not a list of whole numbers such as [4, 4, 4]")
+            return tuple(_integer(declaration, each) for each in raw)
+        if form == "standard volume flow":
+            return parse_standard_volume_flow(raw)
+        if form == "curve":
+            return _curve(declaration, raw)
+        if form == "fluid table":
+            return _fluid_rows(raw, self.folder)
+        return self.axes(path, raw)
+
+    def number(self, path: str, declaration: Declaration, raw: Any) -> float:
+        gauge_reference = None
+        may_be_gauge = declaration.kind == "pressure" and isinstance(raw, str) and "g" in raw
+        if may_be_gauge and path != "site.ambient_pressure":
+            gauge_reference = self.values["site.ambient_pressure"]
+        value = parse_quantity(raw, declaration.kind, ambient_pressure=gauge_reference)
+        _within(declaration, value, raw)
+        return value
+
+    def axes(self, path: str, raw: Any) -> dict[str, Any]:
+        """Check what a sizing or a sweep varies and keep it as given; a sweep names whole fields."""
+        if not isinstance(raw, Mapping) or not raw:
+            raise QuantityError(f"is a section; write [{path}] and what is varied below it")
+        for name, axis in raw.items() if path == "sweep" else ():
+            known = DECLARATIONS.get(name)
+            if known is None or known.section is not None:
+                self.fault(f"{path}.{name}", 'unknown field; write its whole name in quotes, "hot.mass_flow" = ...')
+            elif not (isinstance(axis, list) and axis) and not (
+                isinstance(axis, Mapping) and {"from", "to"} <= set(axis)
+            ):
+                self.fault(f"{path}.{name}", "is neither a list nor { from = .., to = .., points = .. }")
+        return dict(raw)
+
+    def with_record(self, module: Mapping[str, Any]) -> Mapping[str, Any]:
+        """Merge the module's fields over those of its record; raises InputError."""
+        path = Path(_file(_text(module["use"]), "modules", self.folder))
+        if not path.is_absolute():
+            path = _bundled(str(path), "modules")
+        state = path.stat()
+        record, lines = _record(path, state.st_mtime_ns, state.st_size)
+        self.origins = {**{f"module.{key}": Origin(path.name, line) for key, line in lines.items()}, **self.origins}
+        if "legs" in module:
+            record = {name: value for name, value in record.items() if f"module.{name}" not in CURVES}
+        legs, record_legs = module.get("legs", {}), record.get("legs", {})
+        if isinstance(legs, Mapping) and (legs or record_legs):
+            return {**record, **module, "legs": {**record_legs, **legs}}
+        return {**record, **module}
+
+
+@functools.lru_cache(32)
+def _record(path: Path, modified: int, size: int) -> tuple[dict[str, Any], dict[str, int]]:
+    """Fields of a module record with their lines; read again when the file has changed."""
+    text = bounded_text(path)
+    record = toml_document(text, path.name)
+    if "use" in record:
+        raise InputError(f"{path.name}: use: a record describes a module itself; remove it")
+    legs = record.get("legs", {})
+    if not isinstance(legs, dict):
+        raise InputError(f"{path.name}: legs: is a section; write [legs] and its fields below it")
+    for material in ("n_material", "p_material"):
+        if isinstance(legs.get(material), str):  # a path in a record starts from the record
+            legs[material] = _file(legs[material], "materials", path.parent)
+    return record, key_lines(text)
+
+
+def _bundled(name: str, kind: str) -> Path:
+    return DATA / kind / f"{name.replace(' ', '-')}.toml"
+
+
+def _file(name: str, kind: str, folder: Path) -> str:
+    """Keep a bundled record's name, make the path of another record absolute."""
+    try:
+        if "/" not in name and "\\" not in name and _bundled(name, kind).is_file():
+            return name
+        if (folder / name).is_file():
+            return str((folder / name).resolve())
+    except (OSError, ValueError):
+        pass  # a name that no file system takes is the name of no file
+    known = sorted(each.stem for each in (DATA / kind).glob("*.toml"))
+    raise QuantityError(f"{shown(name)} is no file and none of the bundled {kind}; {nearest_name(name[:60], known)}")
+
+
+def _integer(declaration: Declaration, raw: Any) -> int:
+    if isinstance(raw, bool) or not isinstance(raw, int):
+        raise QuantityError(f"{shown(raw)} is not a whole number; write for example 4, without quotes")
+    _within(declaration, raw, raw)
+    return raw
+
+
+def _choice(declaration: Declaration, raw: Any) -> str:
+    if not isinstance(raw, str) or raw not in declaration.choices:
+        near = nearest_name(raw[:60], list(declaration.choices)) if isinstance(raw, str) else ""
+        listed = "" if near.startswith("known") else f"; known are {', '.join(declaration.choices)}"
+        raise QuantityError(
+            f"{shown(raw)} is not possible; {near}{listed}"
+            if near
+            else f"{shown(raw)} is not a text; known are {', '.join(declaration.choices)}"
+        )
+    return raw
+
+
+def _text(raw: Any) -> str:
+    if not isinstance(raw, str):
+        raise QuantityError(f"{shown(raw)} is not a text; write it in quotes")
+    return raw
+
+
+def _within(declaration: Declaration, value: float, raw: Any) -> None:
+    low = declaration.minimum is not None and value < declaration.minimum
+    low = low or (declaration.above is not None and value <= declaration.above)
+    if low or (declaration.maximum is not None and value > declaration.maximum):
+        raise QuantityError(f"{shown(raw)} is not possible; give {limits_text(declaration)}")
+
+
+def _curve(declaration: Declaration, raw: Any) -> Curve:
+    """One quantity, polynomial coefficients in (T - 300 K), or pairs of temperature and value."""
+    kind = declaration.kind
+    if not isinstance(raw, list | tuple):
+        values: tuple[float, ...] = (parse_quantity(raw, kind),)
+    elif not raw or len(raw) > MOST_CURVE_POINTS:
+        raise QuantityError(f"has {len(raw)} entries; give 1 to {MOST_CURVE_POINTS}")
+    elif isinstance(raw[0], list | tuple):
+        return _curve_table(declaration, raw)
+    elif len(raw) > HIGHEST_DEGREE + 1:
+        raise QuantityError(f"has {len(raw)} coefficients; give at most {HIGHEST_DEGREE + 1}, or pairs of a table")
+    else:
+        values = tuple(_coefficient(each, kind, power) for power, each in enumerate(raw))
+    _within(declaration, values[0], raw if isinstance(raw, str) else raw[0])
+    return Curve("polynomial", values)
+
+
+def _coefficient(raw: Any, kind: str, power: int) -> float:
+    if isinstance(raw, int | float) and not isinstance(raw, bool) and math.isfinite(raw):
+        return float(raw)
+    return parse_quantity(raw, per_kelvin(kind, power))
+
+
+def _curve_table(declaration: Declaration, raw: Sequence[Any]) -> Curve:
+    if any(not isinstance(pair, list | tuple) or len(pair) != 2 for pair in raw):
+        raise QuantityError(f'is not a list of pairs such as ["300 K", "{example_of(declaration.kind)}"]')
+    temperatures = tuple(parse_quantity(pair[0], "temperature") for pair in raw)
+    values = tuple(parse_quantity(pair[1], declaration.kind) for pair in raw)
+    _ascending(temperatures)
+    for pair, value in zip(raw, values, strict=True):
+        _within(declaration, value, pair[1])
+    return Curve("table", values, temperatures)
+
+
+def _ascending(temperatures: Sequence[float]) -> None:
+    for lower, upper in itertools.pairwise((0.0, *temperatures)):
+        if lower >= upper:
+            raise QuantityError(f"its temperatures do not rise: {upper:g} K comes after {lower:g} K")
+
+
+def _fluid_rows(raw: Any, folder: Path) -> FluidRows:
+    """Rows of temperature, density, heat capacity, viscosity and conductivity from lists or from a CSV file."""
+    columns = _csv_columns(folder / raw) if isinstance(raw, str) else raw
+    if not isinstance(columns, Mapping):
+        raise QuantityError("is neither a section with lists of texts nor the path of a CSV file")
+    if missing := [name for name in FLUID_COLUMNS if name not in columns and name != "temperature"]:
+        raise QuantityError(f"has no {', '.join(missing)}")
+    if unknown := [name for name in columns if name not in FLUID_COLUMNS]:
+        raise QuantityError(
+            f"{one_line(str(unknown[0]))}: unknown field; {nearest_name(str(unknown[0])[:60], list(FLUID_COLUMNS))}"
+        )
+    columns = {"temperature": f"{CONSTANT_FLUID_TEMPERATURE} K", **columns}
+    parsed = {name: _fluid_column(name, columns[name]) for name in FLUID_COLUMNS}
+    _ascending(parsed["temperature"])
+    count = len(parsed["temperature"])
+    for name, values in parsed.items():
+        if len(values) == 1 and not isinstance(columns[name], list | tuple):
+            parsed[name] = values * count
+        elif len(values) != count:
+            raise QuantityError(f"{name} has {len(values)} entries, and temperature has {count}")
+    return tuple(zip(*parsed.values(), strict=True))
+
+
+def _fluid_column(name: str, raw: Any) -> tuple[float, ...]:
+    entries = raw if isinstance(raw, list | tuple) else [raw]
+    if not 1 <= len(entries) <= MOST_CURVE_POINTS:
+        raise QuantityError(f"{name} has {len(entries)} entries; give 1 to {MOST_CURVE_POINTS}")
+    try:
+        values = tuple(parse_quantity(each, FLUID_COLUMNS[name]) for each in entries)
+    except QuantityError as error:
+        raise QuantityError(f"{name}: {error}") from None
+    if min(values) <= 0:
+        raise QuantityError(f"{name} has a value that is not above zero")
+    return values
+
+
+def _csv_columns(path: Path) -> dict[str, list[str]]:
+    """Columns of a CSV file as texts with units, the units out of its header "name [unit]"."""
+    try:
+        lines = [line.split(",") for line in bounded_text(path).splitlines() if line.strip()]
+    except InputError as error:
+        raise QuantityError(str(error)) from None
+    columns: dict[str, list[str]] = {}
+    for position, head in enumerate(lines[0] if lines else []):
+        name, _, unit = head.strip().partition("[")
+        if any(len(line) != len(lines[0]) for line in lines):
+            raise QuantityError(f"{path.name}: its lines do not all have {len(lines[0])} values")
+        columns[name.strip()] = [f"{line[position].strip()} {unit.rstrip('] ')}" for line in lines[1:]]
+    return columns
+
+
+def _how_to_write(declaration: Declaration) -> str:
+    if declaration.form == "choice":
+        return f"give one of {', '.join(declaration.choices)}"
+    if declaration.form in ("quantity", "standard volume flow"):
+        example = example_of(declaration.kind)
+        return f"give for example {example}" if KINDS[declaration.kind].bare else f'give for example "{example}"'
+    if declaration.form == "pair":
+        return f'give for example ["{example_of(declaration.kind)}", "{example_of(declaration.kind)}"]'
+    return f"give it: {declaration.meaning[0].lower()}{declaration.meaning[1:].rstrip('.')}"

@@ -1,0 +1,1 @@
+"""The equations, one file a subject: pure functions on arrays in SI units."""

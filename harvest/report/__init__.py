@@ -1,0 +1,1 @@
+"""Everything that a person or a program reads."""

@@ -1,0 +1,36 @@
+"""Writing of files: whole or not at all."""
+
+from __future__ import annotations
+
+import contextlib
+import os
+import tempfile
+from pathlib import Path
+
+from harvest.errors import InputError
+
+
+def write_whole(path: Path, content: str | bytes) -> None:
+    """Write a file by way of a temporary one beside it, so that it is never half there; raises InputError."""
+    data = content.encode("utf-8") if isinstance(content, str) else content
+    try:
+        handle, name = tempfile.mkstemp(prefix=f".{path.name}.", dir=path.parent)
+    except OSError as error:
+        raise InputError(f"{path}: cannot be written ({error.strerror})") from None
+    try:
+        with os.fdopen(handle, "wb") as file:
+            file.write(data)
+        Path(name).chmod(0o644)
+        Path(name).replace(path)
+    except OSError as error:
+        raise InputError(f"{path}: cannot be written ({error.strerror})") from None
+    finally:
+        with contextlib.suppress(FileNotFoundError):
+            Path(name).unlink()
+
+
+def write_new(path: Path, content: str) -> None:
+    """Write a file that must not exist yet; raises InputError."""
+    if path.exists():
+        raise InputError(f"{path}: exists already; remove it or choose another name")
+    write_whole(path, content)

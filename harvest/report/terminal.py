@@ -1,0 +1,355 @@
+"""Reports for a person at a terminal: the answer first, then what it rests on."""
+
+from __future__ import annotations
+
+import math
+import textwrap
+from collections.abc import Iterable, Sequence
+from typing import TYPE_CHECKING
+
+from harvest.model.case import DECLARATIONS, Case, Side, assumptions, case_hash, display, value_at
+from harvest.model.checks import STATUS_NAMES, Check
+from harvest.model.results import Estimate
+from harvest.quantities import format_quantity
+from harvest.report.cautions import cautions
+from harvest.version import VERSION
+
+if TYPE_CHECKING:
+    from harvest.model.fluid import FluidSheet
+
+WIDTH = 100
+MOST_ROWS_SHOWN = 8
+MARKS = {"pass": "ok  ", "warn": "WARN", "fail": "FAIL"}
+
+
+def _q(value: float, kind: str, digits: int = 3) -> str:
+    return "-" if not math.isfinite(value) else format_quantity(value, kind, digits)
+
+
+def _t(kelvin: float) -> str:
+    return "-" if not math.isfinite(kelvin) else f"{kelvin - 273.15:.1f} degC"
+
+
+def _percent(share: float, digits: int = 2) -> str:
+    return "-" if not math.isfinite(share) else f"{100 * share:.{digits}f} %"
+
+
+def _heading(text: str) -> str:
+    return f"\n{text}\n{'-' * len(text)}"
+
+
+def _pairs(pairs: Iterable[tuple[str, str]], indent: int = 2) -> list[str]:
+    """Name and value in two columns."""
+    kept = list(pairs)
+    width = max(len(name) for name, _ in kept)
+    return [f"{' ' * indent}{name:{width}}  {value}".rstrip() for name, value in kept]
+
+
+def _wrapped(first: str, text: str, rest: str | None = None) -> str:
+    return textwrap.fill(
+        text,
+        WIDTH,
+        initial_indent=first,
+        subsequent_indent=" " * len(first) if rest is None else rest,
+        break_long_words=False,
+        break_on_hyphens=False,
+    )
+
+
+def _table(header: Sequence[str], rows: Sequence[Sequence[str]], indent: int = 2) -> list[str]:
+    """Right-aligned columns under their headers."""
+    widths = [max(len(line[i]) for line in (header, *rows)) for i in range(len(header))]
+    return [
+        " " * indent + "  ".join(f"{cell:>{width}}" for cell, width in zip(line, widths, strict=True)).rstrip()
+        for line in (header, *rows)
+    ]
+
+
+def stack_sentence(case: Case, answer: Estimate) -> str:
+    """Say how many modules there are and how they are arranged and wired."""
+    stack, electrical = case.stack, case.electrical
+    blocks = len(electrical.row_blocks) if electrical.row_blocks else 1
+    strings = electrical.strings_across * stack.layers // electrical.layers_in_series * blocks
+    in_series = stack.columns // electrical.strings_across * electrical.layers_in_series * stack.rows
+    lengths = (
+        f"{in_series} modules in series"
+        if blocks == 1
+        else f"{in_series // stack.rows} modules a row, in blocks of {', '.join(map(str, electrical.row_blocks or ()))} rows"
+    )
+    joined = ", each with its own converter" if electrical.independent else (", in parallel" if strings > 1 else "")
+    return (
+        f"{int(answer.module_count)} modules: {stack.layers} layer{'s' * (stack.layers > 1)} of {stack.rows} rows x "
+        f"{stack.columns} columns; {strings} string{'s' * (strings > 1)} of {lengths}{joined}"
+    )
+
+
+def _side_line(name: str, side: Side, answer: Estimate) -> tuple[str, str]:
+    inlet = _t(side.inlet_temperature)
+    if side.fluid == "reservoir":
+        return name, f"reservoir at {inlet}"
+    flow = _q(getattr(answer, f"{name}_mass_flow"), "mass flow")
+    outlet = _t(getattr(answer, f"{name}_outlet_temperature"))
+    drop = _q(getattr(answer, f"{name}_pressure_drop"), "pressure difference")
+    speed = _q(getattr(answer, f"{name}_velocity"), "speed")
+    drive = _q(getattr(answer, f"{name}_drive_power"), "power")
+    cost = "free head" if side.drive == "free" else f"{drive} of {side.drive} power"
+    return name, f"{inlet} -> {outlet}, {flow} {fluid_words(side)}, {speed}, drop {drop}, {cost}"
+
+
+def fluid_words(side: Side) -> str:
+    """Name a side's fluid with its composition, as in a sentence."""
+    if side.volume_fraction is not None:
+        return f"{side.fluid} {100 * side.volume_fraction:g} % by volume"
+    if side.mass_fraction is not None:
+        return f"{side.fluid} {100 * side.mass_fraction:g} % by mass"
+    if side.fluid == "exhaust gas":
+        return f"{side.fuel} exhaust"
+    return "fluid of the table" if side.fluid == "table" else side.fluid
+
+
+def _energy_path(case: Case, answer: Estimate) -> list[str]:
+    """Lines from the hot side's heat to what is left at the end."""
+    heat = answer.hot_heat_flow
+    electrical = case.electrical
+    rows = [
+        ("heat from the hot side", heat),
+        ("  lost to the surroundings", answer.lost_heat_flow),
+        ("  past the modules", answer.bypass_heat_flow),
+        ("  through the modules", answer.module_heat_flow),
+        ("heat into the cold side", answer.cold_heat_flow),
+        ("generated at the terminals", answer.generated_power),
+        ("  lost in the converter", answer.generated_power - answer.converted_power),
+        ("  standby and auxiliaries", electrical.converter_standby_power + electrical.auxiliary_power),
+        ("  hot drive", answer.hot_drive_power),
+        ("  cold drive", answer.cold_drive_power),
+        ("net", answer.net_power),
+    ]
+    kept = [(name, value) for name, value in rows if not name.startswith(" ") or abs(value) > 0]
+    return _table(
+        ("", "", "of the heat"),
+        [(f"{name:28}", _q(value, "power"), _percent(value / heat) if heat else "-") for name, value in kept],
+    )
+
+
+def _electrical(answer: Estimate) -> list[str]:
+    loads = (
+        f"{_q(answer.maximum_power, 'power', 4)} at the true maximum, {_q(answer.matched_load_power, 'power', 4)} at "
+        "matched load"
+    )
+    if not math.isfinite(answer.voltage):
+        return _pairs(
+            [("power", loads), ("mismatch", f"{_percent(answer.mismatch_loss)} lost against every row on its own")]
+        )
+    return _pairs(
+        [
+            ("power", loads),
+            ("terminals", f"{_q(answer.voltage, 'voltage')}, {_q(answer.current, 'current')}"),
+            (
+                "resistance",
+                f"load {_q(answer.load_resistance, 'resistance')}, internal {_q(answer.internal_resistance, 'resistance')}, "
+                f"ratio {answer.load_ratio:.3g}",
+            ),
+            (
+                "without load",
+                f"{_q(answer.open_circuit_voltage, 'voltage')} settled; emf at this load "
+                f"{_q(answer.operating_emf, 'voltage')}",
+            ),
+            ("mismatch", f"{_percent(answer.mismatch_loss)} of the power lost against every row on its own"),
+        ]
+    )
+
+
+def _temperatures(answer: Estimate) -> list[str]:
+    """Table of the temperatures along the hot stream, at most a few rows of it."""
+    rows = answer.rows
+    count = len(rows.current)
+    shown = (
+        range(count)
+        if count <= MOST_ROWS_SHOWN
+        else [round(i * (count - 1) / (MOST_ROWS_SHOWN - 1)) for i in range(MOST_ROWS_SHOWN)]
+    )
+    celsius = (
+        rows.hot_stream_temperature,
+        rows.hot_face_temperature,
+        rows.hot_junction_temperature,
+        rows.cold_junction_temperature,
+        rows.cold_face_temperature,
+        rows.cold_stream_temperature,
+    )
+
+    def number(value: float) -> str:
+        return "-" if not math.isfinite(value) else f"{value:,.0f}"
+
+    lines = [
+        [
+            f"{i + 1}",
+            *(f"{column[i] - 273.15:.1f}" for column in celsius),
+            f"{rows.current[i]:.3g}",
+            f"{rows.module_power[i]:.3g}",
+            number(rows.hot_reynolds[i]),
+            number(rows.cold_reynolds[i]),
+        ]
+        for i in shown
+    ]
+    header = (
+        "row",
+        "hot stream",
+        "hot face",
+        "junction",
+        "junction",
+        "cold face",
+        "cold stream",
+        "A",
+        "W",
+        "Re hot",
+        "Re cold",
+    )
+    return [
+        *_table(header, lines),
+        "  temperatures in degC; current and power of one module; row 1 is where the hot stream enters",
+    ]
+
+
+def _checks(checks: Sequence[Check]) -> list[str]:
+    """Failures and warnings in full, what passed in one sentence each."""
+    order = sorted(checks, key=lambda check: -STATUS_NAMES.index(check.status))
+    width = max(len(check.name) for check in checks)
+    return [_wrapped(f"  {MARKS[check.status]}  {check.name:{width}}  ", check.text) for check in order]
+
+
+def verdict(answer: Estimate) -> str:
+    """One sentence on the answer."""
+    failed = [check.name for check in answer.checks if check.status == "fail"]
+    warned = [check.name for check in answer.checks if check.status == "warn"]
+    if failed:
+        return f"Not acceptable as it stands: {', '.join(failed)}."
+    if answer.net_power <= 0:
+        return "Not worth driving: the drives take more than the modules give."
+    if warned:
+        return f"Read the warnings before relying on it: {', '.join(warned)}."
+    return "All checks pass."
+
+
+def estimate_report(case: Case, answer: Estimate) -> str:
+    """The report of one design."""
+    share = answer.net_power / answer.hot_heat_flow if answer.hot_heat_flow else math.nan
+    lines = [
+        case.title or "Untitled case",
+        "=" * min(len(case.title or "Untitled case"), WIDTH),
+        "",
+        f"Net power {_q(answer.net_power, 'power')} from {_q(answer.hot_heat_flow, 'power')} of heat ({_percent(share)}), "
+        f"{case.electrical.load} load.",
+        _wrapped("", stack_sentence(case, answer) + "."),
+        _wrapped("", verdict(answer)),
+        _heading("Where the energy goes"),
+        *_energy_path(case, answer),
+        _heading("Electrical"),
+        *_electrical(answer),
+        *_pairs(
+            [
+                (
+                    "efficiency",
+                    f"{_percent(answer.module_efficiency)} of the modules' heat, {_percent(answer.conversion_efficiency)} of "
+                    f"all heat; Carnot between the inlets {_percent(answer.carnot_efficiency, 1)}",
+                )
+            ]
+        ),
+        _heading("Streams"),
+        *_pairs([_side_line("hot", case.hot, answer), _side_line("cold", case.cold, answer)]),
+        _heading("Along the stack"),
+        *_temperatures(answer),
+        _heading("To build"),
+        *_pairs(_to_build(answer)),
+        _heading("Checks"),
+        *_checks(answer.checks),
+        _heading("Assumed, because not given"),
+        *(_assumption_lines(case) or ["  nothing that matters"]),
+        _heading("Sources"),
+        *(_wrapped("  ", source, rest="    ") for source in answer.sources),
+        _heading("Cautions"),
+        *(_wrapped("  - ", text) for text in cautions(case, answer)),
+        "",
+        f"harvest {VERSION}, case {answer.case_hash[:12]}",
+    ]
+    return "\n".join(lines)
+
+
+def _to_build(answer: Estimate) -> list[tuple[str, str]]:
+    ends = f" and {answer.cold_end_duct_count:.0f} of half height at the ends" if answer.cold_end_duct_count else ""
+    size = " x ".join(
+        _q(value, "length")
+        for value in (answer.stack_length, answer.stack_width, answer.stack_height)
+        if math.isfinite(value)
+    )
+    sides = "length x width x height" if math.isfinite(answer.stack_height) else "length x width"
+    lines = [
+        ("ducts", f"{answer.hot_duct_count:.0f} hot, {answer.cold_duct_count:.0f} cold{ends}"),
+        ("size", f"{size} ({sides}, headers and frame not included)"),
+    ]
+    if math.isfinite(answer.module_mass):
+        lines.append(("mass", f"{_q(answer.module_mass, 'mass')} of modules, without ducts and frame"))
+    return lines
+
+
+def _assumption_lines(case: Case) -> list[str]:
+    return [
+        _wrapped("  ", f"{item.path} = {item.value}" + (f": {item.reason}" if item.reason else ""), rest="      ")
+        for item in assumptions(case)
+    ]
+
+
+def check_report(case: Case) -> str:
+    """What a case says, and what is assumed."""
+    lines = [case.title or "Untitled case", "", "The case is well formed. Given:"]
+    for path, declaration in DECLARATIONS.items():
+        value = value_at(case, path)
+        if (
+            declaration.section is None
+            and value is not None
+            and path not in case.assumed
+            and path not in ("size", "sweep")
+        ):
+            lines.append(_wrapped(f"  {path} = ", display(value, declaration), rest="      "))
+    lines += ["", "Assumed, because not given:", *(_assumption_lines(case) or ["  nothing that matters"])]
+    return "\n".join([*lines, "", f"case {case_hash(case)[:12]}; nothing was computed"])
+
+
+def field_list() -> str:
+    """All fields of a case file, one line each."""
+    width = max(len(path) for path, declaration in DECLARATIONS.items() if declaration.section is None)
+    lines = []
+    for path, declaration in DECLARATIONS.items():
+        if declaration.section is not None:
+            lines.append(f"\n[{path}]  {declaration.meaning}")
+        else:
+            lines.append(_wrapped(f"  {path:{width}}  ", declaration.meaning.split("; ")[0]))
+    return "\n".join(lines).strip("\n")
+
+
+def fluid_report(sheet: FluidSheet) -> str:
+    """A fluid's properties as a table with range and source."""
+    pairs = [
+        ("served", f"{_t(sheet.lower_limit)} ({sheet.lower_reason}) to {_t(sheet.upper_limit)} ({sheet.upper_reason})"),
+        ("freezes", _t(sheet.freezing)),
+        ("boils", _t(sheet.boiling)),
+        ("water dew point", _t(sheet.water_dew_point)),
+        ("molar mass", f"{1e3 * sheet.molar_mass:.2f} g/mol"),
+        ("source", sheet.source),
+    ]
+    shown = [(name, value) for name, value in pairs if not value.startswith(("-", "nan")) or value[1:2].isdigit()]
+    header = ("degC", "density", "heat capacity", "viscosity", "conductivity", "Prandtl")
+    rows = [
+        (
+            f"{sheet.temperature[i] - 273.15:.1f}",
+            f"{_q(sheet.density[i], 'density', 4)}",
+            f"{sheet.heat_capacity[i]:.1f} J/(kg K)",
+            f"{sheet.viscosity[i] * 1e3:.4g} mPa s",
+            f"{sheet.conductivity[i]:.4g} W/(m K)",
+            f"{sheet.prandtl[i]:.3g}",
+        )
+        for i in range(len(sheet.temperature))
+    ]
+    title = f"{sheet.label} at {_q(sheet.pressure, 'pressure', 6)}"
+    return "\n".join(
+        [title, "", *_table(header, rows), "", *(_wrapped(f"  {name:16}", value) for name, value in shown)]
+    )

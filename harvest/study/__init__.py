@@ -1,0 +1,1 @@
+"""What asks the model many times: sizing, sweeps, duty profiles, doubt."""
