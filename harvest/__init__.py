@@ -1,7 +1,7 @@
 """Power, heat and checks of thermoelectric modules between a hot and a colder stream.
 
-`load_case(path)` reads a case file, `replace(case, {...})` changes it, `estimate(case)` answers it. Names are loaded when
-they are first used, so that importing the package costs nothing.
+`load_case(path)` reads a case file, `replace(case, {...})` changes it, `estimate(case)` answers it. Names are loaded
+when they are first used, so that importing the package costs nothing.
 """
 
 from __future__ import annotations
@@ -9,7 +9,7 @@ from __future__ import annotations
 import importlib
 from typing import TYPE_CHECKING, Any
 
-from harvest.version import VERSION as __version__
+from harvest import version
 
 if TYPE_CHECKING:
     from harvest.errors import CaseError, HarvestError, InputError, NoAnswerError, RangeError
@@ -19,6 +19,8 @@ if TYPE_CHECKING:
     from harvest.model.fluid import fluid
     from harvest.model.reading import load_case, replace
     from harvest.model.results import Estimate, Estimates
+
+__version__ = version.VERSION
 
 _HOMES = {
     "Batch": "harvest.model.batch",

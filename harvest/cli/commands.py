@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import functools
 import os
 import sys
 from collections.abc import Callable
@@ -50,19 +51,21 @@ def _start_kinds() -> dict[str, str]:
 
 def _case_arguments(command: Callable[..., Any]) -> Callable[..., Any]:
     """Add what every command on a case takes."""
-    for decorate in (
-        click.option("--json", "as_json", is_flag=True, help="Write one JSON document instead of the report."),
-        click.option(
-            "--set",
-            "overrides",
-            multiple=True,
-            metavar="FIELD=VALUE",
-            help='Replace a field of the case, such as --set hot.mass_flow="0.4 kg/s". May be repeated.',
-        ),
-        click.argument("case", metavar="CASE"),
-    ):
-        command = decorate(command)
-    return command
+
+    @click.argument("case", metavar="CASE")
+    @click.option(
+        "--set",
+        "overrides",
+        multiple=True,
+        metavar="FIELD=VALUE",
+        help='Replace a field of the case, such as --set hot.mass_flow="0.4 kg/s". May be repeated.',
+    )
+    @click.option("--json", "as_json", is_flag=True, help="Write one JSON document, not the report.")
+    @functools.wraps(command)
+    def with_arguments(*positional: Any, **named: Any) -> Any:
+        return command(*positional, **named)
+
+    return with_arguments
 
 
 def _read(case: str, overrides: tuple[str, ...]) -> Case:
@@ -76,7 +79,7 @@ def _read(case: str, overrides: tuple[str, ...]) -> Case:
 def _standard_input() -> str:
     from harvest.model.case_text import LARGEST_FILE
 
-    content = click.get_binary_stream("stdin").read(LARGEST_FILE + 1)
+    content = sys.stdin.buffer.read(LARGEST_FILE + 1)
     if len(content) > LARGEST_FILE:
         raise InputError(f"stdin: more than {LARGEST_FILE} bytes; a case file is smaller")
     try:

@@ -21,8 +21,9 @@ if TYPE_CHECKING:
 
 CLOSURE_LIMIT = 1e-8
 GRID_LIMIT = 0.01
+AT_LEAST = "at least"
 SHOCK_VOLTAGE = 60.0
-LARGEST_COUPLE_SEEBECK = 0.45e-3
+LARGEST_COUPLE_SEEBECK = 0.5e-3
 LARGEST_MERIT = 2.0
 SMALLEST_COVERAGE = 0.5
 LARGEST_MACH = 0.3
@@ -75,6 +76,7 @@ def _of_the_solution(solved: Solved, scalars: dict[str, FloatArray], grid_effect
         lambda i: (
             f"The stack generates {format_quantity(entropy[i], 'conductance')} of entropy; it must not be negative."
         ),
+        bound=AT_LEAST,
     )
     if np.isfinite(grid_effect).any():
         yield BatchCheck(
@@ -145,9 +147,7 @@ def _of_temperatures(solved: Solved, scalars: dict[str, FloatArray]) -> Iterator
             hottest,
             limit,
             graded(hottest > limit),
-            lambda i: (
-                f"The hottest module face is at {_kelvin(hottest[i])} at the chosen load; allowed is {_kelvin(limit[i])}."
-            ),
+            lambda i: f"The hottest module face is at {_kelvin(hottest[i])}; allowed is {_kelvin(limit[i])}.",
         )
         yield BatchCheck(
             "hot face without load",
@@ -217,6 +217,7 @@ def _of_electricity(solved: Solved, scalars: dict[str, FloatArray]) -> Iterator[
                 f"The terminal voltage is {format_quantity(voltage[i], 'voltage')}; the converter works from "
                 f"{format_quantity(window[0], 'voltage')} to {format_quantity(window[1], 'voltage')}."
             ),
+            bound=AT_LEAST,
         )
         yield BatchCheck(
             "converter without load",
@@ -225,7 +226,7 @@ def _of_electricity(solved: Solved, scalars: dict[str, FloatArray]) -> Iterator[
             _fixed(solved, window[1]),
             graded(highest > window[1], level=WARN),
             lambda i: (
-                f"The open-circuit voltage of {format_quantity(highest[i], 'voltage')} meets the converter's upper limit of "
+                f"Without load {format_quantity(highest[i], 'voltage')} meet the converter's upper limit of "
                 f"{format_quantity(window[1], 'voltage')}"
                 + ("; it needs protection when it does not draw." if highest[i] > window[1] else ".")
             ),
@@ -242,6 +243,7 @@ def _of_electricity(solved: Solved, scalars: dict[str, FloatArray]) -> Iterator[
             if net[i] <= 0
             else f"{format_quantity(net[i], 'power')} is left after converter, auxiliaries and drives."
         ),
+        bound=AT_LEAST,
     )
 
 
@@ -275,8 +277,8 @@ def _of_a_stream(solved: Solved, scalars: dict[str, FloatArray], stream: Stream)
             boiling,
             np.where(warmest >= boiling, FAIL, graded(warmest > boiling - BOILING_MARGIN, level=WARN)),
             lambda i: (
-                f"The warmest wetted wall is at {_kelvin(warmest[i])}; {label} boils at about {_kelvin(boiling[i])} at its "
-                f"inlet pressure, {boiling[i] - warmest[i]:.0f} K of margin."
+                f"The warmest wetted wall is at {_kelvin(warmest[i])}; {label} boils at about {_kelvin(boiling[i])} "
+                f"at its inlet pressure, {boiling[i] - warmest[i]:.0f} K of margin."
             ),
         )
     if np.isfinite(freezing).any():
@@ -289,6 +291,7 @@ def _of_a_stream(solved: Solved, scalars: dict[str, FloatArray], stream: Stream)
             lambda i: (
                 f"The coldest wetted wall is at {_kelvin(coldest[i])}; {label} freezes at {_kelvin(freezing[i])}."
             ),
+            bound=AT_LEAST,
         )
     yield from _of_condensate(solved, stream, coldest)
     mean = 0.5 * (boundaries[:-1] + boundaries[1:])
@@ -347,7 +350,8 @@ def _of_a_stream(solved: Solved, scalars: dict[str, FloatArray], stream: Stream)
         _fixed(solved, LARGEST_DROP_SHARE),
         graded(part > LARGEST_DROP_SHARE, level=WARN),
         lambda i: (
-            f"The pressure drop of {format_quantity(drop[i], 'pressure difference')} is {100 * part[i]:.2g} % of the inlet pressure."
+            f"The drop of {format_quantity(drop[i], 'pressure difference')} is {100 * part[i]:.2g} % of the inlet's "
+            "absolute pressure."
         ),
     )
 
@@ -369,6 +373,7 @@ def _of_condensate(solved: Solved, stream: Stream, coldest: FloatArray) -> Itera
             f"The coldest gas-side wall is at {_kelvin(coldest[i])}; water condenses below {_kelvin(dew[i])}"
             + ("; drain the condensate, which is acid." if coldest[i] < dew[i] else ".")
         ),
+        bound=AT_LEAST,
     )
     sulphur = batch.number(f"{side}.fuel_sulphur", 0.0)
     if (sulphur > 0).any():
@@ -388,36 +393,36 @@ def _of_condensate(solved: Solved, stream: Stream, coldest: FloatArray) -> Itera
             graded(coldest < acid + ACID_MARGIN, level=WARN),
             lambda i: (
                 f"The coldest gas-side wall is at {_kelvin(coldest[i])}; sulphuric acid condenses below about "
-                f"{_kelvin(acid[i])} (+-5 K), and metal is kept {ACID_MARGIN:.0f} K above by common practice, no source."
+                f"{_kelvin(acid[i])} (+-5 K); metal is kept {ACID_MARGIN:.0f} K above, common practice, no source."
             ),
+            bound=AT_LEAST,
         )
 
 
 def _of_limits(solved: Solved, scalars: dict[str, FloatArray]) -> Iterator[BatchCheck]:
     batch = solved.made.batch
-    ceilings = (
-        ("hot_pressure_drop", "hot_pressure_drop", "pressure difference", 1.0),
-        ("cold_pressure_drop", "cold_pressure_drop", "pressure difference", 1.0),
-        ("back_pressure", "hot_pressure_drop", "pressure difference", 1.0),
-        ("minimum_hot_outlet_temperature", "hot_outlet_temperature", "temperature", -1.0),
-        ("maximum_cold_outlet_temperature", "cold_outlet_temperature", "temperature", 1.0),
+    limits = (
+        ("hot_pressure_drop", "hot_pressure_drop", "pressure difference", "at most"),
+        ("cold_pressure_drop", "cold_pressure_drop", "pressure difference", "at most"),
+        ("back_pressure", "hot_pressure_drop", "pressure difference", "at most"),
+        ("minimum_hot_outlet_temperature", "hot_outlet_temperature", "temperature", AT_LEAST),
+        ("maximum_cold_outlet_temperature", "cold_outlet_temperature", "temperature", "at most"),
     )
-    for field, result, kind, sign in ceilings:
+    for field, result, kind, bound in limits:
         limit = batch.number(f"limits.{field}")
         if np.isfinite(limit).any():
-            value = scalars[result]
-            name = field.replace("_", " ")
-            yield BatchCheck(
-                name,
-                kind,
-                value,
-                limit,
-                graded(sign * value > sign * limit),
-                lambda i, value=value, limit=limit, kind=kind, name=name: (  # type: ignore[misc]
-                    f"{format_quantity(value[i], kind)} against the case's limit of {format_quantity(limit[i], kind)} "
-                    f"({name})."
-                ),
-            )
+            yield _limit_check(field.replace("_", " "), kind, scalars[result], limit, bound)
+
+
+def _limit_check(name: str, kind: str, value: FloatArray, limit: FloatArray, bound: str) -> BatchCheck:
+    wrong = value < limit if bound == AT_LEAST else value > limit
+
+    def text(i: int) -> str:
+        return (
+            f"{name}: {format_quantity(value[i], kind)}; the case asks for {bound} {format_quantity(limit[i], kind)}."
+        )
+
+    return BatchCheck(name, kind, value, limit, graded(wrong), text, bound)
 
 
 def _of_the_module(solved: Solved) -> Iterator[BatchCheck]:
@@ -435,7 +440,7 @@ def _of_the_module(solved: Solved) -> Iterator[BatchCheck]:
             lambda i: (
                 f"{1e3 * per_couple[i]:.3f} mV/K a couple"
                 + (
-                    "; no common material exceeds 0.45 mV/K: check the Seebeck coefficient and the number of couples."
+                    "; common materials stay below 0.5 mV/K: check the Seebeck coefficient and the number of couples."
                     if per_couple[i] > LARGEST_COUPLE_SEEBECK
                     else ", within the reach of common materials."
                 )
@@ -485,6 +490,7 @@ def _of_the_module(solved: Solved) -> Iterator[BatchCheck]:
                 else "."
             )
         ),
+        bound=AT_LEAST,
     )
     pressure = batch.number("stack.clamp_pressure")
     force = pressure * made.footprint_area

@@ -881,6 +881,7 @@ def _written(declaration: Declaration) -> str:
 
 
 def default_text(declaration: Declaration) -> str:
+    """Write a field's default, with its reason, in words."""
     reason = f" ({declaration.reason})" if declaration.reason else ""
     if declaration.default is REQUIRED:
         return "none, the field must be given" + (" where it applies" if declaration.applies else "")

@@ -15,7 +15,10 @@ STATUS_NAMES = ("pass", "warn", "fail")
 
 @dataclass(frozen=True)
 class Check:
-    """One check of one design. `value` and `limit` are SI, of the `kind` of quantity; `limit` may be NaN."""
+    """One check of one design. `value` and `limit` are SI, of the `kind` of quantity; `limit` may be NaN.
+
+    `bound` says on which side of the limit the value should be: "at most" or "at least".
+    """
 
     name: str
     kind: str
@@ -23,6 +26,7 @@ class Check:
     limit: float
     status: str
     text: str
+    bound: str = "at most"
 
 
 @dataclass(frozen=True)
@@ -35,6 +39,7 @@ class BatchCheck:
     limit: FloatArray
     status: IntArray
     text: Callable[[int], str]
+    bound: str = "at most"
 
     def of(self, index: int) -> Check:
         """Return the check of one case."""
@@ -45,6 +50,7 @@ class BatchCheck:
             float(self.limit[index]),
             STATUS_NAMES[int(self.status[index])],
             self.text(index),
+            self.bound,
         )
 
 

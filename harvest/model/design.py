@@ -65,6 +65,7 @@ class Stream:
     ducts: FloatArray
     half_ducts: FloatArray
     excess_air_ratio: FloatArray
+    is_reservoir: bool
 
     def table_value(self, name: str) -> FloatArray:
         """One number of each case's fluid table, (cases,)."""
@@ -154,7 +155,7 @@ def _mass_flow(
     if given.standard_volume_flow is not None:
         standard = given.standard_volume_flow
         moles = standard.volume_flow * standard.pressure / (GAS_CONSTANT * standard.temperature)
-        return moles * molar_mass / (1.0 - water if standard.basis == "dry" else 1.0)
+        return np.asarray(moles * molar_mass / (1.0 - water if standard.basis == "dry" else 1.0))
     return exhaust_flow_from_fuel(
         given.fuel,
         batch.number(f"{side}.fuel_flow"),
@@ -195,8 +196,9 @@ def _stream(batch: Batch, side: str, faults: Faults) -> Stream:
         ducts=ducts,
         half_ducts=half,
         excess_air_ratio=_excess_air_ratio(batch, side),
+        is_reservoir=getattr(batch.base, side).fluid == "reservoir",
     )
-    if getattr(batch.base, side).fluid == "reservoir":
+    if nothing_flows.is_reservoir:
         return nothing_flows
     fluid, tables, table_of_case = _fluid(batch, side, faults)
     if fluid is None:
@@ -382,9 +384,10 @@ def design(batch: Batch) -> Design:
     footprint = footprint_area(batch)
     place = batch.number("stack.row_pitch") * batch.number("stack.column_pitch")
     interfaces = tuple(batch.number(f"stack.{side}_interface", 0.0) / footprint for side in ("hot", "cold"))
+    rows = np.where(faults.valid, batch.number("stack.rows"), 1.0).astype(np.int64)
     problem = StackProblem(
-        rows=int(np.nanmax(batch.number("stack.rows"))) * segments,
-        active_rows=(batch.number("stack.rows") * segments).astype(np.int64),
+        rows=int(rows.max()) * segments,
+        active_rows=rows * segments,
         hot=_stack_side(batch, hot, interfaces[0] + substrate, segments),
         cold=_stack_side(batch, cold, interfaces[1] + substrate, segments),
         bypass=batch.number("stack.filler_conductance", 0.0) * (place - footprint),

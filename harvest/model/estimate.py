@@ -77,7 +77,7 @@ def _side_heat(
     """Heat that a stream gives by its enthalpies, or a reservoir by its film [W], (cases,)."""
     if stream.fluid is not None:
         ends = stream.fluid.enthalpy(np.stack([stream.inlet_temperature, outlet]))
-        return stream.mass_flow * (ends[0] - ends[1])
+        return np.asarray(stream.mass_flow * (ends[0] - ends[1]))
     side = problem.hot if stream.name == "hot" else problem.cold
     conductance = side.film_conductance / (1.0 + side.film_conductance * side.wall_resistance)
     return np.asarray((conductance * (side.inlet_temperature - solution_wall) * share).sum(axis=0))
@@ -154,7 +154,7 @@ def _mismatch(problem: StackProblem, segments: int, load: Load, maximum: StackSt
 
 
 def _entropy_given(stream: Stream, outlet: FloatArray, heat: FloatArray) -> FloatArray:
-    """Entropy that a side gives away [W/K], (cases,): integral of m cp dT / T, or heat over a reservoir's temperature."""
+    """Entropy that a side gives away [W/K], (cases,): integral of m cp dT / T, or heat over temperature."""
     if stream.fluid is None:
         return heat / stream.inlet_temperature
     middle, half = 0.5 * (stream.inlet_temperature + outlet), 0.5 * (stream.inlet_temperature - outlet)
@@ -193,6 +193,8 @@ def _solve(made: Design) -> Solved:
         made.faults.add(~each.converged, f"no solution found {name}; the operating point may not exist")
     made.faults.add(~opened.converged, "no solution found without current")
     chosen = unfold(made, problem, state)
+    for stream, boundaries in ((made.hot, state.hot_stream), (made.cold, state.cold_stream)):
+        _flag_range(made, stream, boundaries)
     open_circuit = unfold(made, problem, opened)
     best_power = terminal_power(problem, best)
     row_length = batch.number("stack.row_pitch") / made.segments
@@ -213,6 +215,21 @@ def _solve(made: Design) -> Solved:
         drops[0],
         drops[1],
     )
+
+
+def _flag_range(made: Design, stream: Stream, boundaries: FloatArray) -> None:
+    """Flag cases in which a stream leaves the temperatures for which its fluid is served."""
+    if not stream.tables:
+        return
+    warmest, coldest = boundaries.max(axis=0), boundaries.min(axis=0)
+
+    def sentence(index: int) -> str:
+        table = stream.tables[stream.table_of_case[index]]
+        outside = warmest[index] if warmest[index] > table.upper_limit else coldest[index]
+        return f"{stream.name} stream: {table.outside(float(outside))}"
+
+    beyond = (warmest > stream.table_value("upper_limit")) | (coldest < stream.table_value("lower_limit"))
+    made.faults.add(beyond, sentence)
 
 
 def _scalars(solved: Solved) -> dict[str, FloatArray]:
@@ -325,7 +342,7 @@ def _velocity(stream: Stream) -> FloatArray:
     """Velocity in the ducts at inlet density [m/s], (cases,)."""
     if stream.fluid is None or stream.film is None:
         return np.full(len(stream.inlet_temperature), np.nan)
-    return stream.film.mass_flux / stream.fluid.density(stream.inlet_temperature[None])[0]
+    return np.asarray(stream.film.mass_flux / stream.fluid.density(stream.inlet_temperature[None])[0])
 
 
 def _rows(made: Design, chosen: Solution) -> dict[str, FloatArray]:
@@ -386,9 +403,8 @@ def estimate_batch(batch: Batch, *, grid: bool = False) -> Estimates:
     """
     with np.errstate(all="ignore"):
         made = design(batch)
-        usable = made.hot.tables or made.hot.film is None and batch.base.hot.fluid == "reservoir"
-        usable_cold = made.cold.tables or batch.base.cold.fluid == "reservoir"
-        if not (usable and usable_cold) or not made.faults.valid.any():
+        usable = all(stream.is_reservoir or stream.tables for stream in (made.hot, made.cold))
+        if not usable or not made.faults.valid.any():
             return _nothing(batch, made)
         solved = _solve(made)
         scalars = _scalars(solved)
@@ -404,7 +420,7 @@ def estimate_batch(batch: Batch, *, grid: bool = False) -> Estimates:
 def _nothing(batch: Batch, made: Design) -> Estimates:
     """Return the answer of a batch in which no case can be solved."""
     nan = np.full(batch.cases, np.nan)
-    return Estimates({name: nan for name in SCALARS}, {}, batch.number("stack.rows"), (), made.faults.text, ())
+    return Estimates(dict.fromkeys(SCALARS, nan), {}, batch.number("stack.rows"), (), made.faults.text, ())
 
 
 def estimate(case: Case) -> Estimate:

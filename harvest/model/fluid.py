@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass
+from typing import Any
 
 import numpy as np
 
@@ -74,18 +75,16 @@ def fluid(
     (mass_fraction, volume_fraction, excess_air_ratio, dry_oxygen, intake_humidity [-]) where the fluid has them.
     Raises InputError for a name or composition that is unknown, RangeError outside the fluid's range.
     """
-    if name not in FLUIDS or name == "table":
-        raise InputError(
-            f"fluid: {name!r} is not known; known are {', '.join(each for each in FLUIDS if each != 'table')}"
-        )
+    known = [each for each in FLUIDS if each != "table"]
+    if name not in known:
+        raise InputError(f"fluid: {name!r} is not known; known are {', '.join(known)}")
     unknown = sorted(set(composition) - set(COMPOSITION))
     if unknown:
         raise InputError(f"fluid: {unknown[0]!r} is not part of a composition; known are {', '.join(COMPOSITION)}")
     pascal = _number("pressure", pressure, "pressure") if isinstance(pressure, str) else pressure
     kelvin = np.array([_number("at", each, "temperature") if isinstance(each, str) else each for each in at])
-    spec = FluidSpec(
-        name=name, fuel=fuel, **{key: _number(key, value, "dimensionless") for key, value in composition.items()}
-    )
+    numbers: dict[str, Any] = {key: _number(key, value, "dimensionless") for key, value in composition.items()}
+    spec = FluidSpec(name=name, fuel=fuel, **numbers)
     span = kelvin if kelvin.size else np.array([300.0])
     lower, upper = expansion_range(name, np.array([span.min()]), np.array([span.max()]))
     table = stored_table(spec, pascal, float(lower[0]), float(upper[0]))

@@ -3,22 +3,26 @@
 from __future__ import annotations
 
 import contextlib
+import functools
 import hashlib
 import json
 import os
 import sys
 import tempfile
-from dataclasses import asdict, fields
+from dataclasses import asdict
+from dataclasses import fields as fields_of
 from pathlib import Path
 from typing import Any
 
 import numpy as np
 
+from harvest.physics import chebyshev, combustion, coolprop_source, fluids
 from harvest.physics.coolprop_source import library_version
-from harvest.physics.fluids import FluidSpec, FluidTable, expansion_range, fluid_table
+from harvest.physics.fluids import FluidSpec, FluidTable, check_fluid, expansion_range, fluid_table
 
-FORMAT = 1
-"""Number of this way to store and build a table; raise it whenever either changes."""
+RECIPE = (fluids, combustion, chebyshev, coolprop_source)
+"""Modules that build a table: when one of them changes, tables on disk are built anew."""
+MOST_KEPT = 10_000
 
 _kept: dict[tuple[object, ...], FluidTable] = {}
 
@@ -44,10 +48,9 @@ def stored_table(
     """`fluid_table`, from memory or from disk where it was built before; the same to the last bit.
 
     Parameters: as `fluid_table`; `folder` of the files, by default `cache_folder()`. A folder that cannot be read or
-    written is done without. Raises RangeError as `fluid_table` does, every time anew.
+    written is done without; a user's own rows stay in memory. Raises RangeError as `fluid_table` does, every time anew.
     """
-    if spec.name == "table":
-        return fluid_table(spec, pressure, lower, upper)
+    check_fluid(spec)
     folder = folder or cache_folder()
     if lower <= upper:
         lower, upper = (float(each) for each in expansion_range(spec.name, np.array(lower), np.array(upper)))
@@ -55,20 +58,29 @@ def stored_table(
     table = _kept.get(key)
     if table is None:
         stated = {
-            "format": FORMAT,
+            "recipe": _recipe(),
             "library": library_version(),
             "spec": asdict(spec),
             "pressure": pressure,
             "range": [lower, upper],
         }
-        path = folder / f"{_digest(stated)}.json" if folder else None
+        path = folder / f"{_digest(stated)}.json" if folder and spec.name != "table" else None
         table = _read(path, stated) if path else None
         if table is None:
             table = fluid_table(spec, pressure, lower, upper)
             if path:
                 _write(path, stated, table)
+        if len(_kept) >= MOST_KEPT:
+            _kept.clear()
         _kept[key] = table
     return table
+
+
+@functools.cache
+def _recipe() -> str:
+    """Digest of the source that builds and stores tables."""
+    sources = [Path(str(module.__file__)) for module in RECIPE] + [Path(__file__)]
+    return hashlib.sha256(b"".join(source.read_bytes() for source in sources)).hexdigest()
 
 
 def _digest(content: dict[str, Any]) -> str:
@@ -91,7 +103,7 @@ def _read(path: Path, stated: dict[str, Any]) -> FluidTable | None:
 
 def _write(path: Path, stated: dict[str, Any], table: FluidTable) -> None:
     """Write beside the final file and move it there in one step, so that no reader ever sees half of it."""
-    values = {field.name: getattr(table, field.name) for field in fields(table)}
+    values = {field.name: getattr(table, field.name) for field in fields_of(table)}
     values["coefficients"] = table.coefficients.tolist()
     content = json.dumps({"stated": stated, "digest": _digest(values), "table": values})
     with contextlib.suppress(OSError):

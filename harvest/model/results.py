@@ -1,5 +1,7 @@
 """What an estimate holds: each result declared once with its kind of unit and its meaning."""
 
+# ruff: noqa: RUF009
+
 from __future__ import annotations
 
 import dataclasses
@@ -19,7 +21,7 @@ def _result(kind: str, meaning: str) -> Any:
 
 @dataclass(frozen=True, kw_only=True)
 class Rows:
-    """Results along the hot stream, one number a row; stream temperatures are means of the row, powers of one module."""
+    """Results along the hot stream, one number a row; stream temperatures are means, powers of one module."""
 
     hot_stream_temperature: FloatArray = _result("temperature", "Mean temperature of the hot stream in the row.")
     hot_face_temperature: FloatArray = _result("temperature", "Temperature of the modules' hot faces.")

@@ -15,8 +15,8 @@ from harvest.physics.arrays import FloatArray
 
 GAS_CONSTANT = 8.314462618
 SPECIES = ("carbon dioxide", "water", "oxygen", "nitrogen")
-CARBON, HYDROGEN, OXYGEN, NITROGEN, SULPHUR = 0.012011, 0.001008, 0.015999, 0.014007, 0.03206
-"""Abridged standard atomic weights of the elements [kg/mol], IUPAC."""
+CARBON, HYDROGEN, OXYGEN, NITROGEN, SULPHUR = 0.012011, 0.00100794, 0.0159994, 0.01400674, 0.03206
+"""Atomic weights [kg/mol] as the property library's pure gases have them (IUPAC before its abridged values)."""
 SPECIES_MOLAR_MASS = np.array(
     [CARBON + 2.0 * OXYGEN, 2.0 * HYDROGEN + OXYGEN, 2.0 * OXYGEN, 2.0 * NITROGEN], dtype=np.float64
 )
@@ -252,7 +252,7 @@ def sulphuric_acid_dew_point(water_partial_pressure: FloatArray, acid_partial_pr
     """Temperature at which sulphuric acid condenses from flue gas [K], no better than +-5 K; NaN where a pressure is 0.
 
     Parameters: partial pressures of water and of sulphuric acid [Pa], any one shape.
-    Source: Verhoff and Banchero, Chem. Eng. Progress 70 (8) 1974, 71.
+    Source: Verhoff and Banchero, Chem. Eng. Progress 70 (8) 1974.
     """
     water = np.asarray(water_partial_pressure, dtype=np.float64) / PASCAL_PER_MMHG
     acid = np.asarray(acid_partial_pressure, dtype=np.float64) / PASCAL_PER_MMHG

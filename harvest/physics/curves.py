@@ -24,7 +24,7 @@ class Curve(Protocol):
 
 @dataclass(frozen=True)
 class PolynomialCurve:
-    """Polynomial in (T - `reference`); `coefficients` (terms, cases), lowest power first, SI."""
+    """Polynomial in (T - `reference`); `coefficients` (terms, cases), or (terms, 1) for all, lowest power first, SI."""
 
     coefficients: FloatArray
     reference: float = REFERENCE_TEMPERATURE
@@ -48,7 +48,8 @@ class PolynomialCurve:
 
     def take(self, which: IntArray) -> PolynomialCurve:
         """Return the curve of a subset of cases."""
-        return PolynomialCurve(self.coefficients[:, which], self.reference)
+        shared = self.coefficients.shape[1] == 1
+        return self if shared else PolynomialCurve(self.coefficients[:, which], self.reference)
 
 
 @dataclass(frozen=True)

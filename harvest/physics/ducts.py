@@ -144,16 +144,19 @@ def entrance_nusselt_gain(
     """Mean Nusselt number over the length with the thermal entrance, over its fully developed value [-], 1 or more.
 
     Laminar: Hausen's entrance term, 0.0668 Gz / (1 + 0.04 Gz^(2/3)), added to the fully developed value. Turbulent:
-    1 + (D/L)^(2/3). Linear between Re 2300 and 4000.
+    1 + (D/L)^(2/3). Between, the Nusselt number with its entrance is linear from Re 2300 to 4000, as in `nusselt`.
 
     Parameters: `reynolds`, `prandtl` [-], (rows, cases); `diameter_over_length`, `laminar_nusselt` [-], (cases,).
     Source: Hausen, Z. VDI Beih. Verfahrenstechnik 4 (1943) 91, made for tubes (from memory), within 6 % of
-    Wibulswas' square duct from Gz 10 to 200; Gnielinski 1976 for turbulent flow.
+    Wibulswas' square duct from Gz 10 to 200; Gnielinski 1976 for turbulent flow, 2013 between.
     """
-    graetz = graetz_number(reynolds, prandtl, diameter_over_length)
+    graetz = graetz_number(np.minimum(reynolds, LAMINAR_LIMIT), prandtl, diameter_over_length)
     laminar = 1.0 + 0.0668 * graetz / (1.0 + 0.04 * np.cbrt(graetz) ** 2) / laminar_nusselt
     turbulent = 1.0 + np.cbrt(diameter_over_length) ** 2
-    return laminar + turbulent_share(reynolds) * (turbulent - laminar)
+    # Weighted by heat transfer, so that gain times `nusselt` is linear in Re and joins both ends.
+    fast = nusselt_gnielinski(np.maximum(reynolds, TURBULENT_LIMIT), prandtl)
+    weight = turbulent_share(reynolds) * fast / nusselt(reynolds, prandtl, laminar_nusselt)
+    return laminar + weight * (turbulent - laminar)
 
 
 def fin_efficiency(

@@ -7,8 +7,8 @@ Heat capacity is the derivative of the enthalpy expansion: a balance in enthalpy
 from __future__ import annotations
 
 from collections.abc import Callable, Sequence
-from dataclasses import dataclass, fields
-from functools import cached_property, lru_cache
+from dataclasses import dataclass, fields, replace
+from functools import lru_cache
 from math import ceil, isfinite, isnan, nan
 
 import numpy as np
@@ -158,12 +158,8 @@ def _expanded(
     others = others.copy()
     others[1] = np.log(others[1] / viscosity_scale)
     expanded = chebyshev_coefficients(others)
-    for row, coarsest in (
-        (enthalpy, COARSEST_TAIL),
-        (expanded[0], COARSEST_TAIL),
-        (expanded[1], COARSEST_TAIL),
-        (expanded[2], COARSEST_CONDUCTIVITY_TAIL),
-    ):
+    coarsest_tails = (COARSEST_TAIL, COARSEST_TAIL, COARSEST_TAIL, COARSEST_CONDUCTIVITY_TAIL)
+    for row, coarsest in zip((enthalpy, *expanded), coarsest_tails, strict=True):
         if np.abs(row[-4:]).max() > coarsest * np.abs(row).max():
             raise RangeError(
                 f"{limits.label} changes too fast between {lower:.6g} and {upper:.6g} K at this pressure: "
@@ -172,13 +168,9 @@ def _expanded(
     enthalpy = enthalpy.copy()
     enthalpy[0] -= expansion_value(enthalpy, np.zeros(1))[0]
     enthalpy = without_tail(enthalpy, ENTHALPY_TAIL)
-    rows = [
-        enthalpy,
-        derivative(enthalpy, lower, upper),
-        without_tail(expanded[0], TAIL),
-        without_tail(expanded[1], TAIL),
-        without_tail(expanded[2], CONDUCTIVITY_TAIL),
-    ]
+    tails = (TAIL, TAIL, CONDUCTIVITY_TAIL)
+    shortened = [without_tail(row, tail) for row, tail in zip(expanded, tails, strict=True)]
+    rows = [enthalpy, derivative(enthalpy, lower, upper), *shortened]
     return _table(limits, lower, upper, rows, viscosity_scale, source, water_fraction, molar_mass)
 
 
@@ -414,10 +406,11 @@ def _table_polynomial(name: str, x: FloatArray, values: FloatArray) -> FloatArra
     """Chebyshev coefficients of the lowest polynomial through `values` (points,) of a user's table at `x` (points,).
 
     Up to TABLE_EXACT_POINTS points exactly, more within TABLE_TOLERANCE; it stays in the band of neighbouring points.
+    Of viscosity it is the logarithm over the value in the middle row.
     """
-    if (values == values[0]).all():
-        return values[:1].copy()
     logarithmic = name == "viscosity"
+    if (values == values[0]).all():
+        return np.zeros(1) if logarithmic else values[:1].copy()
     scale = values[len(values) // 2]
     wanted = np.log(values / scale) if logarithmic else values
     exact = len(values) <= TABLE_EXACT_POINTS
@@ -460,23 +453,22 @@ def _user_table(spec: FluidSpec, pressure: float, lower: float, upper: float) ->
     assert spec.table is not None
     columns = np.array(spec.table, dtype=np.float64).T
     temperatures = columns[0]
-    lower, upper = CONSTANT_TABLE_RANGE if len(temperatures) == 1 else (float(temperatures[0]), float(temperatures[-1]))
+    constant = len(temperatures) == 1
+    lower, upper = CONSTANT_TABLE_RANGE if constant else (float(temperatures[0]), float(temperatures[-1]))
     x = (2.0 * temperatures - lower - upper) / (upper - lower)
     density, heat_capacity, viscosity, conductivity = (
         _table_polynomial(name, x, values) for name, values in zip(_TABLE_COLUMNS, columns[1:], strict=True)
     )
     viscosity_scale = float(columns[3, len(temperatures) // 2])
-    if len(viscosity) == 1:
-        viscosity = np.zeros(1)
     limits = FluidLimits(
         label="the fluid table",
         lower_limit=lower,
         upper_limit=upper,
         data_lower=lower,
-        lower_reason="its first row" if len(temperatures) > 1 else "a constant",
-        upper_reason="its last row" if len(temperatures) > 1 else "a constant",
-        lower_advice="add rows for lower temperatures" if len(temperatures) > 1 else "",
-        upper_advice="add rows for higher temperatures" if len(temperatures) > 1 else "",
+        lower_reason="a single row" if constant else "the first row",
+        upper_reason="a single row" if constant else "the last row",
+        lower_advice="" if constant else "add rows for lower temperatures",
+        upper_advice="" if constant else "add rows for higher temperatures",
     )
     rows = [integral(heat_capacity, lower, upper), heat_capacity, density, viscosity, conductivity]
     rows[0][0] -= expansion_value(rows[0], np.zeros(1))[0]
@@ -617,8 +609,10 @@ def fluid_table(spec: FluidSpec, pressure: float, lower: float, upper: float) ->
 class FluidBatch:
     """Many tables side by side, one a case; evaluates properties at temperatures (..., cases) [K].
 
-    A temperature outside a table's range is moved to its end: a solver's iterates may overshoot.
-    `coefficients` (5, terms, tables); `lower`, `upper`, `viscosity_scale` (tables,); `index` (cases,) into the tables.
+    A temperature outside a table's range is moved to its end, as a solver's iterates may overshoot; enthalpy alone goes
+    on with the heat capacity of the end, so that it always rises.
+    `coefficients` (5, terms, tables); `lower`, `upper`, `viscosity_scale` (tables,); `index` (cases,) into the tables;
+    `lengths` (5): terms that each property needs in the table that needs most.
     """
 
     coefficients: FloatArray
@@ -626,6 +620,7 @@ class FluidBatch:
     upper: FloatArray
     viscosity_scale: FloatArray
     index: IntArray
+    lengths: tuple[int, ...]
 
     @classmethod
     def stack(cls, tables: Sequence[FluidTable], index: IntArray) -> FluidBatch:
@@ -633,21 +628,28 @@ class FluidBatch:
         coefficients = np.zeros((5, max(table.coefficients.shape[1] for table in tables), len(tables)))
         for number, table in enumerate(tables):
             coefficients[:, : table.coefficients.shape[1], number] = table.coefficients
+        used = np.asarray(coefficients.any(axis=2))
+        lengths = tuple(int(np.flatnonzero(row)[-1]) + 1 if row.any() else 1 for row in used)
         return cls(
             coefficients,
             np.array([table.lower for table in tables]),
             np.array([table.upper for table in tables]),
             np.array([table.viscosity_scale for table in tables]),
             np.asarray(index, dtype=np.int64),
+            lengths,
         )
 
     def take(self, which: IntArray | BoolArray) -> FluidBatch:
         """Batch of a subset of the cases."""
-        return FluidBatch(self.coefficients, self.lower, self.upper, self.viscosity_scale, self.index[which])
+        return replace(self, index=self.index[which])
 
     def enthalpy(self, temperature: FloatArray) -> FloatArray:
-        """Specific enthalpy [J/kg], zero in the middle of the table's range."""
-        return self._values((ENTHALPY,), temperature)[0]
+        """Specific enthalpy [J/kg], zero in the middle of the table's range; beyond it with the end's heat capacity."""
+        value = self._values((ENTHALPY,), temperature)[0]
+        beyond = temperature - np.clip(temperature, self._of_cases(self.lower), self._of_cases(self.upper))
+        if beyond.any():
+            value += beyond * self.heat_capacity(temperature)
+        return value
 
     def heat_capacity(self, temperature: FloatArray) -> FloatArray:
         """Specific heat capacity at constant pressure [J/(kg K)], the slope of the enthalpy."""
@@ -670,12 +672,6 @@ class FluidBatch:
         heat_capacity, viscosity, conductivity = self._values(FILM_PROPERTIES, temperature)
         return heat_capacity, viscosity, conductivity
 
-    @cached_property
-    def _lengths(self) -> tuple[int, ...]:
-        """Terms that each property needs in the table that needs most."""
-        used = np.abs(self.coefficients).max(axis=2) > 0.0
-        return tuple(int(np.flatnonzero(row)[-1]) + 1 if row.any() else 1 for row in used)
-
     def _of_cases(self, by_table: FloatArray) -> FloatArray:
         """Numbers (..., tables) as (..., cases), or as (..., 1) where all cases share the only table."""
         return by_table if by_table.shape[-1] == 1 else np.take(by_table, self.index, axis=-1)
@@ -686,8 +682,8 @@ class FluidBatch:
         x = temperature * self._of_cases(2.0 / span)
         x -= self._of_cases((self.lower + self.upper) / span)
         np.clip(x, -1.0, 1.0, out=x)
-        by_length = sorted(properties, key=lambda each: -self._lengths[each])
-        lengths = [self._lengths[each] for each in by_length]
+        by_length = sorted(properties, key=lambda each: -self.lengths[each])
+        lengths = [self.lengths[each] for each in by_length]
         coefficients = self.coefficients[by_length].transpose(1, 0, 2)
         evaluated = _clenshaw(x, lengths, lambda term, count: self._of_cases(coefficients[term, :count]))
         values = {each: evaluated[place] for place, each in enumerate(by_length)}
@@ -702,7 +698,7 @@ def _clenshaw(x: FloatArray, lengths: Sequence[int], coefficient: Callable[[int,
     """Sums of Chebyshev series at `x` (..., cases) for several properties at once, (properties, ..., cases).
 
     `lengths` falls from property to property; `coefficient(term, count)` gives one term of the first `count` of them,
-    (count, cases) or (count, 1). Source: Clenshaw, Math. Comp. 9 (1955) 118.
+    (count, cases) or (count, 1). Source: Clenshaw, Math. Comp. 9 (1955) 118 (from memory).
     """
     shape = (len(lengths), *x.shape)
     last, before, new = np.zeros(shape), np.zeros(shape), np.zeros(shape)

@@ -1,4 +1,4 @@
-"""The thermoelectric module: its heat balance, its parameters from materials and legs, and what no design can exceed."""
+"""The thermoelectric module: its heat balance, its parameters from materials and legs, and its ceilings."""
 
 from __future__ import annotations
 

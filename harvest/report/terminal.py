@@ -27,7 +27,7 @@ def _q(value: float, kind: str, digits: int = 3) -> str:
 
 
 def _t(kelvin: float) -> str:
-    return "-" if not math.isfinite(kelvin) else f"{kelvin - 273.15:.1f} degC"
+    return "-" if not math.isfinite(kelvin) else f"{round(kelvin - 273.15, 1) + 0.0:.1f} degC"
 
 
 def _percent(share: float, digits: int = 2) -> str:
@@ -65,35 +65,49 @@ def _table(header: Sequence[str], rows: Sequence[Sequence[str]], indent: int = 2
     ]
 
 
+def _count(number: int, noun: str) -> str:
+    return f"{number} {noun}" + "s" * (number != 1)
+
+
 def stack_sentence(case: Case, answer: Estimate) -> str:
     """Say how many modules there are and how they are arranged and wired."""
     stack, electrical = case.stack, case.electrical
-    blocks = len(electrical.row_blocks) if electrical.row_blocks else 1
-    strings = electrical.strings_across * stack.layers // electrical.layers_in_series * blocks
-    in_series = stack.columns // electrical.strings_across * electrical.layers_in_series * stack.rows
-    lengths = (
-        f"{in_series} modules in series"
-        if blocks == 1
-        else f"{in_series // stack.rows} modules a row, in blocks of {', '.join(map(str, electrical.row_blocks or ()))} rows"
-    )
-    joined = ", each with its own converter" if electrical.independent else (", in parallel" if strings > 1 else "")
+    blocks = electrical.row_blocks or (stack.rows,)
+    strings = electrical.strings_across * stack.layers // electrical.layers_in_series * len(blocks)
+    in_a_row = stack.columns // electrical.strings_across * electrical.layers_in_series
+    lengths = " or ".join(str(in_a_row * rows) for rows in sorted(set(blocks)))
+    joined = ", each with its own converter" if electrical.independent else ", in parallel" * (strings > 1)
     return (
-        f"{int(answer.module_count)} modules: {stack.layers} layer{'s' * (stack.layers > 1)} of {stack.rows} rows x "
-        f"{stack.columns} columns; {strings} string{'s' * (strings > 1)} of {lengths}{joined}"
+        f"{_count(int(answer.module_count), 'module')}: {_count(stack.layers, 'layer')} of "
+        f"{_count(stack.rows, 'row')} x {_count(stack.columns, 'column')}; {_count(strings, 'string')} of {lengths} in series{joined}"
     )
 
 
-def _side_line(name: str, side: Side, answer: Estimate) -> tuple[str, str]:
-    inlet = _t(side.inlet_temperature)
-    if side.fluid == "reservoir":
-        return name, f"reservoir at {inlet}"
-    flow = _q(getattr(answer, f"{name}_mass_flow"), "mass flow")
-    outlet = _t(getattr(answer, f"{name}_outlet_temperature"))
-    drop = _q(getattr(answer, f"{name}_pressure_drop"), "pressure difference")
-    speed = _q(getattr(answer, f"{name}_velocity"), "speed")
-    drive = _q(getattr(answer, f"{name}_drive_power"), "power")
-    cost = "free head" if side.drive == "free" else f"{drive} of {side.drive} power"
-    return name, f"{inlet} -> {outlet}, {flow} {fluid_words(side)}, {speed}, drop {drop}, {cost}"
+def _streams(case: Case, answer: Estimate) -> list[str]:
+    """Both sides as a table."""
+    rows = []
+    for name, side in (("hot", case.hot), ("cold", case.cold)):
+        if side.fluid == "reservoir":
+            rows.append((name, "reservoir", "", _t(side.inlet_temperature), "", "", "", ""))
+            continue
+        cost = (
+            "free head"
+            if side.drive == "free"
+            else f"{_q(getattr(answer, f'{name}_drive_power'), 'power')} {side.drive}"
+        )
+        rows.append(
+            (
+                name,
+                fluid_words(side),
+                _q(getattr(answer, f"{name}_mass_flow"), "mass flow"),
+                _t(side.inlet_temperature),
+                _t(getattr(answer, f"{name}_outlet_temperature")),
+                _q(getattr(answer, f"{name}_velocity"), "speed"),
+                _q(getattr(answer, f"{name}_pressure_drop"), "pressure difference"),
+                cost,
+            )
+        )
+    return _table(("", "", "flow", "in", "out", "velocity", "drop", "driven by"), rows)
 
 
 def fluid_words(side: Side) -> str:
@@ -131,32 +145,40 @@ def _energy_path(case: Case, answer: Estimate) -> list[str]:
     )
 
 
-def _electrical(answer: Estimate) -> list[str]:
-    loads = (
-        f"{_q(answer.maximum_power, 'power', 4)} at the true maximum, {_q(answer.matched_load_power, 'power', 4)} at "
-        "matched load"
-    )
-    if not math.isfinite(answer.voltage):
-        return _pairs(
-            [("power", loads), ("mismatch", f"{_percent(answer.mismatch_loss)} lost against every row on its own")]
+def _electrical(case: Case, answer: Estimate) -> list[str]:
+    within = " within the converter's window" if case.electrical.converter_window else ""
+    a_module = _q(answer.generated_power / answer.module_count, "power")
+    lines = [
+        (
+            "power",
+            f"{_q(answer.maximum_power, 'power', 4)} at the true maximum{within}, "
+            f"{_q(answer.matched_load_power, 'power', 4)} at matched load",
         )
-    return _pairs(
-        [
-            ("power", loads),
+    ]
+    if math.isfinite(answer.voltage):
+        lines += [
             ("terminals", f"{_q(answer.voltage, 'voltage')}, {_q(answer.current, 'current')}"),
             (
                 "resistance",
-                f"load {_q(answer.load_resistance, 'resistance')}, internal {_q(answer.internal_resistance, 'resistance')}, "
-                f"ratio {answer.load_ratio:.3g}",
+                f"load {_q(answer.load_resistance, 'resistance')}, internal "
+                f"{_q(answer.internal_resistance, 'resistance')}, ratio {answer.load_ratio:.3g}",
             ),
             (
                 "without load",
                 f"{_q(answer.open_circuit_voltage, 'voltage')} settled; emf at this load "
                 f"{_q(answer.operating_emf, 'voltage')}",
             ),
-            ("mismatch", f"{_percent(answer.mismatch_loss)} of the power lost against every row on its own"),
         ]
-    )
+    lines += [
+        ("a module", f"{a_module} at this load"),
+        ("mismatch", f"{_percent(answer.mismatch_loss)} of the power lost against every row with a load of its own"),
+        (
+            "efficiency",
+            f"{_percent(answer.module_efficiency)} of the modules' heat, {_percent(answer.conversion_efficiency)} of "
+            f"all heat; Carnot between the inlets {_percent(answer.carnot_efficiency, 1)}",
+        ),
+    ]
+    return _pairs(lines)
 
 
 def _temperatures(answer: Estimate) -> list[str]:
@@ -211,10 +233,24 @@ def _temperatures(answer: Estimate) -> list[str]:
 
 
 def _checks(checks: Sequence[Check]) -> list[str]:
-    """Failures and warnings in full, what passed in one sentence each."""
-    order = sorted(checks, key=lambda check: -STATUS_NAMES.index(check.status))
+    """Failures and warnings in full, what passed with its value and limit."""
     width = max(len(check.name) for check in checks)
-    return [_wrapped(f"  {MARKS[check.status]}  {check.name:{width}}  ", check.text) for check in order]
+    lines = []
+    for status in reversed(STATUS_NAMES):
+        for check in checks:
+            if check.status == status:
+                text = check.text if status != "pass" else _value_and_limit(check)
+                lines.append(_wrapped(f"  {MARKS[status]}  {check.name:{width}}  ", text))
+    return lines
+
+
+def _value_and_limit(check: Check) -> str:
+    def text(number: float) -> str:
+        if check.kind == "temperature":
+            return _t(number)
+        return f"{number:.3g}" if check.kind == "dimensionless" else _q(number, check.kind)
+
+    return text(check.value) + (f", {check.bound} {text(check.limit)}" if math.isfinite(check.limit) else "")
 
 
 def verdict(answer: Estimate) -> str:
@@ -237,25 +273,16 @@ def estimate_report(case: Case, answer: Estimate) -> str:
         case.title or "Untitled case",
         "=" * min(len(case.title or "Untitled case"), WIDTH),
         "",
-        f"Net power {_q(answer.net_power, 'power')} from {_q(answer.hot_heat_flow, 'power')} of heat ({_percent(share)}), "
-        f"{case.electrical.load} load.",
+        f"Net power {_q(answer.net_power, 'power')} from {_q(answer.hot_heat_flow, 'power')} of heat "
+        f"({_percent(share)}); load: {case.electrical.load}.",
         _wrapped("", stack_sentence(case, answer) + "."),
         _wrapped("", verdict(answer)),
         _heading("Where the energy goes"),
         *_energy_path(case, answer),
         _heading("Electrical"),
-        *_electrical(answer),
-        *_pairs(
-            [
-                (
-                    "efficiency",
-                    f"{_percent(answer.module_efficiency)} of the modules' heat, {_percent(answer.conversion_efficiency)} of "
-                    f"all heat; Carnot between the inlets {_percent(answer.carnot_efficiency, 1)}",
-                )
-            ]
-        ),
+        *_electrical(case, answer),
         _heading("Streams"),
-        *_pairs([_side_line("hot", case.hot, answer), _side_line("cold", case.cold, answer)]),
+        *_streams(case, answer),
         _heading("Along the stack"),
         *_temperatures(answer),
         _heading("To build"),

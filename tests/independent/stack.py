@@ -188,6 +188,8 @@ class Properties:
             return c["cp"], c["mu"], c["k"]
         if not self.species:
             cp, mu, k = self._pure(self.fluid.name, temperature, "cmk")
+            if self.fluid.name.startswith("INCOMP"):  # the library's tabulated cp is not the slope of its enthalpy
+                cp = (self.enthalpy(temperature + 0.05) - self.enthalpy(temperature - 0.05)) / 0.1
             return cp, mu, k
         values = [self._pure(name, temperature, "cmk") for name, _, _ in self.species]
         cp = sum(w * v[0] for w, v in zip(self._by_mass(), values, strict=True))

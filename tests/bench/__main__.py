@@ -1,0 +1,133 @@
+"""`python -m tests.bench [solver] [start_up] [script]` prints speeds beside their yardsticks, measured in one run.
+
+Solver: 10,000 random designs of 20 rows against one evaluation of both streams' properties and films over the same
+arrays; the time a design with the number of designs. Script: what an engineer would write, one design at a time.
+Start-up: the commands against importing what they cannot do without.
+"""
+
+from __future__ import annotations
+
+import os
+import statistics
+import subprocess
+import sys
+import time
+from collections.abc import Callable
+from pathlib import Path
+
+import numpy as np
+
+from harvest.model.batch import Batch
+from harvest.model.design import Design, design
+from harvest.model.reading import read_case
+from harvest.model.stack import MATCHED, MAXIMUM_POWER, Load, solve_stack
+from harvest.model.stack.solver import CHUNK_CELLS
+from tests.bench.baseline import DEMO_DESIGNS, solve_plainly
+from tests.bench.random_designs import random_batch
+from tests.independent.stack import Load as ScriptLoad
+from tests.translation import case_text
+
+CASES = 10_000
+REPEATS = 5
+EXAMPLE = Path(__file__).parents[2] / "examples" / "genset-jacket-water.toml"
+
+
+def best(run: Callable[[], object], repeats: int = REPEATS) -> float:
+    """Shortest of several runs [s]."""
+    times = []
+    for _ in range(repeats):
+        begun = time.perf_counter()
+        run()
+        times.append(time.perf_counter() - begun)
+    return min(times)
+
+
+def properties_and_films(made: Design) -> None:
+    """One evaluation of all properties and films of both streams over (rows, cases)."""
+    problem = made.problem
+    chunk = CHUNK_CELLS // problem.rows
+    for side in (problem.hot, problem.cold):
+        assert side.fluid is not None and side.film is not None
+        for first in range(0, problem.cases, chunk):
+            which = np.arange(first, min(first + chunk, problem.cases))
+            fluid, film = side.fluid.take(which), side.film.take(which)
+            temperature = np.ones((problem.rows, 1)) * side.inlet_temperature[which]
+            film.conductance(*fluid.film_properties(temperature))
+            fluid.density(temperature)
+            fluid.enthalpy(temperature)
+
+
+def solver() -> None:
+    """Multiples of one evaluation, and time a design against the number of designs."""
+    made = design(random_batch(CASES))
+    print(f"{CASES:,} random designs of {made.problem.rows} rows, air to glycol, to 1e-8")
+    once = best(lambda: properties_and_films(made))
+    print(f"  one evaluation of properties and films   {1e3 * once:7.1f} ms")
+    for mode, allowed in ((MATCHED, 10), (MAXIMUM_POWER, 15)):
+        state = solve_stack(made.problem, Load(mode))
+        seconds = best(lambda mode=mode: solve_stack(made.problem, Load(mode)))  # type: ignore[misc]
+        print(
+            f"  {mode:38}   {1e3 * seconds:7.1f} ms  {seconds / once:5.1f} times (gate {allowed}), "
+            f"{1e6 * seconds / CASES:.1f} us a design, {state.passes.mean():.2f} passes, "
+            f"{(~state.converged).sum()} not converged"
+        )
+    print("  time a design at matched load")
+    for count in (10, 100, 1_000, 10_000, 40_000):
+        problem = design(random_batch(count)).problem
+        seconds = best(lambda problem=problem: solve_stack(problem, Load(MATCHED)), 3)  # type: ignore[misc]
+        print(f"    {count:7,} designs  {1e6 * seconds / count:8.1f} us")
+
+
+def script() -> None:
+    """The multiple over an engineer's script, with the same answers."""
+    print("script with a root finder and CoolProp, one design at a time (20 rows)")
+    for name, plain in DEMO_DESIGNS.items():
+        for mode in ("matched", "maximum power"):
+            load = ScriptLoad(mode)
+            made = design(Batch(read_case(case_text(plain, load)), CASES))
+            seconds = best(lambda made=made: solve_stack(made.problem, made.load), 2) / CASES  # type: ignore[misc]
+            state = solve_stack(design(Batch(read_case(case_text(plain, load)))).problem, made.load.take(np.arange(1)))
+            power = float((made.problem.circuit.parallel[0] * state.current * state.string_voltage).sum())
+            for backend in ("low-level", "props"):
+                theirs = solve_plainly(plain, load, backend)
+                print(
+                    f"  {name:13}{mode:14}{backend:10} {theirs['seconds']:7.2f} s a design, "
+                    f"{theirs['calls']['function_calls']:6,} evaluations, "
+                    f"{theirs['calls']['property_values']:8,} values; "
+                    f"here {1e6 * seconds:5.1f} us: {theirs['seconds'] / seconds:9,.0f} times; "
+                    f"power apart {theirs['generated_power'] / power - 1:+.0e}"
+                )
+
+
+def start_up() -> None:
+    """Commands against the imports that they cannot do without."""
+    python = sys.executable
+    # an installed package has its byte code; let the first run write it here too
+    environment = {name: value for name, value in os.environ.items() if name != "PYTHONDONTWRITEBYTECODE"}
+
+    def run(command: list[str]) -> None:
+        subprocess.run(command, capture_output=True, check=True, env=environment)
+
+    commands = {
+        "import click": [python, "-c", "import click"],
+        "harvest --help": [python, "-m", "harvest", "--help"],
+        "import click, numpy": [python, "-c", "import click, numpy"],
+        "harvest estimate, second": [python, "-m", "harvest", "estimate", str(EXAMPLE)],
+    }
+    seconds: dict[str, list[float]] = {name: [] for name in commands}
+    for _ in range(7):
+        for name, command in commands.items():
+            seconds[name].append(best(lambda command=command: run(command), 1))  # type: ignore[misc]
+    middle = {name: statistics.median(times[1:]) for name, times in seconds.items()}
+    print("start-up")
+    for name, value in middle.items():
+        print(f"  {name:26} {value:6.3f} s")
+    print(f"  help over import: {middle['harvest --help'] / middle['import click']:.2f} (gate 2)")
+    allowed = 1.5 * middle["import click, numpy"] + 0.1
+    print(f"  second estimate over 1.5 imports + .1 s: {middle['harvest estimate, second'] / allowed:.2f} (gate 1)")
+
+
+if __name__ == "__main__":
+    for part in (solver, start_up, script):
+        if len(sys.argv) == 1 or part.__name__ in sys.argv[1:]:
+            part()
