@@ -530,7 +530,11 @@ def _wrong_unit(given: object, unit: str, kind: str) -> str:
     if kind == "temperature difference" and key in _spellings("temperature"):
         return f"{shown(given)} is a temperature, and a temperature difference is wanted; write it in K"
     others = [name for name in KINDS if name != kind and key in _spellings(name)]
-    what = f"is in a unit of {others[0]}, not of {kind}" if others else f'has no known unit of {kind} ("{unit[:30]}")'
+    what = (
+        f"is in a unit of {others[0]}, not of {kind}"
+        if others
+        else f'has no known unit of {kind} ("{one_line(unit, 30)}")'
+    )
     return f"{shown(given)} {what}; use {allowed_units(kind)}"
 
 

@@ -9,8 +9,12 @@ from pathlib import Path
 import pytest
 
 from harvest.cli.commands import cli
+from harvest.model import assessment
 from harvest.model.case import DECLARATIONS
+from harvest.model.estimate import estimate
+from harvest.model.reading import load_case
 from harvest.model.results import ROW_RESULTS, SCALARS
+from harvest.physics.ducts import LAMINAR_LIMIT, OFFSET_STRIP_REYNOLDS_RANGE, TURBULENT_LIMIT
 from harvest.report.reference import CheckedNumber, case_reference, check_list, result_reference
 from tests.test_published import CHECKS
 from tests.write_documents import DOCS, ROOT, checked_numbers, command_line, readme
@@ -18,6 +22,12 @@ from tests.write_documents import DOCS, ROOT, checked_numbers, command_line, rea
 PAGES = [ROOT / "README.md", ROOT / "DEVELOPERS.md", *sorted(DOCS.rglob("*.md"))]
 SECTIONS = {path.partition(".")[0] for path in DECLARATIONS if "." in path}
 NUMBER = re.compile(r"-?\b\d[\d,]*(?:\.\d+)?(?:e[+-]?\d+)?")
+SOURCE = (ROOT / "pyproject.toml").read_text(encoding="utf-8") + "".join(
+    path.read_text(encoding="utf-8")
+    for folder in ("harvest", "tests")
+    for path in (ROOT / folder).rglob("*.py")
+    if path != Path(__file__)
+)
 REGENERATE = "is not up to date; run python -m tests.write_documents"
 
 every_page = pytest.mark.parametrize("page", PAGES, ids=lambda page: str(page.relative_to(ROOT)))
@@ -120,19 +130,58 @@ def test_named_commands_exist(page: Path) -> None:
             assert name in cli.commands, f"{line}: no such command"
 
 
-def _map_of_the_source() -> str:
-    text = (ROOT / "DEVELOPERS.md").read_text(encoding="utf-8")
-    return text.partition("## Map of the source\n")[2].partition("\n## ")[0]
+def _section(page: str, heading: str) -> str:
+    text = (ROOT / page).read_text(encoding="utf-8")
+    return text.partition(f"\n## {heading}")[2].partition("\n## ")[0]
 
 
 def test_the_map_of_the_source_is_the_source() -> None:
     folder, mapped = Path(), set()
-    for name in re.findall(r"^\| (?:\*\*)?`([\w./]+)`", _map_of_the_source(), flags=re.MULTILINE):
+    for name in re.findall(
+        r"^\| (?:\*\*)?`([\w./]+)`", _section("DEVELOPERS.md", "Map of the source"), flags=re.MULTILINE
+    ):
         if name.startswith("harvest/"):
             folder = ROOT / name
         elif name.endswith(".py"):
             mapped.add(folder / name)
     assert mapped == {each for each in (ROOT / "harvest").rglob("*.py") if not each.name.startswith("__")}
+
+
+@every_page
+def test_named_code_exists(page: Path) -> None:
+    for code in codes(page):
+        if re.fullmatch(r"_?[A-Za-z]\w{3,}", code):
+            assert re.search(rf"\b{code}\b", SOURCE), f"{code} is not in the source"
+
+
+def test_checks_of_an_estimate_are_in_the_method() -> None:
+    told = re.findall(r"^\| ([^|]+) \|", _section("docs/method.md", "Checks of an estimate"), flags=re.MULTILINE)
+    found = {
+        check.name for path in sorted((ROOT / "examples").glob("*.toml")) for check in estimate(load_case(path)).checks
+    }
+    assert len(found) > 20
+    assert not {name for name in found if name not in told and re.sub("^(hot|cold) ", "", name) not in told}
+
+
+def test_limits_of_checks_are_those_of_the_code() -> None:
+    section = _section("docs/method.md", "Checks of an estimate")
+    for limit in (
+        f"| energy closure | {assessment.CLOSURE_LIMIT:g} of",
+        f"| grid | {100 * assessment.GRID_LIMIT:g} %",
+        f"| open-circuit voltage | {assessment.SHOCK_VOLTAGE:g} V",
+        f"with {assessment.BOILING_MARGIN:g} K of margin | fail; warn |\n| freezing",
+        f"with {assessment.FREEZING_MARGIN:g} K of margin | fail; warn |\n| water",
+        f"and {assessment.ACID_MARGIN:g} K more",
+        f"Re {LAMINAR_LIMIT:g} to {TURBULENT_LIMIT:g}; with offset strips none outside Re "
+        f"{OFFSET_STRIP_REYNOLDS_RANGE[0]:g} to {OFFSET_STRIP_REYNOLDS_RANGE[1]:g}",
+        f"{assessment.FASTEST['liquid']:g} m/s of a liquid, {assessment.FASTEST['gas']:g} m/s of a gas",
+        f"| Mach number | {assessment.LARGEST_MACH:g} |",
+        f"{100 * assessment.LARGEST_DROP_SHARE:g} % of the inlet pressure",
+        f"| {1e3 * assessment.LARGEST_COUPLE_SEEBECK:g} mV/K |",
+        f"Z T of {assessment.LARGEST_MERIT:g} |",
+        f"| coverage | {100 * assessment.SMALLEST_COVERAGE:g} %",
+    ):
+        assert limit in section, limit
 
 
 def test_names_of_the_nomenclature_are_names_of_the_code() -> None:

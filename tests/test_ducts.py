@@ -131,7 +131,7 @@ def test_fin_efficiency_has_no_step_where_its_series_takes_over() -> None:
     [(2.0, 0.8 * 1.8e-3, 0.8 * 6e-3, 3e-3), (1.0, 0.8 * 1.8e-3, 0.8 * 13.8e-3, 7e-3)],
 )
 def test_finned_areas_by_hand(faces: float, prime: float, fin: float, height: float) -> None:
-    film = DUCT_KINDS["plain fins"](measures(faces=faces), False)
+    film = DUCT_KINDS["plain fins"].build(measures(faces=faces), False)
     assert film.prime_area[0] == pytest.approx(prime, rel=1e-14)
     assert film.fin_area[0] == pytest.approx(fin, rel=1e-14)
     assert film.fin_height[0] == pytest.approx(height, rel=1e-14)
@@ -141,7 +141,7 @@ def test_finned_areas_by_hand(faces: float, prime: float, fin: float, height: fl
 
 
 def test_offset_strips_add_their_leading_and_trailing_edges() -> None:
-    film = DUCT_KINDS["offset strip fins"](measures(), False)
+    film = DUCT_KINDS["offset strip fins"].build(measures(), False)
     assert isinstance(film, OffsetStripFilm)
     # Two sides of 6 x 4 mm and two edges of 6 x 0.2 mm a strip, half of it for each plate.
     assert film.fin_area[0] == pytest.approx(0.8 * 6e-3 * (1.0 + 0.2 / 4.0), rel=1e-14)
@@ -155,17 +155,17 @@ def test_offset_strips_add_their_leading_and_trailing_edges() -> None:
 
 def test_a_laminar_smooth_duct_by_hand() -> None:
     # 1 g/s of gas in a slot 200 by 6 mm: hydraulic diameter 2400/206 mm, Re = m D / (A mu) = 324.
-    film = DUCT_KINDS["smooth"](measures(mass_flow=1e-3), False)
+    film = DUCT_KINDS["smooth"].build(measures(mass_flow=1e-3), False)
     diameter = 2.0 * 0.2 * 6e-3 / 0.206
     reynolds = film.reynolds(np.array([[HOT_GAS[1]]]))
     assert reynolds[0, 0] == pytest.approx(1e-3 * diameter / (0.2 * 6e-3 * 3.0e-5), rel=1e-14)
     assert conductance(film, HOT_GAS)[0, 0] == pytest.approx(8.235 * 0.045 / diameter * PLACE, rel=1e-14)
-    one_heated = DUCT_KINDS["smooth"](measures(mass_flow=1e-3, faces=1.0), False)
+    one_heated = DUCT_KINDS["smooth"].build(measures(mass_flow=1e-3, faces=1.0), False)
     assert conductance(one_heated, HOT_GAS)[0, 0] == pytest.approx(5.385 * 0.045 / diameter * PLACE, rel=1e-14)
 
 
 def test_square_passages_have_all_walls_heated() -> None:
-    film = DUCT_KINDS["smooth"](measures(passages=20.0, passage_width=6e-3, area_ratio=1.8), False)
+    film = DUCT_KINDS["smooth"].build(measures(passages=20.0, passage_width=6e-3, area_ratio=1.8), False)
     assert film.hydraulic_diameter[0] == pytest.approx(6e-3, rel=1e-14)
     assert film.flow_area[0] == pytest.approx(20 * 36e-6, rel=1e-14)
     assert film.laminar_nusselt[0] == pytest.approx(3.608, rel=1e-3)
@@ -175,7 +175,7 @@ def test_square_passages_have_all_walls_heated() -> None:
 
 @pytest.mark.parametrize("faces", [1.0, 2.0])
 def test_a_narrow_plain_fin_passage_has_its_webs_heated(faces: float) -> None:
-    film = DUCT_KINDS["plain fins"](measures(faces=faces, fin_pitch=6.2e-3), False)
+    film = DUCT_KINDS["plain fins"].build(measures(faces=faces, fin_pitch=6.2e-3), False)
     assert film.laminar_nusselt[0] == pytest.approx(3.608, rel=1e-3)
 
 
@@ -201,7 +201,7 @@ def test_conductance_never_falls_with_flow(
     faces: float,
 ) -> None:
     made = measures(2, mass_flow=flow * np.array([1.0, step]), gap=gap, length=length, faces=faces)
-    film = DUCT_KINDS[kind](made, developing)
+    film = DUCT_KINDS[kind].build(made, developing)
     slow, fast = conductance(film, fluid)[0]
     assert 0.0 < slow <= fast * (1 + 1e-13)
 
@@ -211,17 +211,17 @@ def test_conductance_never_falls_with_flow(
 @given(flow=st.floats(2e-3, 2.0), fouling=st.floats(1e-6, 5e-3), gap=st.floats(2e-3, 0.02))
 def test_fouling_never_helps(kind: str, flow: float, fouling: float, gap: float) -> None:
     made = measures(3, mass_flow=flow, gap=gap, fouling=np.array([0.0, fouling, 2 * fouling]))
-    clean, fouled, worse = conductance(DUCT_KINDS[kind](made, False), WATER)[0]
+    clean, fouled, worse = conductance(DUCT_KINDS[kind].build(made, False), WATER)[0]
     assert clean > fouled > worse > 0.0
 
 
 def test_fouling_of_a_smooth_duct_is_a_resistance_in_series() -> None:
-    clean, fouled = conductance(DUCT_KINDS["smooth"](measures(2, fouling=np.array([0.0, 2e-4])), False), WATER)[0]
+    clean, fouled = conductance(DUCT_KINDS["smooth"].build(measures(2, fouling=np.array([0.0, 2e-4])), False), WATER)[0]
     assert 1.0 / fouled - 1.0 / clean == pytest.approx(2e-4 / PLACE, rel=1e-12)
 
 
 def test_fouling_acts_inside_the_fin_efficiency() -> None:
-    clean, fouled = (DUCT_KINDS["plain fins"](measures(fouling=value), False) for value in (0.0, 2e-3))
+    clean, fouled = (DUCT_KINDS["plain fins"].build(measures(fouling=value), False) for value in (0.0, 2e-3))
     film = (
         clean.nusselt(clean.reynolds(np.array([[WATER[1]]])), np.array([[WATER[0] * WATER[1] / WATER[2]]]))[0, 0]
         * WATER[2]
@@ -234,7 +234,7 @@ def test_fouling_acts_inside_the_fin_efficiency() -> None:
 
 
 def test_highly_conducting_fins_work_over_their_whole_area() -> None:
-    film = DUCT_KINDS["plain fins"](measures(fin_conductivity=1e9, mass_flow=1e-3), False)
+    film = DUCT_KINDS["plain fins"].build(measures(fin_conductivity=1e9, mass_flow=1e-3), False)
     coefficient = film.laminar_nusselt[0] * HOT_GAS[2] / film.hydraulic_diameter[0]
     assert conductance(film, HOT_GAS)[0, 0] == pytest.approx(coefficient * 0.8 * 7.8e-3, rel=1e-6)
 
@@ -242,7 +242,7 @@ def test_highly_conducting_fins_work_over_their_whole_area() -> None:
 @KINDS
 def test_the_entrance_never_hurts_and_long_ducts_forget_it(kind: str) -> None:
     made = measures(2, length=np.array([0.1, 1e9]), mass_flow=0.004)
-    plain, developing = (conductance(DUCT_KINDS[kind](made, choice), HOT_GAS)[0] for choice in (False, True))
+    plain, developing = (conductance(DUCT_KINDS[kind].build(made, choice), HOT_GAS)[0] for choice in (False, True))
     assert np.all(developing >= plain)
     assert developing[1] == pytest.approx(plain[1], rel=1e-6)
 
@@ -262,13 +262,13 @@ MIXED = measures(
 @KINDS
 @DEVELOPING
 def test_a_batch_equals_its_cases_one_by_one_to_the_last_bit(kind: str, developing: bool) -> None:
-    film = DUCT_KINDS[kind](MIXED, developing)
+    film = DUCT_KINDS[kind].build(MIXED, developing)
     together = conductance(film, WATER, rows=3)
     reynolds = film.reynolds(np.full((3, 5), WATER[1]))
     friction = film.friction_factor(reynolds)
     for case in range(5):
         which = np.array([case])
-        alone = DUCT_KINDS[kind](part_of(MIXED, which), developing)
+        alone = DUCT_KINDS[kind].build(part_of(MIXED, which), developing)
         np.testing.assert_array_equal(conductance(alone, WATER, rows=3), together[:, which])
         np.testing.assert_array_equal(alone.friction_factor(reynolds[:, which]), friction[:, which])
 
@@ -276,15 +276,15 @@ def test_a_batch_equals_its_cases_one_by_one_to_the_last_bit(kind: str, developi
 @KINDS
 def test_a_subset_of_a_film_is_the_film_of_the_subset(kind: str) -> None:
     which = np.array([3, 0, 3])
-    taken = DUCT_KINDS[kind](MIXED, True).take(which)
-    made = DUCT_KINDS[kind](part_of(MIXED, which), True)
+    taken = DUCT_KINDS[kind].build(MIXED, True).take(which)
+    made = DUCT_KINDS[kind].build(part_of(MIXED, which), True)
     assert type(taken) is type(made)
     for each in fields(taken):
         np.testing.assert_array_equal(getattr(taken, each.name), getattr(made, each.name), err_msg=each.name)
 
 
 def test_an_offset_strip_film_is_its_colburn_and_friction_factor() -> None:
-    film = DUCT_KINDS["offset strip fins"](measures(), False)
+    film = DUCT_KINDS["offset strip fins"].build(measures(), False)
     shape = (np.array([0.3]), np.array([0.05]), np.array([0.2 / 1.8]))
     reynolds = np.array([[800.0]])
     colburn = ducts.offset_strip_colburn_factor(reynolds, *shape)

@@ -22,7 +22,6 @@ from harvest.model.reading import load_case, read_case, replace
 from harvest.model.results import SCALARS, Estimate, Estimates
 from harvest.physics.arrays import FloatArray
 from tests.bench.random_designs import random_batch
-from tests.independent.stack import Fluid, Properties
 
 REPOSITORY = Path(__file__).parents[1]
 EXAMPLES = sorted((REPOSITORY / "examples").glob("*.toml"))
@@ -129,7 +128,7 @@ def exchanger(
     transfer_units: float, hot_rate: float, cold_rate: float, hot_inlet: float, cold_inlet: float, segments: int
 ) -> Estimate:
     """Constant-property laminar streams (rates in W/K) between walls of no resistance, without current."""
-    rows, conductivity, gap = 20, 0.5, 0.002
+    rows, conductivity, gap = 50, 1.0, 0.002
     film = 5.385 * conductivity / (2.0 * gap / (1.0 + gap / 0.04))  # one wide passage heated on one face
     overall = transfer_units * min(hot_rate, cold_rate) / rows
     conductance = 1.0 / (1.0 / overall - 2.0 / (film * PLACE))
@@ -167,8 +166,8 @@ load = "open circuit"
 def settled_outlets(
     transfer_units: float, hot_rate: float, cold_rate: float, hot: float, cold: float
 ) -> tuple[float, float]:
-    """Outlet temperatures extrapolated from grids of 2 and 4 segments a row, whose error falls with its square."""
-    coarse, fine = (exchanger(transfer_units, hot_rate, cold_rate, hot, cold, n) for n in (2, 4))
+    """Outlet temperatures extrapolated from grids of 4 and 8 segments a row, whose error falls with its square."""
+    coarse, fine = (exchanger(transfer_units, hot_rate, cold_rate, hot, cold, n) for n in (4, 8))
     assert coarse.valid and fine.valid
     return tuple(  # type: ignore[return-value]
         (4.0 * getattr(fine, name) - getattr(coarse, name)) / 3.0
@@ -229,7 +228,7 @@ def test_matched_power_between_fixed_junctions_is_the_square_law() -> None:
     """(a dT)^2 / (4 R), films extrapolated away; R is the whole resistance of the module."""
     powers = []
     for film in (1e8, 2e8):
-        change = {side: f"{film} W/(m^2 K)" for side in ("hot.film_coefficient", "cold.film_coefficient")}
+        change = dict.fromkeys(("hot.film_coefficient", "cold.film_coefficient"), f"{film} W/(m^2 K)")
         answer = estimate(replace(read_case(RESERVOIRS), {**change, "electrical.load": "matched"}))
         assert answer.load_ratio == pytest.approx(1.0, rel=1e-9)
         powers.append(answer.generated_power)
@@ -244,9 +243,7 @@ def test_load_ratio_at_maximum_power_behind_contacts(contact_ratio: float, load_
     """Apertet et al., EPL 97 (2012) 28001: m = 1 + Z T / (1 + Kc/K), T the mean of the junctions at the optimum."""
     contact = contact_ratio * 0.5
     film = f"{2.0 * contact / PLACE!r} W/(m^2 K)"
-    answer = estimate(
-        replace(read_case(RESERVOIRS), {"hot.film_coefficient": film, "cold.film_coefficient": film})
-    )
+    answer = estimate(replace(read_case(RESERVOIRS), {"hot.film_coefficient": film, "cold.film_coefficient": film}))
     mean = 0.5 * (answer.rows.hot_junction_temperature[0] + answer.rows.cold_junction_temperature[0])
     merit = 0.05**2 / (2.0 * 0.5) * mean
     assert answer.load_ratio == pytest.approx(1.0 + merit / (1.0 + contact_ratio), abs=1e-4)
@@ -324,7 +321,7 @@ CLOSING = {
             "hot.duct.gap": "5 mm",
         },
     ),
-    "exhaust to water": (
+    "exhaust to glycol": (
         300,
         {
             "hot.fluid": "exhaust gas",
@@ -359,9 +356,14 @@ def closing(name: str) -> tuple[Batch, Estimates]:
                 "hot.mass_flow": 10.0 ** rng.uniform(-1.0, 0.5, count),
             }
         batch = Batch(replace(batch.base, changes), count, varied)
-    answers = estimate_batch(batch)
-    assert answers.valid.all(), set(answers.problem)
-    return batch, answers
+    valid = np.flatnonzero(estimate_batch(batch).valid)  # the others drive the coolant out of its range
+    assert len(valid) > 0.7 * count
+    batch = Batch(batch.base, len(valid), {path: value[valid] for path, value in batch.varied.items()})
+    return batch, estimate_batch(batch)
+
+
+DIESEL_GAS = {gas: float(PropsSI("M", gas)) for gas in ("CarbonDioxide", "Water", "Oxygen", "Nitrogen")}
+"""Species of exhaust gas with the molar masses [kg/mol] of the property library."""
 
 
 class DirectStates:
@@ -370,22 +372,25 @@ class DirectStates:
     def __init__(self, batch: Batch, side: str, index: int) -> None:
         given = getattr(batch.base, side)
         self.pressure = float(batch.number(f"{side}.pressure")[index])
-        self.exhaust = None
-        if given.fluid == "exhaust gas":
-            self.exhaust = Properties(Fluid("exhaust", excess_air_ratio=given.excess_air_ratio), self.pressure, "props")
-        elif given.fluid == "ethylene glycol":
+        self.excess = given.excess_air_ratio
+        if given.fluid == "ethylene glycol":
             self.name = f"INCOMP::AEG[{float(batch.number(f'{side}.volume_fraction')[index])!r}]"
         else:
             self.name = given.fluid.capitalize()
 
     def fall(self, inlet: float, outlet: float) -> tuple[float, float]:
         """Enthalpy [J/kg] and entropy [J/(kg K)] that the stream gives away."""
-        if self.exhaust:
-            enthalpy = self.exhaust.enthalpy(inlet) - self.exhaust.enthalpy(outlet)
-            total = sum(x * m for _, x, m in self.exhaust.species)
-            entropy = sum(
-                x * m / total * (PropsSI("S", "T", inlet, "P", 1.0, gas) - PropsSI("S", "T", outlet, "P", 1.0, gas))
-                for gas, x, m in self.exhaust.species
+        if self.excess is not None:
+            oxygen = 12.0 + 23.0 / 4.0  # of C12H23, burnt in air of 1 O2 to 3.76 N2
+            moles = (12.0, 23.0 / 2.0, (self.excess - 1.0) * oxygen, 3.76 * self.excess * oxygen)
+            mass = sum(n * m for n, m in zip(moles, DIESEL_GAS.values(), strict=True))
+            enthalpy, entropy = (
+                sum(
+                    n * (PropsSI(key, "T", inlet, *dilute, gas) - PropsSI(key, "T", outlet, *dilute, gas))
+                    for n, gas in zip(moles, DIESEL_GAS, strict=True)
+                )
+                / mass
+                for key, dilute in (("HMOLAR", ("DMOLAR", 1e-7)), ("SMOLAR", ("P", 1.0)))
             )
             return enthalpy, entropy
         return tuple(  # type: ignore[return-value]
@@ -449,14 +454,16 @@ def test_definitions_hold_for_every_design(name: str) -> None:
         np.polynomial.polynomial.polyval(temperature - 300.0, getattr(batch.base.module, name).values)
         for name in ("seebeck", "resistance", "conductance")
     )
-    merit = (seebeck**2 / (resistance * conductance)).max() * 0.5 * (
-        rows["hot_junction_temperature"] + rows["cold_junction_temperature"]
+    merit = (
+        (seebeck**2 / (resistance * conductance)).max()
+        * 0.5
+        * (rows["hot_junction_temperature"] + rows["cold_junction_temperature"])
     )
     root = np.sqrt(1.0 + merit)
     ratio = rows["cold_junction_temperature"] / rows["hot_junction_temperature"]
     ceiling = (1.0 - ratio) * (root - 1.0) / (root + ratio)
     generating = (rows["module_power"] > 0.0) & (difference > 0.0)
-    assert generating.mean() > 0.9
+    assert generating.mean() > 0.7  # in long strings on spent streams the last modules are driven as coolers
     assert np.all(rows["module_power"][generating] <= (ceiling * rows["module_heat_flow"])[generating] * (1.0 + 1e-9))
 
 
@@ -655,7 +662,8 @@ def test_a_varied_field_that_has_no_effect_is_refused(path: str) -> None:
 
 def test_an_estimate_is_frozen_and_repeatable() -> None:
     one, other = estimate(water_to_water()), estimate(water_to_water())
-    assert scalars(one) == scalars(other) and one.case_hash == other.case_hash
+    np.testing.assert_array_equal(list(scalars(one).values()), list(scalars(other).values()))
+    assert one.case_hash == other.case_hash
     with pytest.raises(dataclasses.FrozenInstanceError):
         one.generated_power = 1.0  # type: ignore[misc]
 
@@ -688,7 +696,9 @@ def test_shipped_cases_are_valid_and_sensible(path: Path) -> None:
     assert [check.name for check in answer.checks if check.status == "fail"] == []
     assert len({check.name for check in answer.checks}) == len(answer.checks)
     for check in answer.checks:
-        assert check.text.endswith(".") and "\n" not in check.text and "nan" not in check.text and "inf " not in check.text
+        assert (
+            check.text.endswith(".") and "\n" not in check.text and "nan" not in check.text and "inf " not in check.text
+        )
 
 
 def as_lists(value: FloatArray) -> list[float]:

@@ -9,7 +9,7 @@ import numpy as np
 
 from harvest.model.checks import FAIL, PASS, WARN, BatchCheck, graded
 from harvest.physics.arrays import BoolArray, FloatArray
-from harvest.physics.combustion import sulphuric_acid_dew_point, sulphuric_acid_fraction, water_dew_point
+from harvest.physics.combustion import GAS_CONSTANT, sulphuric_acid_dew_point, sulphuric_acid_fraction, water_dew_point
 from harvest.physics.ducts import LAMINAR_LIMIT, OFFSET_STRIP_REYNOLDS_RANGE, TURBULENT_LIMIT
 from harvest.physics.films import OffsetStripFilm
 from harvest.physics.thermoelectrics import figure_of_merit, maximum_efficiency
@@ -32,7 +32,6 @@ BOILING_MARGIN = 10.0
 FREEZING_MARGIN = 3.0
 ACID_MARGIN = 15.0
 FASTEST = {"liquid": 2.5, "gas": 40.0}
-GAS_CONSTANT = 8.314462618
 
 
 def _kelvin(value: float) -> str:

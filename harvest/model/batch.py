@@ -7,20 +7,39 @@ from dataclasses import dataclass, field
 
 import numpy as np
 
-from harvest.model.case import Case, value_at
-from harvest.physics.arrays import FloatArray
+from harvest.errors import InputError
+from harvest.model.case import DECLARATIONS, Case, nearest_field, value_at
+from harvest.physics.arrays import FloatArray, IntArray
 
 
 @dataclass(frozen=True)
 class Batch:
     """A base case and `varied`, SI numbers (cases,) by field path, that replace the base's.
 
-    All names, choices and the fields that are given at all are those of the base case.
+    All names, choices and the fields that are given at all are those of the base case. Raises InputError for a varied
+    field that is unknown, not a single number, absent in the base, or of another length.
     """
 
     base: Case
     cases: int = 1
     varied: Mapping[str, FloatArray] = field(default_factory=dict)
+
+    def __post_init__(self) -> None:
+        """Refuse what would have no effect; raises InputError."""
+        for path, numbers in self.varied.items():
+            declaration = DECLARATIONS.get(path)
+            if declaration is None:
+                raise InputError(f"{path}: unknown field; {nearest_field(path)}")
+            if declaration.form not in ("quantity", "integer", "curve"):
+                raise InputError(f"{path}: is not a single number, so it cannot vary within a batch")
+            if value_at(self.base, path) is None:
+                raise InputError(f"{path}: the base case has none, or something else in its place; give it there first")
+            if np.shape(numbers) != (self.cases,):
+                raise InputError(f"{path}: has the shape {np.shape(numbers)}; the batch needs ({self.cases},)")
+
+    def take(self, which: IntArray) -> Batch:
+        """Return the batch of a subset of cases."""
+        return Batch(self.base, len(which), {path: np.asarray(each)[which] for path, each in self.varied.items()})
 
     def number(self, path: str, absent: float = np.nan) -> FloatArray:
         """Return a field's numbers, (cases,); `absent` where the field is not given."""

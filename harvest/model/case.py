@@ -25,6 +25,8 @@ from harvest.model.case_fields import (
     text,
     walk,
 )
+from harvest.model.loads import LOADS
+from harvest.physics import films, fluids
 from harvest.quantities import (
     KINDS,
     STANDARD_VOLUME_FLOW,
@@ -40,32 +42,23 @@ MOST_ROWS = 10_000
 MOST_MODULES = 1_000_000
 
 FLUIDS = {
-    "water": "liquid water",
-    "ethylene glycol": "ethylene glycol in water, by mass_fraction or volume_fraction",
-    "propylene glycol": "propylene glycol in water, by mass_fraction or volume_fraction",
-    "air": "dry air",
-    "exhaust gas": "products of complete lean combustion of a fuel",
-    "table": "density, heat capacity, viscosity and conductivity of your own against temperature",
+    **{name: record.description for name, record in fluids.FLUIDS.items()},
     "reservoir": "no stream: a fixed temperature behind a film coefficient",
 }
-STREAMS = tuple(name for name in FLUIDS if name != "reservoir")
-GLYCOLS = ("ethylene glycol", "propylene glycol")
-GASES = ("air", "exhaust gas")
+STREAMS = tuple(fluids.FLUIDS)
+GLYCOLS = tuple(name for name, record in fluids.FLUIDS.items() if "volume_fraction" in record.takes)
+GASES = tuple(name for name, record in fluids.FLUIDS.items() if record.is_gas)
 DRIVES = {
     "free": "the head exists already and costs nothing",
     "pump": "power of a pump with its motor, by drive_efficiency",
     "fan": "power of a fan with its motor, by drive_efficiency",
     "engine": "back pressure costs shaft power, by swept_volume_flow and generator_efficiency",
 }
-DUCT_KINDS = {
-    "smooth": "rectangular passages without fins",
-    "plain fins": "straight continuous fins across the gap",
-    "offset strip fins": "fins cut into short strips, each offset from the one before",
-}
+DUCT_KINDS = {name: kind.meaning for name, kind in films.DUCT_KINDS.items()}
 FINNED = ("plain fins", "offset strip fins")
 ENTRANCES = {
     "fully developed": "entrance effects left out, which never flatters the film",
-    "developing": "higher film coefficient and friction near the inlet",
+    "developing": "mean film coefficient with the thermal entrance; friction is not raised",
 }
 SPREADINGS = {
     "constriction": "heat converging from the place to the footprint in the wall has a resistance",
@@ -74,17 +67,6 @@ SPREADINGS = {
 ROW_MODELS = {
     "exponential": "each stream approaches the row's wall exponentially; holds for any flow",
     "arithmetic": "the mean of inlet and outlet of a row; for many rows with little change in each",
-}
-LOADS = {
-    "maximum power": "the load that gives most power, temperatures reacting",
-    "matched": "load resistance equal to the internal resistance at the operating point",
-    "fixed resistance": "the given load_resistance",
-    "fixed voltage": "the given load_voltage",
-    "open circuit": "no current",
-}
-PARAMETER_PLACES = {
-    "faces": "the outer faces, substrates inside: ratings and bench records",
-    "junctions": "the ends of the legs, substrates outside",
 }
 
 _STREAM = ("fluid", STREAMS)
@@ -578,11 +560,6 @@ class Module:
     )
     couples: int | None = integer(
         "Couples in the module, to judge the Seebeck coefficient per couple.", default=None, minimum=1, maximum=100_000
-    )
-    parameters_refer_to: str = choice(
-        PARAMETER_PLACES,
-        "Between which temperatures seebeck, resistance and conductance hold; legs are always between junctions.",
-        default="faces",
     )
     minimum_temperature: float | None = quantity(
         "temperature", "Lowest temperature at which the parameters hold.", default=None, minimum=1.0, maximum=5000.0

@@ -12,24 +12,30 @@ from harvest.errors import RangeError
 from harvest.model.batch import Batch
 from harvest.model.case import DECLARATIONS, limits_text
 from harvest.model.case import Curve as CaseCurve
+from harvest.model.loads import MAXIMUM_POWER
 from harvest.model.materials import MaterialRecord, load_material
 from harvest.model.property_store import stored_table
 from harvest.model.stack import (
-    MAXIMUM_POWER,
     Circuit,
     Load,
     StackProblem,
     StackSide,
 )
 from harvest.physics.arrays import BoolArray, FloatArray, IntArray
-from harvest.physics.combustion import excess_air_from_dry_oxygen, excess_air_from_flows, exhaust_flow_from_fuel
+from harvest.physics.combustion import (
+    GAS_CONSTANT,
+    excess_air_from_dry_oxygen,
+    excess_air_from_flows,
+    exhaust_flow_from_fuel,
+)
 from harvest.physics.curves import Curve, PolynomialCurve, TableCurve
 from harvest.physics.films import DUCT_KINDS, DuctMeasures, Film
 from harvest.physics.fluids import FluidBatch, FluidSpec, FluidTable, expansion_range
 from harvest.physics.spreading import Constriction
 from harvest.physics.thermoelectrics import LegModule, MeanTemperatureModule, ModuleModel
 
-GAS_CONSTANT = 8.314462618
+OVERSHOOT = 40.0
+"""How far past the inlets a gas is expanded [K]; further out there is no answer."""
 SPEC_NUMBERS = ("mass_fraction", "volume_fraction", "excess_air_ratio", "dry_oxygen", "intake_humidity")
 
 
@@ -100,7 +106,10 @@ def _fluid(batch: Batch, side: str, faults: Faults) -> tuple[FluidBatch | None, 
     if given.fluid == "exhaust gas":
         numbers.pop("dry_oxygen", None)
         numbers["excess_air_ratio"] = _excess_air_ratio(batch, side)
-    lower, upper = expansion_range(given.fluid, np.minimum(inlet, other), np.maximum(inlet, other))
+    # modules that are driven as coolers can take a stream past both inlets
+    lower, upper = expansion_range(
+        given.fluid, np.minimum(inlet, other) - OVERSHOOT, np.maximum(inlet, other) + OVERSHOOT
+    )
     keys, table_of_case = np.unique(
         np.column_stack([*numbers.values(), pressure, lower, upper]), axis=0, return_inverse=True
     )
@@ -210,7 +219,7 @@ def _stream(batch: Batch, side: str, faults: Faults) -> Stream:
     width = columns * batch.number("stack.column_pitch")
     passage_width = batch.number(f"{side}.duct.width")
     passage_width = np.where(np.isnan(passage_width), width / passages, passage_width)
-    film = DUCT_KINDS[duct.kind](
+    film = DUCT_KINDS[duct.kind].build(
         DuctMeasures(
             mass_flow=mass_flow * faces / layers,
             gap=batch.number(f"{side}.duct.gap"),
@@ -361,6 +370,8 @@ def _arrangement_faults(batch: Batch, faults: Faults) -> None:
         if path in batch.varied:
             number, low, high = batch.varied[path], declaration.minimum, declaration.maximum
             wrong = ~np.isfinite(number)
+            if declaration.form == "integer":
+                wrong = wrong | (number != np.floor(number))
             if declaration.above is not None:
                 wrong = wrong | (number <= declaration.above)
             wrong = wrong | (number < (-np.inf if low is None else low)) | (number > (np.inf if high is None else high))

@@ -10,20 +10,19 @@ import numpy as np
 from harvest.model.assessment import assess
 from harvest.model.batch import Batch
 from harvest.model.case import Case, case_hash
+from harvest.model.checks import PASS, BatchCheck
 from harvest.model.design import Design, Stream, design, maximum_power_load
+from harvest.model.loads import MATCHED, MAXIMUM_POWER, OPEN_CIRCUIT
 from harvest.model.pressure import PressureDrop, pressure_drop, side_drive_power
 from harvest.model.results import SCALARS, Estimate, Estimates, Rows
 from harvest.model.stack import (
-    MATCHED,
-    MAXIMUM_POWER,
-    OPEN_CIRCUIT,
     Circuit,
     Load,
     StackProblem,
     StackState,
     solve_stack,
 )
-from harvest.physics.arrays import FloatArray, IntArray
+from harvest.physics.arrays import FloatArray, IntArray, ObjectArray
 from harvest.physics.thermoelectrics import carnot_efficiency, hot_junction_heat
 from harvest.version import VERSION
 
@@ -202,7 +201,7 @@ def _solve(made: Design) -> Solved:
         pressure_drop(batch, stream, boundaries, outlet, chosen.active, row_length)
         for stream, boundaries, outlet in (
             (made.hot, state.hot_stream, chosen.hot_outlet),
-            (made.cold, state.cold_stream[::-1], chosen.cold_outlet),
+            (made.cold, state.cold_stream, chosen.cold_outlet),
         )
     ]
     return Solved(
@@ -228,7 +227,9 @@ def _flag_range(made: Design, stream: Stream, boundaries: FloatArray) -> None:
         outside = warmest[index] if warmest[index] > table.upper_limit else coldest[index]
         return f"{stream.name} stream: {table.outside(float(outside))}"
 
-    beyond = (warmest > stream.table_value("upper_limit")) | (coldest < stream.table_value("lower_limit"))
+    lower = np.fmax(stream.table_value("lower"), stream.table_value("lower_limit"))
+    upper = np.fmin(stream.table_value("upper"), stream.table_value("upper_limit"))
+    beyond = (warmest > upper) | (coldest < lower)
     made.faults.add(beyond, sentence)
 
 
@@ -403,9 +404,14 @@ def estimate_batch(batch: Batch, *, grid: bool = False) -> Estimates:
     """
     with np.errstate(all="ignore"):
         made = design(batch)
-        usable = all(stream.is_reservoir or stream.tables for stream in (made.hot, made.cold))
-        if not usable or not made.faults.valid.any():
-            return _nothing(batch, made)
+        wanting = made.faults.valid
+        if not wanting.any():
+            nan = np.full(batch.cases, np.nan)
+            counts = batch.number("stack.rows")
+            return Estimates(dict.fromkeys(SCALARS, nan), {}, counts, (), made.faults.text, _sources(made))
+        if not wanting.all():
+            which = np.flatnonzero(wanting)
+            return _among(estimate_batch(batch.take(which), grid=grid), which, made.faults.text, batch)
         solved = _solve(made)
         scalars = _scalars(solved)
         effect = _grid_effect(batch, scalars["maximum_power"]) if grid else np.full(batch.cases, np.nan)
@@ -417,10 +423,36 @@ def estimate_batch(batch: Batch, *, grid: bool = False) -> Estimates:
     return Estimates(scalars, rows, batch.number("stack.rows"), checks, made.faults.text, _sources(made))
 
 
-def _nothing(batch: Batch, made: Design) -> Estimates:
-    """Return the answer of a batch in which no case can be solved."""
-    nan = np.full(batch.cases, np.nan)
-    return Estimates(dict.fromkeys(SCALARS, nan), {}, batch.number("stack.rows"), (), made.faults.text, ())
+def _among(answers: Estimates, which: IntArray, problem: ObjectArray, batch: Batch) -> Estimates:
+    """Put the answers of some cases among those that have none."""
+    place = {int(case): index for index, case in enumerate(which)}
+
+    def spread(values: FloatArray) -> FloatArray:
+        wide = np.full((*values.shape[:-1], batch.cases), np.nan)
+        wide[..., which] = values
+        return wide
+
+    def spread_check(check: BatchCheck) -> BatchCheck:
+        status = np.full(batch.cases, PASS)
+        status[which] = check.status
+        return dataclasses.replace(
+            check,
+            value=spread(check.value),
+            limit=spread(check.limit),
+            status=status,
+            text=lambda case: check.text(place[case]),
+        )
+
+    problem = problem.copy()
+    problem[which] = answers.problem
+    return Estimates(
+        {name: spread(value) for name, value in answers.scalars.items()},
+        {name: spread(value) for name, value in answers.rows.items()},
+        batch.number("stack.rows"),
+        tuple(spread_check(check) for check in answers.checks),
+        problem,
+        answers.sources,
+    )
 
 
 def estimate(case: Case) -> Estimate:

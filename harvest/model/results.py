@@ -11,7 +11,7 @@ from typing import Any
 import numpy as np
 
 from harvest.model.checks import BatchCheck, Check
-from harvest.physics.arrays import FloatArray
+from harvest.physics.arrays import BoolArray, FloatArray, ObjectArray
 from harvest.quantities import unit_of
 
 
@@ -111,11 +111,11 @@ class Estimates:
     rows: dict[str, FloatArray]
     row_counts: FloatArray
     checks: tuple[BatchCheck, ...]
-    problem: Any
+    problem: ObjectArray
     sources: tuple[str, ...]
 
     @property
-    def valid(self) -> Any:
+    def valid(self) -> BoolArray:
         """Cases that have an answer, (cases,)."""
         return np.asarray(self.problem == "")
 

@@ -8,3 +8,4 @@ from numpy.typing import NDArray
 FloatArray = NDArray[np.float64]
 IntArray = NDArray[np.int64]
 BoolArray = NDArray[np.bool_]
+ObjectArray = NDArray[np.object_]

@@ -15,8 +15,8 @@ from harvest.physics.arrays import FloatArray
 
 GAS_CONSTANT = 8.314462618
 SPECIES = ("carbon dioxide", "water", "oxygen", "nitrogen")
-CARBON, HYDROGEN, OXYGEN, NITROGEN, SULPHUR = 0.012011, 0.00100794, 0.0159994, 0.01400674, 0.03206
-"""Atomic weights [kg/mol] as the property library's pure gases have them (IUPAC before its abridged values)."""
+CARBON, HYDROGEN, OXYGEN, NITROGEN, SULPHUR = 0.012011, 0.001007934, 0.0159994, 0.01400674, 0.03206
+"""Atomic weights [kg/mol] that give the molar masses of the property library's pure gases exactly."""
 SPECIES_MOLAR_MASS = np.array(
     [CARBON + 2.0 * OXYGEN, 2.0 * HYDROGEN + OXYGEN, 2.0 * OXYGEN, 2.0 * NITROGEN], dtype=np.float64
 )

@@ -219,8 +219,16 @@ def offset_strip_fin_duct(measures: DuctMeasures, developing: bool) -> OffsetStr
     )
 
 
-DUCT_KINDS: dict[str, Callable[[DuctMeasures, bool], Film]] = {
-    "smooth": smooth_duct,
-    "plain fins": plain_fin_duct,
-    "offset strip fins": offset_strip_fin_duct,
+@dataclass(frozen=True)
+class DuctKind:
+    """One entry of `DUCT_KINDS`: what it is, and the builder of its film."""
+
+    meaning: str
+    build: Callable[[DuctMeasures, bool], Film]
+
+
+DUCT_KINDS: dict[str, DuctKind] = {
+    "smooth": DuctKind("rectangular passages without fins", smooth_duct),
+    "plain fins": DuctKind("straight continuous fins across the gap", plain_fin_duct),
+    "offset strip fins": DuctKind("fins cut into short strips, each offset from the one before", offset_strip_fin_duct),
 }

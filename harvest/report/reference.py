@@ -49,8 +49,8 @@ RESULT_INTRODUCTION = """\
 Names are those of the library's `Estimate` and of `harvest estimate --json`, whose `units` maps each name to its unit.
 All numbers are SI, of the whole stack, at its terminals; where a number does not apply, it is NaN in the library
 and null in JSON; a case without an answer has `valid` false, says why in `problem`, and has no numbers at all.
-Beside the tables below an estimate holds `checks` (name, kind, value, limit, status, text of each), `sources`,
-`version` and `case_hash`.
+Beside the tables below an estimate holds `checks` (each with name, kind, value, limit, bound, status and text),
+`sources`, `version` and `case_hash`.
 
 This page is made from the declarations in `harvest/model/results.py`.
 """

@@ -77,10 +77,9 @@ def stack_sentence(case: Case, answer: Estimate) -> str:
     in_a_row = stack.columns // electrical.strings_across * electrical.layers_in_series
     lengths = " or ".join(str(in_a_row * rows) for rows in sorted(set(blocks)))
     joined = ", each with its own converter" if electrical.independent else ", in parallel" * (strings > 1)
-    return (
-        f"{_count(int(answer.module_count), 'module')}: {_count(stack.layers, 'layer')} of "
-        f"{_count(stack.rows, 'row')} x {_count(stack.columns, 'column')}; {_count(strings, 'string')} of {lengths} in series{joined}"
-    )
+    plate = f"{_count(stack.layers, 'layer')} of {_count(stack.rows, 'row')} x {_count(stack.columns, 'column')}"
+    wiring = f"{_count(strings, 'string')} of {lengths} in series{joined}"
+    return f"{_count(int(answer.module_count), 'module')}: {plate}; {wiring}"
 
 
 def _streams(case: Case, answer: Estimate) -> list[str]:

@@ -19,8 +19,9 @@ import numpy as np
 
 from harvest.model.batch import Batch
 from harvest.model.design import Design, design
+from harvest.model.loads import MATCHED, MAXIMUM_POWER
 from harvest.model.reading import read_case
-from harvest.model.stack import MATCHED, MAXIMUM_POWER, Load, solve_stack
+from harvest.model.stack import Load, solve_stack
 from harvest.model.stack.solver import CHUNK_CELLS
 from tests.bench.baseline import DEMO_DESIGNS, solve_plainly
 from tests.bench.random_designs import random_batch

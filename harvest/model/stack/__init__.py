@@ -12,12 +12,6 @@ larger, which is the same thing.
 """
 
 from harvest.model.stack.problem import (
-    FIXED_RESISTANCE,
-    FIXED_VOLTAGE,
-    LOAD_MODES,
-    MATCHED,
-    MAXIMUM_POWER,
-    OPEN_CIRCUIT,
     Circuit,
     Load,
     StackProblem,
@@ -27,12 +21,6 @@ from harvest.model.stack.problem import (
 from harvest.model.stack.solver import solve_stack
 
 __all__ = [
-    "FIXED_RESISTANCE",
-    "FIXED_VOLTAGE",
-    "LOAD_MODES",
-    "MATCHED",
-    "MAXIMUM_POWER",
-    "OPEN_CIRCUIT",
     "Circuit",
     "Load",
     "StackProblem",

@@ -4,16 +4,8 @@ from __future__ import annotations
 
 import numpy as np
 
-from harvest.model.stack.problem import (
-    FIXED_RESISTANCE,
-    FIXED_VOLTAGE,
-    MATCHED,
-    OPEN_CIRCUIT,
-    Circuit,
-    Load,
-    StackState,
-    take_cases,
-)
+from harvest.model.loads import FIXED_RESISTANCE, FIXED_VOLTAGE, MATCHED, OPEN_CIRCUIT
+from harvest.model.stack.problem import Circuit, Load, StackState, take_cases
 from harvest.physics.arrays import FloatArray, IntArray
 
 SETTLED = 2e-6
@@ -139,5 +131,9 @@ def _solve_blocks(matrix: FloatArray, right: FloatArray) -> FloatArray:
     """Solve (blocks, blocks, cases) systems for several right sides (sides, blocks, cases)."""
     if len(matrix) == 1:
         return np.asarray(right / matrix[0])
+    # a string without modules carries nothing: rows that only other cases of the batch have
+    empty = (matrix == 0.0).all(axis=1)
+    if empty.any():
+        matrix = matrix - np.eye(len(matrix))[:, :, None] * empty
     solved = np.linalg.solve(matrix.transpose(2, 0, 1), right.transpose(2, 1, 0))
     return np.asarray(solved.transpose(2, 1, 0))

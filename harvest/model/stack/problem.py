@@ -13,15 +13,6 @@ from harvest.physics.fluids import FluidBatch
 from harvest.physics.spreading import Constriction
 from harvest.physics.thermoelectrics import ModuleModel
 
-MATCHED, MAXIMUM_POWER, FIXED_RESISTANCE, FIXED_VOLTAGE, OPEN_CIRCUIT = (
-    "matched",
-    "maximum power",
-    "fixed resistance",
-    "fixed voltage",
-    "open circuit",
-)
-LOAD_MODES = (MATCHED, MAXIMUM_POWER, FIXED_RESISTANCE, FIXED_VOLTAGE, OPEN_CIRCUIT)
-
 
 def take_cases(item: Any, which: IntArray) -> Any:
     """Return the subset of cases of an array, or of anything that has `take`."""
@@ -85,7 +76,7 @@ class Circuit:
 
 @dataclass(frozen=True)
 class Load:
-    """What the stack feeds: a mode of `LOAD_MODES` with its number, (cases,): `resistance` [ohm] or `voltage` [V].
+    """What the stack feeds: a mode of `LOADS` with its number, (cases,): `resistance` [ohm] or `voltage` [V].
 
     `lowest` and `highest` voltage [V] bound the maximum-power mode only (a converter's window).
     """

@@ -6,8 +6,9 @@ from dataclasses import replace
 
 import numpy as np
 
+from harvest.model.loads import MAXIMUM_POWER
 from harvest.model.stack.circuit import CircuitWork
-from harvest.model.stack.problem import MAXIMUM_POWER, Load, StackProblem, StackState, take_cases
+from harvest.model.stack.problem import Load, StackProblem, StackState, take_cases
 from harvest.model.stack.streams import SideWork
 from harvest.model.stack.sweep import Ports, Sweep
 from harvest.physics.arrays import FloatArray, IntArray
@@ -207,7 +208,7 @@ class _Solver:
         jacobian[diagonal, diagonal] -= string_resistance
         step, string_voltage = self.circuit.step(state, self.previous_change, emf, string_resistance, jacobian)
         emf_scale = np.add.reduceat(weight * np.abs(a), starts, axis=0) * self.scale
-        electrical_change = (np.abs(step) * string_resistance / emf_scale).max(axis=0)
+        electrical_change = (np.abs(step) * string_resistance / np.where(emf_scale > 0, emf_scale, 1.0)).max(axis=0)
 
         hot_junction = _moved(hot_junction, d_hot_junction, step)
         cold_junction = _moved(cold_junction, d_cold_junction, step)
