@@ -169,7 +169,7 @@ def settled_outlets(
     """Outlet temperatures extrapolated from grids of 4 and 8 segments a row, whose error falls with its square."""
     coarse, fine = (exchanger(transfer_units, hot_rate, cold_rate, hot, cold, n) for n in (4, 8))
     assert coarse.valid and fine.valid
-    return tuple(  # type: ignore[return-value]
+    return tuple(
         (4.0 * getattr(fine, name) - getattr(coarse, name)) / 3.0
         for name in ("hot_outlet_temperature", "cold_outlet_temperature")
     )
@@ -288,7 +288,7 @@ load = "maximum power"
 
 @pytest.mark.parametrize(("rows", "inlet", "loss"), [(3, 525.0, 0.06897), (10, 505.5556, 0.04331)])
 def test_mismatch_of_a_linear_profile_is_exact(rows: int, inlet: float, loss: float) -> None:
-    """Series modules of equal resistance lose CV^2/(1 + CV^2): 100/150/200 K lose 6.897 %, ten from 200 to 100 K 4.331 %.
+    """Series modules of equal resistance lose CV^2/(1 + CV^2): 100/150/200 K lose 6.897 %, ten 4.331 %.
 
     A heat capacity that is proportional to the temperature difference makes the profile linear: m c' dT/dx = -K.
     """
@@ -479,6 +479,51 @@ def test_no_voltage_gives_more_than_the_maximum() -> None:
         beside = {**batch.varied, "electrical.load_voltage": best.voltage * (1.0 + share)}
         power = estimate_batch(Batch(base, batch.cases, beside)).generated_power
         assert np.all(power < best.maximum_power * (1.0 - 0.5 * share**2 / 2.0))
+
+
+WIRINGS: dict[str, dict[str, Any]] = {
+    "one string": {},
+    "blocks": {"electrical.row_blocks": [3, 5, 12]},
+    "a block a row, with leads": {"electrical.row_blocks": [1] * 20, "electrical.lead_resistance": "0.2 ohm"},
+    "one string behind a diode": {"electrical.blocking_diode_drop": "0.6 V"},
+    "blocks behind diodes": {"electrical.row_blocks": [3, 5, 12], "electrical.blocking_diode_drop": "0.6 V"},
+}
+
+
+@pytest.mark.parametrize("wiring", WIRINGS)
+def test_a_scan_of_the_voltage_finds_nothing_above_the_maximum(wiring: str) -> None:
+    """Brute force; behind diodes the strings that conduct change along the scan."""
+    count = 60
+    batch = random_batch(count, seed=77)
+    usual = estimate_batch(Batch(batch.base, count, batch.varied)).valid
+    base = replace(batch.base, {**WIRINGS[wiring], "electrical.load": "maximum power"})
+    best = estimate_batch(Batch(base, count, batch.varied))
+    np.testing.assert_array_equal(best.valid, usual, err_msg=str(set(best.problem)))
+    assert np.all((best.mismatch_loss[usual] > -1e-9) & (best.mismatch_loss[usual] < 1.0))
+    fixed = replace(base, {"electrical.load": "fixed voltage", "electrical.load_voltage": "1 V"})
+    found = np.full(count, -np.inf)
+    for share in np.linspace(0.05, 0.95, 19):
+        voltage = np.where(usual, share * best.open_circuit_voltage, 1.0)
+        scanned = estimate_batch(Batch(fixed, count, {**batch.varied, "electrical.load_voltage": voltage}))
+        found = np.fmax(found, scanned.generated_power)
+    assert np.all(found[usual] <= best.maximum_power[usual] * (1.0 + 1e-9))
+    assert np.all(found[usual] > 0.98 * best.maximum_power[usual])
+
+
+@pytest.mark.parametrize("wiring", WIRINGS)
+def test_matched_means_the_load_has_the_internal_resistance(wiring: str) -> None:
+    count = 60
+    batch = random_batch(count, seed=77)
+    base = replace(batch.base, {**WIRINGS[wiring], "electrical.load": "matched"})
+    answers = estimate_batch(Batch(base, count, batch.varied))
+    flowing = answers.valid & (answers.current > 0.0)
+    assert flowing.mean() > 0.8
+    np.testing.assert_allclose(answers.load_ratio[flowing], 1.0, rtol=1e-7)
+    np.testing.assert_allclose(
+        answers.internal_resistance[flowing],
+        ((answers.operating_emf - answers.voltage) / answers.current)[flowing],
+        rtol=1e-9,
+    )
 
 
 # ---------------------------------------------------------------- one design written in several ways

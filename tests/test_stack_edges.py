@@ -92,6 +92,7 @@ def test_a_hot_side_colder_than_the_cold_one_works_backwards_and_says_so() -> No
     assert found.generated_power > 0.0 and found.hot_heat_flow < 0.0 < found.hot_outlet_temperature - 283.15
     assert found.open_circuit_voltage < 0.0
     assert status(found)["sides"] == "warn"
+    assert status(found)["efficiency ceiling"] == "pass"
     swapped = estimate(
         replace(
             plain(),
@@ -196,8 +197,12 @@ def test_a_diode_blocks_what_would_flow_back() -> None:
 
 
 def test_a_diode_that_drops_more_than_the_emf_leaves_nothing() -> None:
-    """One couple of modules makes 3 V behind a drop of 100 V: no current, no power, and no voltage of the other sign."""
-    for load in ({"load": "maximum power"}, {"load": "matched"}, {"load": "fixed resistance", "load_resistance": "1 ohm"}):
+    """Modules that make 3 V behind a drop of 100 V give no current, no power, and no voltage of the other sign."""
+    for load in (
+        {"load": "maximum power"},
+        {"load": "matched"},
+        {"load": "fixed resistance", "load_resistance": "1 ohm"},
+    ):
         electrical = {f"electrical__{name}": value for name, value in load.items()}
         found = answer(stack__rows=1, stack__columns=1, electrical__blocking_diode_drop="100 V", **electrical)
         assert_sound(found)

@@ -26,17 +26,22 @@ class _Group(click.Group):
 
     def invoke(self, context: click.Context) -> Any:
         try:
-            return super().invoke(context)
+            result = super().invoke(context)
+            sys.stdout.flush()
+            return result
         except HarvestError as error:
             for line in str(error).splitlines():
                 click.echo(f"harvest: {line}", err=True)
             context.exit(error.exit_code)
         except KeyboardInterrupt:
             context.exit(INTERRUPTED)
-        except BrokenPipeError:
-            # the reader has gone (harvest ... | head): nothing more to say
+        except OSError as error:
+            # nothing more can be said on standard output: its reader has gone (harvest ... | head), or its disk is full
             os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
-            context.exit(0)
+            if isinstance(error, BrokenPipeError):
+                context.exit(0)
+            click.echo(f"harvest: standard output: {error.strerror}", err=True)
+            context.exit(1)
 
 
 def _start_kinds() -> dict[str, str]:

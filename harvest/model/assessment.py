@@ -31,6 +31,7 @@ LARGEST_DROP_SHARE = 0.1
 BOILING_MARGIN = 10.0
 FREEZING_MARGIN = 3.0
 ACID_MARGIN = 15.0
+SMALLEST_POWER = 1e-9
 FASTEST = {"liquid": 2.5, "gas": 40.0}
 
 
@@ -66,12 +67,13 @@ def _of_the_solution(solved: Solved, scalars: dict[str, FloatArray], grid_effect
         lambda i: f"Heat in, heat out and electricity close to {abs(closure[i]):.1e} of the heat flow.",
     )
     entropy = scalars["entropy_generation"]
+    rounding = CLOSURE_LIMIT * solved.chosen.heat_scale / solved.made.cold.inlet_temperature
     yield BatchCheck(
         "second law",
         "conductance",
         entropy,
         _fixed(solved, 0.0),
-        graded(~(entropy > -1e-12)),
+        graded(~(entropy > -rounding)),
         lambda i: (
             f"The stack generates {format_quantity(entropy[i], 'conductance')} of entropy; it must not be negative."
         ),
@@ -103,7 +105,7 @@ def _of_the_solution(solved: Solved, scalars: dict[str, FloatArray], grid_effect
             f"The best row reaches {100 * share[i]:.0f} % of the closed-form ceiling of its junction temperatures."
         ),
     )
-    reversed_rows = (chosen.row_current * chosen.seebeck * (hot - cold) < 0) & (chosen.active > 0)
+    reversed_rows = (chosen.row_current * chosen.seebeck * (hot - cold) < -SMALLEST_POWER) & (chosen.active > 0)
     count = reversed_rows.sum(axis=0).astype(float) / solved.made.segments
     yield BatchCheck(
         "current direction",
@@ -347,7 +349,7 @@ def _of_a_stream(solved: Solved, scalars: dict[str, FloatArray], stream: Stream)
         "dimensionless",
         part,
         _fixed(solved, LARGEST_DROP_SHARE),
-        graded(part > LARGEST_DROP_SHARE, level=WARN),
+        np.where(part >= 1.0, FAIL, graded(part > LARGEST_DROP_SHARE, level=WARN)),
         lambda i: (
             f"The drop of {format_quantity(drop[i], 'pressure difference')} is {100 * part[i]:.2g} % of the inlet's "
             "absolute pressure."

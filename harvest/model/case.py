@@ -767,7 +767,7 @@ def display(value: Any, declaration: Declaration) -> str:
         return f"{value:.6g}" if KINDS[declaration.kind].bare else format_quantity(value, declaration.kind)
     if isinstance(value, tuple) and declaration.form == "pair":
         return " to ".join(format_quantity(each, declaration.kind) for each in value)
-    return str(value)
+    return one_line(str(value), 300)
 
 
 def assumptions(case: Case) -> list[Assumption]:

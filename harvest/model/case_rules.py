@@ -8,6 +8,7 @@ from typing import Any
 
 from harvest.model.case import GLYCOLS, MOST_MODULES
 from harvest.model.case_fields import Declaration
+from harvest.model.loads import FIXED_RESISTANCE, FIXED_VOLTAGE
 from harvest.quantities import significant
 
 FLOWS = ("mass_flow", "volume_flow", "standard_volume_flow")
@@ -189,6 +190,15 @@ def window_is_ordered(values: Values) -> Faults:
         yield "electrical.converter_window", f"{window[0]:g} V is not below {window[1]:g} V; give the lower one first"
 
 
+def own_converters_suit_the_load(values: Values) -> Faults:
+    """Require a load that every string can have for itself, where each has its own converter."""
+    if not values["electrical.independent"]:
+        return
+    load = values["electrical.load"]
+    if load in (FIXED_RESISTANCE, FIXED_VOLTAGE):
+        yield "electrical.independent", f'each string has its own converter, so the load cannot be "{load}" for all'
+
+
 def module_range_is_ordered(values: Values) -> Faults:
     """Require the parameters' lowest temperature below their highest."""
     lower, upper = values["module.minimum_temperature"], values["module.maximum_temperature"]
@@ -225,6 +235,7 @@ RULES: tuple[Callable[[Values], Faults], ...] = (
     series_divides_the_layers,
     blocks_add_up,
     window_is_ordered,
+    own_converters_suit_the_load,
     module_range_is_ordered,
     module_is_described_once,
 )

@@ -52,6 +52,11 @@ class Solution:
     hot_outlet: FloatArray
     cold_outlet: FloatArray
 
+    @property
+    def heat_scale(self) -> FloatArray:
+        """Heat flow to which errors are compared [W], (cases,); at equal inlets that of a hundredth of a kelvin."""
+        return np.maximum(np.abs(self.hot_heat), np.abs(self.cold_heat)) + 0.01 * self.total(self.conductance)
+
     def total(self, per_module: FloatArray) -> FloatArray:
         """Sum of a quantity of one module over the whole stack, (cases,)."""
         return np.asarray((per_module * self.share).sum(axis=0))
@@ -248,14 +253,14 @@ def _scalars(solved: Solved) -> dict[str, FloatArray]:
     starts = circuit.block_starts
     string_emf = np.add.reduceat(weight * chosen.seebeck * (state.hot_junction - state.cold_junction), starts, axis=0)
     string_resistance = np.add.reduceat(weight * chosen.resistance, starts, axis=0) + circuit.lead
-    emf = (string_emf / string_resistance).sum(axis=0) / (1.0 / string_resistance).sum(axis=0)
+    carrying = (circuit.diode_drop <= 0) | (state.current > 0) | ~(state.current > 0).any(axis=0)
+    string_conductance = np.where(carrying, 1.0 / string_resistance, 0.0)
+    emf = (string_emf * string_conductance).sum(axis=0) / string_conductance.sum(axis=0)
     opened = solved.open_circuit.state.string_voltage[0]
     if circuit.independent:
         current = voltage = emf = opened = np.full(batch.cases, np.nan)
     flowing = np.abs(current) > 1e-12
-    internal = np.where(
-        flowing, (emf - voltage) / current, 1.0 / (circuit.parallel * (1.0 / string_resistance).sum(axis=0))
-    )
+    internal = np.where(flowing, (emf - voltage) / current, 1.0 / (circuit.parallel * string_conductance.sum(axis=0)))
     load_resistance = np.where(flowing, voltage / current, np.inf)
     if circuit.independent:
         internal = load_resistance = current
@@ -263,7 +268,6 @@ def _scalars(solved: Solved) -> dict[str, FloatArray]:
     in_leads = circuit.parallel * (state.current**2 * circuit.lead + state.current * circuit.diode_drop).sum(axis=0)
     lost_heat = chosen.total(lost)
     unclosed = chosen.hot_heat - chosen.cold_heat - generated - in_leads - lost_heat
-    scale = np.maximum(np.abs(chosen.hot_heat), np.abs(chosen.cold_heat))
     entropy = (
         -_entropy_given(made.hot, chosen.hot_outlet, chosen.hot_heat)
         - _entropy_given(made.cold, chosen.cold_outlet, -chosen.cold_heat)
@@ -326,7 +330,7 @@ def _scalars(solved: Solved) -> dict[str, FloatArray]:
         "module_mass": made.module_count * batch.number("module.mass"),
         "hottest_face_temperature": chosen.largest(chosen.hot_face),
         "open_circuit_face_temperature": solved.open_circuit.largest(solved.open_circuit.hot_face),
-        "energy_closure": unclosed / scale,
+        "energy_closure": unclosed / chosen.heat_scale,
         "entropy_generation": entropy,
     }
 

@@ -74,7 +74,7 @@ def maximum_efficiency(
     root = np.sqrt(1.0 + dimensionless_figure_of_merit)
     return (
         carnot_efficiency(hot_temperature, cold_temperature)
-        * (root - 1.0)
+        * (dimensionless_figure_of_merit / (root + 1.0))
         / (root + cold_temperature / hot_temperature)
     )
 

@@ -10,7 +10,7 @@ from typing import TYPE_CHECKING
 from harvest.model.case import DECLARATIONS, Case, Side, assumptions, case_hash, display, value_at
 from harvest.model.checks import STATUS_NAMES, Check
 from harvest.model.results import Estimate
-from harvest.quantities import format_quantity
+from harvest.quantities import format_quantity, one_line
 from harvest.report.cautions import cautions
 from harvest.version import VERSION
 
@@ -18,6 +18,7 @@ if TYPE_CHECKING:
     from harvest.model.fluid import FluidSheet
 
 WIDTH = 100
+LONGEST_TITLE = 200
 MOST_ROWS_SHOWN = 8
 MARKS = {"pass": "ok  ", "warn": "WARN", "fail": "FAIL"}
 
@@ -63,6 +64,11 @@ def _table(header: Sequence[str], rows: Sequence[Sequence[str]], indent: int = 2
         " " * indent + "  ".join(f"{cell:>{width}}" for cell, width in zip(line, widths, strict=True)).rstrip()
         for line in (header, *rows)
     ]
+
+
+def title(case: Case) -> str:
+    """Title of a case as one printable line."""
+    return one_line(case.title, LONGEST_TITLE) or "Untitled case"
 
 
 def _count(number: int, noun: str) -> str:
@@ -269,8 +275,8 @@ def estimate_report(case: Case, answer: Estimate) -> str:
     """The report of one design."""
     share = answer.net_power / answer.hot_heat_flow if answer.hot_heat_flow else math.nan
     lines = [
-        case.title or "Untitled case",
-        "=" * min(len(case.title or "Untitled case"), WIDTH),
+        title(case),
+        "=" * min(len(title(case)), WIDTH),
         "",
         f"Net power {_q(answer.net_power, 'power')} from {_q(answer.hot_heat_flow, 'power')} of heat "
         f"({_percent(share)}); load: {case.electrical.load}.",
@@ -291,7 +297,7 @@ def estimate_report(case: Case, answer: Estimate) -> str:
         _heading("Assumed, because not given"),
         *(_assumption_lines(case) or ["  nothing that matters"]),
         _heading("Sources"),
-        *(_wrapped("  ", source, rest="    ") for source in answer.sources),
+        *(_wrapped("  ", one_line(source, 300), rest="    ") for source in answer.sources),
         _heading("Cautions"),
         *(_wrapped("  - ", text) for text in cautions(case, answer)),
         "",
@@ -326,7 +332,7 @@ def _assumption_lines(case: Case) -> list[str]:
 
 def check_report(case: Case) -> str:
     """What a case says, and what is assumed."""
-    lines = [case.title or "Untitled case", "", "The case is well formed. Given:"]
+    lines = [title(case), "", "The case is well formed. Given:"]
     for path, declaration in DECLARATIONS.items():
         value = value_at(case, path)
         if (

@@ -4,17 +4,22 @@ from __future__ import annotations
 
 import numpy as np
 
-from harvest.model.loads import FIXED_RESISTANCE, FIXED_VOLTAGE, MATCHED, OPEN_CIRCUIT
+from harvest.model.loads import FIXED_RESISTANCE, FIXED_VOLTAGE, MATCHED, MAXIMUM_POWER, OPEN_CIRCUIT
 from harvest.model.stack.problem import Circuit, Load, StackState, take_cases
-from harvest.physics.arrays import FloatArray, IntArray
+from harvest.physics.arrays import BoolArray, FloatArray, IntArray
 
+NOTHING = 1e-9
+"""Part of the largest emf that counts as no voltage at all."""
 SETTLED = 2e-6
 """Relative step in voltage or current below which the load of largest power counts as found; its power is then good to
 the square of it."""
 
 
 class CircuitWork:
-    """Strings and load during the iteration; `held` marks cases whose load of largest power has been found."""
+    """Strings and load during the iteration, (cases,) or (blocks, cases).
+
+    `held` marks cases whose load of largest power has been found, `switched` those in which a diode just changed state.
+    """
 
     def __init__(self, circuit: Circuit, load: Load) -> None:
         blocks, cases = len(circuit.block_starts), len(circuit.lead)
@@ -23,6 +28,7 @@ class CircuitWork:
         self.last_residual = np.full((blocks, cases), np.nan)
         self.held = np.zeros(cases, dtype=bool)
         self.conducting = np.ones((blocks, cases), dtype=bool)
+        self.switched = np.zeros(cases, dtype=bool)
         self.diodes = bool(np.any(circuit.diode_drop > 0))
 
     def take(self, which: IntArray) -> None:
@@ -37,12 +43,20 @@ class CircuitWork:
         emf: FloatArray,
         string_resistance: FloatArray,
         jacobian: FloatArray,
+        emf_scale: FloatArray,
     ) -> tuple[FloatArray, FloatArray]:
-        """Newton's step in the block currents, and the string voltages after it, (blocks, cases)."""
+        """Newton's step in the block currents, and the string voltages after it, (blocks, cases).
+
+        `jacobian` [V/A] is that of the block's voltage, first axis, in each current; `emf_scale` [V] what a string
+        would give at the inlets' temperature difference.
+        """
         circuit, current = self.circuit, state.current
         voltage = emf - string_resistance * current - circuit.diode_drop
+        near = previous_change < 1e-4
         if circuit.independent:
-            return self._independent_step(current, previous_change, voltage, string_resistance, jacobian)
+            resistance = np.where(string_resistance > 0, string_resistance, 1.0)
+            small = SETTLED * np.abs(current) + NOTHING * emf_scale / resistance
+            return self._independent_step(current, near, small, voltage, string_resistance, jacobian)
         conducting = self.conducting
         if self.diodes:
             identity = np.eye(len(current))[:, :, None]
@@ -53,42 +67,53 @@ class CircuitWork:
         solved = _solve_blocks(jacobian_used, right)
         base, per_volt = current - solved[0], solved[1]
         total, total_per_volt = circuit.parallel * base.sum(axis=0), circuit.parallel * per_volt.sum(axis=0)
-        bus = self._bus_voltage(state.string_voltage[0], previous_change, total, total_per_volt, string_resistance)
-        new = base + per_volt * bus
-        if self.diodes:
+        bus = state.string_voltage[0]
+        new_bus = self._bus_voltage(bus, total, total_per_volt, string_resistance)
+        if self.load.mode == MAXIMUM_POWER:
+            new_bus = np.where(self.held, bus, new_bus)
+            small = SETTLED * np.abs(new_bus) + NOTHING * emf_scale.max(axis=0)
+            self.held |= near & (np.abs(new_bus - bus) <= small)
+        new = base + per_volt * new_bus
+        if self.diodes and self.load.mode == OPEN_CIRCUIT:
+            # behind diodes nothing flows, not even between strings, and the highest string sets the bus
+            alone = (voltage - np.einsum("bt...,t...->b...", jacobian, current)).max(axis=0)
+            blocked = circuit.diode_drop > 0
+            new = np.where(blocked, 0.0, new)
+            new_bus = np.where(blocked, np.maximum(alone, 0.0), new_bus)
+        elif self.diodes:
             unloaded = voltage + np.einsum("bt...,t...->b...", jacobian, np.maximum(new, 0.0) - current)
-            self.conducting = np.where(conducting, new >= 0.0, unloaded > bus) | (circuit.diode_drop <= 0)
+            self.conducting = np.where(conducting, new >= 0.0, unloaded > new_bus) | (circuit.diode_drop <= 0)
+            self.switched = (self.conducting != conducting).any(axis=0)
             new = np.where((circuit.diode_drop > 0) & (new < 0.0), 0.0, new)
-        return new - current, np.broadcast_to(bus, current.shape)
+        return new - current, np.broadcast_to(new_bus, current.shape)
 
     def _bus_voltage(
-        self,
-        bus: FloatArray,
-        previous_change: FloatArray,
-        total: FloatArray,
-        total_per_volt: FloatArray,
-        resistance: FloatArray,
+        self, bus: FloatArray, total: FloatArray, total_per_volt: FloatArray, resistance: FloatArray
     ) -> FloatArray:
-        """Voltage that the load asks for where the stack gives the current `total` + `total_per_volt` V."""
+        """Voltage that the load asks for where the stack gives the current `total` + `total_per_volt` V, (cases,)."""
         load, circuit = self.load, self.circuit
         if load.mode == FIXED_VOLTAGE:
             assert load.voltage is not None
             return load.voltage
+        alive = self.conducting.any(axis=0)
+        falling = np.where(alive, total_per_volt, -1.0)
         if load.mode == FIXED_RESISTANCE:
             assert load.resistance is not None
-            return np.asarray(load.resistance * total / (1.0 - load.resistance * total_per_volt))
-        if load.mode == OPEN_CIRCUIT:
-            return np.asarray(-total / np.where(total_per_volt < 0, total_per_volt, -1.0))
-        if load.mode == MATCHED:
-            inner = 1.0 / (circuit.parallel * np.where(self.conducting, 1.0 / resistance, 0.0).sum(axis=0))
-            return np.asarray((inner * total + circuit.diode_drop) / (1.0 - inner * total_per_volt))
-        aim = -total / (2.0 * np.where(total_per_volt < 0, total_per_volt, -1.0))
-        new = self._accelerated(bus[None], (aim - bus)[None])[0]
-        if load.lowest is not None and load.highest is not None:
-            new = np.clip(new, load.lowest, load.highest)
-        new = np.where(self.held, bus, new)
-        self.held |= (np.abs(new - bus) <= SETTLED * np.abs(new) + 1e-15) & (previous_change < 1e-4)
-        return new
+            new = load.resistance * total / (1.0 - load.resistance * falling)
+        elif load.mode == OPEN_CIRCUIT:
+            new = -total / falling
+        elif load.mode == MATCHED:
+            conductance = circuit.parallel * np.where(self.conducting, 1.0 / resistance, 0.0).sum(axis=0)
+            inner = 1.0 / np.where(alive, conductance, 1.0)
+            new = (inner * total + circuit.diode_drop) / (1.0 - inner * falling)
+        else:
+            aim = -total / (2.0 * falling)
+            new = self._accelerated(bus[None], (aim - bus)[None])[0]
+            if load.lowest is not None and load.highest is not None:
+                new = np.clip(new, load.lowest, load.highest)
+                # a converter does not feed the stack: below its window it is off
+                new = np.where(total + falling * new < 0.0, -total / falling, new)
+        return np.where(alive, new, 0.0)
 
     def _accelerated(self, point: FloatArray, residual: FloatArray) -> FloatArray:
         """Next point of a fixed-point step, by a guarded secant on its residual; shape (n, cases)."""
@@ -103,7 +128,8 @@ class CircuitWork:
     def _independent_step(
         self,
         current: FloatArray,
-        previous_change: FloatArray,
+        near: BoolArray,
+        small: FloatArray,
         voltage: FloatArray,
         resistance: FloatArray,
         jacobian: FloatArray,
@@ -119,11 +145,19 @@ class CircuitWork:
             step = _solve_blocks(matrix, (resistance * current + drop - voltage)[None])[0]
         else:
             gradient = voltage + np.einsum("bt...,b...->t...", jacobian, current)
-            step = -_solve_blocks(jacobian + np.swapaxes(jacobian, 0, 1), gradient[None])[0]
-            step = self._accelerated(current, step) - current
+            curvature = jacobian + np.swapaxes(jacobian, 0, 1)
+            free = -_solve_blocks(curvature, gradient[None])[0]
+            step = self._accelerated(current, free) - current
+            if self.load.lowest is not None and self.load.highest is not None:
+                wanted = voltage + np.einsum("bt...,t...->b...", jacobian, free)
+                bound = np.clip(wanted, self.load.lowest, self.load.highest)
+                outside = wanted != bound
+                matrix = np.where(outside[:, None], jacobian, curvature)
+                held_in = _solve_blocks(matrix, np.where(outside, bound - voltage, -gradient)[None])[0]
+                held_in = np.where(outside & (current + held_in < 0.0), -current, held_in)
+                step = np.where(outside.any(axis=0), held_in, step)
             step = np.where(self.held, 0.0, step)
-            small = (np.abs(step) <= SETTLED * np.abs(current).max(axis=0) + 1e-15).all(axis=0)
-            self.held |= small & (previous_change < 1e-4)
+            self.held |= near & (np.abs(step) <= small.max(axis=0)).all(axis=0)
         return step, voltage + np.einsum("bt...,t...->b...", jacobian, step)
 
 

@@ -16,6 +16,8 @@ from harvest.physics.arrays import FloatArray, IntArray
 CHUNK_CELLS = 100_000
 """Rows times cases that are solved together: large enough to hide the interpreter, small enough for the caches."""
 MAXIMUM_PASSES = 60
+SMALLEST_SCALE = 0.1
+"""Temperature difference below which errors are no longer judged in proportion [K]."""
 TOLERANCE = 1e-10
 """Largest error of a temperature that is left, over the difference of the inlets."""
 
@@ -33,7 +35,7 @@ class _Solver:
         self.hot = SideWork(problem.hot, cold_inlet, self.active, against_rows=False)
         self.cold = SideWork(problem.cold, hot_inlet, self.active, against_rows=True)
         blocks = len(problem.circuit.block_starts)
-        self.scale = np.abs(hot_inlet - cold_inlet) + 1e-2
+        self.scale = np.abs(hot_inlet - cold_inlet) + SMALLEST_SCALE
         self.previous_change = np.full(cases, np.inf)
         self.circuit = CircuitWork(problem.circuit, load)
         self.fresh = start is None
@@ -206,8 +208,10 @@ class _Solver:
         jacobian = np.swapaxes(jacobian, 0, 1).copy()  # [block b, current t]
         diagonal = np.arange(len(lengths))
         jacobian[diagonal, diagonal] -= string_resistance
-        step, string_voltage = self.circuit.step(state, self.previous_change, emf, string_resistance, jacobian)
         emf_scale = np.add.reduceat(weight * np.abs(a), starts, axis=0) * self.scale
+        step, string_voltage = self.circuit.step(
+            state, self.previous_change, emf, string_resistance, jacobian, emf_scale
+        )
         electrical_change = (np.abs(step) * string_resistance / np.where(emf_scale > 0, emf_scale, 1.0)).max(axis=0)
 
         hot_junction = _moved(hot_junction, d_hot_junction, step)
@@ -232,7 +236,7 @@ class _Solver:
             converged=state.converged,
             passes=state.passes,
         )
-        return np.asarray(np.maximum(change, electrical_change))
+        return np.where(self.circuit.switched, 1.0, np.maximum(change, electrical_change))
 
 
 def _moved(value: FloatArray, derivative: FloatArray, step: FloatArray) -> FloatArray:
