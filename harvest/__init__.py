@@ -17,8 +17,13 @@ if TYPE_CHECKING:
     from harvest.model.case import Case
     from harvest.model.estimate import estimate, estimate_batch
     from harvest.model.fluid import fluid
-    from harvest.model.reading import load_case, replace
+    from harvest.model.module_curve import ModuleCurve, module_curve
+    from harvest.model.reading import load_case, load_streams, replace
     from harvest.model.results import Estimate, Estimates
+    from harvest.study.bench_record import fit_bench_record, read_bench_record
+    from harvest.study.modules import load_module
+    from harvest.study.screen import Screening, screen
+    from harvest.study.what_if import WhatIf, WhatIfOptions, what_if
 
 __version__ = version.VERSION
 
@@ -35,8 +40,19 @@ _HOMES = {
     "estimate": "harvest.model.estimate",
     "estimate_batch": "harvest.model.estimate",
     "fluid": "harvest.model.fluid",
+    "fit_bench_record": "harvest.study.bench_record",
     "load_case": "harvest.model.reading",
+    "load_streams": "harvest.model.reading",
+    "load_module": "harvest.study.modules",
+    "ModuleCurve": "harvest.model.module_curve",
+    "module_curve": "harvest.model.module_curve",
+    "read_bench_record": "harvest.study.bench_record",
     "replace": "harvest.model.reading",
+    "WhatIf": "harvest.study.what_if",
+    "WhatIfOptions": "harvest.study.what_if",
+    "what_if": "harvest.study.what_if",
+    "screen": "harvest.study.screen",
+    "Screening": "harvest.study.screen",
 }
 
 __all__ = [
@@ -47,14 +63,25 @@ __all__ = [
     "Estimates",
     "HarvestError",
     "InputError",
+    "ModuleCurve",
     "NoAnswerError",
     "RangeError",
+    "Screening",
+    "WhatIf",
+    "WhatIfOptions",
     "__version__",
     "estimate",
     "estimate_batch",
+    "fit_bench_record",
     "fluid",
     "load_case",
+    "load_module",
+    "load_streams",
+    "module_curve",
+    "read_bench_record",
     "replace",
+    "screen",
+    "what_if",
 ]
 
 

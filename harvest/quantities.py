@@ -15,6 +15,7 @@ from dataclasses import dataclass, field
 from harvest.errors import QuantityError
 
 LONGEST_TEXT = 100
+LONGEST_CURRENCY = 10
 STANDARD_EXAMPLE = "at 0 degC, 101.325 kPa"
 
 INCH = 0.0254
@@ -42,6 +43,18 @@ class QuantityKind:
     def bare(self) -> bool:
         """Whether a plain number is accepted, because the kind has no unit."""
         return "" in self.units
+
+
+@dataclass(frozen=True)
+class EnergyPrice:
+    """Money for energy: `amount` per joule, in a `currency` that is a label only."""
+
+    amount: float
+    currency: str
+
+    def __str__(self) -> str:
+        """Text that reads back as the same price."""
+        return f"{self.amount * KINDS['energy'].units['kWh']:.12g} {self.currency}/kWh"
 
 
 @dataclass(frozen=True)
@@ -243,6 +256,13 @@ KINDS: dict[str, QuantityKind] = {
             example="5 W/(m^2 K)",
         ),
         QuantityKind(
+            "heat flux",
+            "W/m^2",
+            {"W/m^2": 1.0, "kW/m^2": 1e3, "W/cm^2": 1e4, "Btu/(h ft^2)": BTU / (3600 * FOOT**2)},
+            ("W/m^2", "kW/m^2"),
+            example="5 kW/m^2",
+        ),
+        QuantityKind(
             "thermal resistance",
             "K/W",
             {"K/W": 1.0, "K/kW": 1e-3, "mK/W": 1e-3, "h degF/Btu": 3600 * FAHRENHEIT_STEP / BTU},
@@ -306,6 +326,8 @@ KINDS: dict[str, QuantityKind] = {
 }
 
 STANDARD_VOLUME_FLOW = "standard volume flow"
+ENERGY_PRICE = "energy price"
+ENERGY_PRICE_EXAMPLE = "0.06 EUR/kWh"
 HIGHEST_DEGREE = 8
 
 
@@ -379,6 +401,8 @@ def _spellings(kind_name: str) -> dict[UnitKey | None, str]:
 
 def unit_of(kind: str) -> str:
     """SI unit of a kind as it is written in headers and JSON, "1" for a plain number."""
+    if kind == ENERGY_PRICE:
+        return "1/J"
     return "m^3/s" if kind == STANDARD_VOLUME_FLOW else KINDS[kind].si_unit
 
 
@@ -386,12 +410,16 @@ def allowed_units(kind: str) -> str:
     """List the accepted units of a kind in one line, for messages and explanations."""
     if kind == STANDARD_VOLUME_FLOW:
         return f'{allowed_units("volume flow")}, each followed by "{STANDARD_EXAMPLE}" (and ", wet" or ", dry")'
+    if kind == ENERGY_PRICE:
+        return f"a currency in letters over one of {', '.join(KINDS['energy'].units)}"
     units = ", ".join(unit or "a plain number" for unit in KINDS[kind].units)
     return f'{units}, each also followed by "gauge"' if kind == "pressure" else units
 
 
 def example_of(kind: str) -> str:
     """Show how a quantity of this kind is written."""
+    if kind == ENERGY_PRICE:
+        return ENERGY_PRICE_EXAMPLE
     return f"300 m^3/h {STANDARD_EXAMPLE}" if kind == STANDARD_VOLUME_FLOW else KINDS[kind].example
 
 
@@ -440,6 +468,19 @@ def parse_standard_volume_flow(given: object) -> StandardVolumeFlow:
     if flow.volume_flow <= 0 or flow.temperature <= 0 or flow.pressure <= 0:
         raise QuantityError(f"{shown(given)} needs a flow, an absolute temperature and a pressure above zero")
     return flow
+
+
+def parse_energy_price(given: object) -> EnergyPrice:
+    """Price of a text such as "0.06 EUR/kWh"; raises QuantityError."""
+    wanted = f'write money in letters for an energy, for example "{ENERGY_PRICE_EXAMPLE}"'
+    number, unit = _number_and_unit(given, ENERGY_PRICE)
+    currency, _, energy = (part.strip() for part in unit.partition("/"))
+    spelling = _spellings("energy").get(_unit_key(energy))
+    if not 1 <= len(currency) <= LONGEST_CURRENCY or not currency.isalpha() or spelling is None:
+        raise QuantityError(f"{shown(given)} is not a price; {wanted}")
+    if not 0 <= number < math.inf:
+        raise QuantityError(f"{shown(given)} is negative or too large; {wanted}")
+    return EnergyPrice(number / KINDS["energy"].units[spelling], currency)
 
 
 def from_pint(quantity: object, kind: str) -> float:

@@ -4,11 +4,14 @@ from __future__ import annotations
 
 import dataclasses
 from collections.abc import Callable
+from pathlib import Path
 
 import numpy as np
 import pytest
 
-from harvest.model.estimate import estimate
+from harvest.model.batch import Batch
+from harvest.model.estimate import estimate, estimate_batch
+from harvest.model.reading import load_case, replace
 from tests.independent.stack import Design, Duct, Fluid, Load, Module, Side, solve
 from tests.translation import case_of
 
@@ -164,3 +167,19 @@ def test_splitting_rows_converges_to_the_continuum() -> None:
         for model in ("exponential", "arithmetic")
     ]
     assert arithmetic[0] == pytest.approx(arithmetic[1], rel=1e-6)
+
+
+@pytest.mark.parametrize("name", ["genset-exhaust", "bakery-flue", "genset-jacket-water", "hot-spring"])
+def test_the_maximum_of_shipped_cases_is_where_fixed_voltages_have_it(name: str) -> None:
+    """Three fixed voltages around the answer put a parabola's top at it: modules from legs, gases, blocks."""
+    case = load_case(Path(__file__).parents[1] / "examples" / f"{name}.toml")
+    free = replace(case, {"electrical.load": "fixed voltage", "electrical.load_voltage": "1 V"})
+    best = estimate(case)
+    step = 2e-3 * best.voltage
+    powers = estimate_batch(
+        Batch(free, 3, {"electrical.load_voltage": best.voltage + np.array([-step, 0.0, step])})
+    ).generated_power
+    off = 0.5 * step * (powers[0] - powers[2]) / (powers[0] - 2.0 * powers[1] + powers[2])
+    assert powers[1] > max(powers[0], powers[2])
+    assert abs(off) < 3e-6 * best.voltage
+    assert best.generated_power == pytest.approx(best.maximum_power, rel=1e-12)

@@ -28,7 +28,7 @@ from harvest.model.case import (
 from harvest.model.case_rules import broken_rules
 from harvest.model.case_text import key_lines
 from harvest.model.reading import case_from, load_case, read_case, replace
-from harvest.quantities import KINDS, STANDARD_VOLUME_FLOW, StandardVolumeFlow
+from harvest.quantities import ENERGY_PRICE, KINDS, STANDARD_VOLUME_FLOW, StandardVolumeFlow
 
 PLAIN = """\
 title = "invented"
@@ -118,7 +118,7 @@ BAD: list[tuple[str, str, str]] = [
     ('pressure = "1.5 bar gauge"', "swept_volume_flow = 1", 'does not apply to hot.drive = "free", only to engine'),
     ('pressure = "1.5 bar gauge"', 'volume_flow = "1 L/s"', "hot.volume_flow: is a second flow beside hot.mass_flow"),
     ('gap = "3 mm"', 'gap = "3 mm"\nfin_pitch = "2 mm"', 'does not apply to hot.duct.kind = "smooth"'),
-    ('gap = "3 mm"', 'gap = "3 mm"\nkind = "heat sink"', "known are smooth, plain fins, offset strip fins"),
+    ('gap = "3 mm"', 'gap = "3 mm"\nkind = "heat pipe"', "known are smooth, plain fins, offset strip fins"),
     ('gap = "3 mm"', 'gap = "3 mm"\nfaces = 3', "hot.duct.faces: 3 is not possible; give at least 1 and at most 2"),
     ('row_pitch = "44 mm"', 'row_pitch = "38 mm"', "less than the module's footprint of 40.00 mm along the flow"),
     ('column_pitch = "44 mm"', 'column_pitch = "38 mm"', "footprint of 40.00 mm across the flow"),
@@ -146,7 +146,7 @@ BAD: list[tuple[str, str, str]] = [
     ('["400 K", "0.65 W/K"]', '["200 K", "0.65 W/K"]', "its temperatures do not rise: 200 K comes after 300 K"),
     ('["400 K", "0.65 W/K"]', '["400 K", "-0.65 W/K"]', '"-0.65 W/K" is not possible; give above 0 W/K'),
     ('["400 K", "0.65 W/K"]', '"0.65 W/K"', "is not a list of pairs"),
-    ('seebeck = "0.05 V/K"', "[module.cooler_rating]", "module.cooler_rating: is not available yet"),
+    ('seebeck = "0.05 V/K"', "generator_rating = 3", "module.generator_rating: is a list of tables"),
     (
         'seebeck = "0.05 V/K"',
         'use = "nothing-like-it"',
@@ -374,7 +374,9 @@ def test_every_bundled_module_can_be_used(name: str) -> None:
     text = PLAIN[: PLAIN.index("footprint")] + f'use = "{name}"\n' + PLAIN[PLAIN.index("[electrical]") :]
     case = read_case(text, ["stack.row_pitch=0.2 m", "stack.column_pitch=0.2 m"])
     assert case.module.use == name
-    assert (case.module.legs is None) == (case.module.seebeck is not None)
+    module = case.module
+    ways = (module.seebeck, module.legs, module.cooler_rating, module.generator_rating)
+    assert sum(way is not None for way in ways) == 1
     assert replace(case, {"stack.row_pitch": 0.2}) == case
 
 
@@ -493,7 +495,7 @@ def test_every_field_is_explained_and_declared_soundly() -> None:
         told = explain(path)
         assert told.startswith(path) and declaration.meaning in told
         assert declaration.meaning.endswith(".")
-        assert declaration.kind in KINDS or declaration.kind in (STANDARD_VOLUME_FLOW, "materials", "modules")
+        assert declaration.kind in {*KINDS, STANDARD_VOLUME_FLOW, ENERGY_PRICE, "materials", "modules"}
         if declaration.applies is not None:
             owner = path.rpartition(".")[0]
             selectors = {f"{owner}.{declaration.applies[0]}", f"{owner.partition('.')[0]}.{declaration.applies[0]}"}
@@ -512,14 +514,19 @@ def test_explain_finds_a_field_by_the_end_of_its_path_or_the_nearest() -> None:
 
 
 def test_lines_are_found_through_headers_dotted_and_quoted_keys() -> None:
-    lines = key_lines('a = 1\n[b]\nc.d = 2\n[b."e f"]\n# g = 3\ng = """\nh = 1"""\n[[k]]\n l = 4\n')
-    assert {path: lines[path] for path in ("a", "b", "b.c.d", "b.e f", "b.e f.g", "k.l")} == {
+    lines = key_lines('a = 1\n[b]\nc.d = 2\n[b."e f"]\n# g = 3\ng = """\nh = 1"""\n[[k]]\n l = 4\n[[k]]\nl = 5\n')
+    assert {
+        path: lines[path] for path in ("a", "b", "b.c.d", "b.e f", "b.e f.g", "k.l", "k[1].l", "k[2]", "k[2].l")
+    } == {
         "a": 1,
         "b": 2,
         "b.c.d": 3,
         "b.e f": 4,
         "b.e f.g": 6,
         "k.l": 9,
+        "k[1].l": 9,
+        "k[2]": 10,
+        "k[2].l": 11,
     }
     assert "b.e f.# g" not in lines
 

@@ -147,12 +147,12 @@ def test_what_is_no_number_is_null() -> None:
     assert opened["generated_power"] == pytest.approx(0.0, abs=1e-9) and opened["load_resistance"] is None
 
 
-def test_no_valid_answer_is_exit_1_with_its_reason() -> None:
-    lines = fault_lines(run("estimate", EXAMPLE, "--set", "hot.inlet_temperature=120 degC"), 1)
+def test_an_inlet_out_of_range_is_exit_2_with_its_reason() -> None:
+    lines = fault_lines(run("estimate", EXAMPLE, "--set", "hot.inlet_temperature=120 degC"), 2)
     assert len(lines) == 1 and "393.15 K is outside" in lines[0] and "to 373.15 K" in lines[0]
     result = run("estimate", EXAMPLE, "--json", "--set", "hot.inlet_temperature=120 degC")
     document = json.loads(result.stdout)
-    assert result.exit_code == 1 and document["valid"] is False
+    assert result.exit_code == 2 and document["valid"] is False and document["bad_input"] is True
     assert document["problem"] in result.stderr and document["problem"]
     assert all(document[name] is None for name in SCALARS)
     assert document["checks"] == []
@@ -168,7 +168,7 @@ def test_no_valid_answer_is_exit_1_with_its_reason() -> None:
     ],
 )
 def test_inlets_that_the_fluid_does_not_have(change: str, words: str) -> None:
-    lines = fault_lines(run("estimate", EXAMPLE, "--set", change), 1)
+    lines = fault_lines(run("estimate", EXAMPLE, "--set", change), 2)
     assert len(lines) == 1 and words in lines[0]
 
 
@@ -259,7 +259,6 @@ def test_fluid_gives_properties_with_their_units() -> None:
         (("ethylene glycol", "--at", "20 degC"), "fraction"),
         (("air", "--at", "20"), "20"),
         (("air", "--at", "20 C"), "degC"),
-        (("air", "--at", "20 degC", "--pressure", "1 bar gauge"), "absolute"),
         (("air", "--at", "nan K"), "nan"),
         (("air", "--at", "20 degC", "--pressure", "0 Pa"), "pressure"),
     ],
@@ -314,7 +313,7 @@ MISTAKES: list[tuple[str, str]] = [
     ("electrical.row_blocks=[1, 2]", "adds up to 3"),
     ("electrical.strings_across=1000", "does not divide"),
     ("hot.duct.faces=3", "at most 2"),
-    ("hot.duct.kind=heat sink", "known are smooth"),
+    ("hot.duct.kind=heat pipe", "known are smooth"),
     ("hot.duct.fin_pitch=2 mm", "does not apply"),
     ("electrical.load_resistance=3 ohm", "does not apply"),
     ("module.use=nothing", "demo-bismuth-telluride"),

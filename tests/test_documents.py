@@ -16,6 +16,7 @@ from harvest.model.reading import load_case
 from harvest.model.results import ROW_RESULTS, SCALARS
 from harvest.physics.ducts import LAMINAR_LIMIT, OFFSET_STRIP_REYNOLDS_RANGE, TURBULENT_LIMIT
 from harvest.report.reference import CheckedNumber, case_reference, check_list, result_reference
+from harvest.study.screen import NUMBERS
 from tests.test_published import CHECKS
 from tests.write_documents import DOCS, ROOT, checked_numbers, command_line, readme
 
@@ -80,7 +81,7 @@ def test_every_field_and_result_is_in_its_page() -> None:
     rows_of_case = re.findall(r"^\| `(\w+)` ", case_reference(), flags=re.MULTILINE)
     alone = [path for path, each in DECLARATIONS.items() if each.section is None and not path.startswith("cold.")]
     assert rows_of_case == [path.rpartition(".")[2] for path in sorted(alone, key=_place)]
-    assert re.findall(r"^\| `(\w+)` ", result_reference(), flags=re.MULTILINE) == [*SCALARS, *ROW_RESULTS]
+    assert re.findall(r"^\| `(\w+)` ", result_reference(), flags=re.MULTILINE) == [*SCALARS, *ROW_RESULTS, *NUMBERS]
 
 
 def _place(path: str) -> int:

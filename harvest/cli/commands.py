@@ -12,11 +12,11 @@ from typing import TYPE_CHECKING, Any, NoReturn
 
 import click
 
-from harvest.errors import HarvestError, InputError
+from harvest.errors import CaseError, HarvestError, InputError, NoAnswerError
 from harvest.version import VERSION
 
 if TYPE_CHECKING:
-    from harvest.model.case import Case
+    from harvest.model.case import Case, Streams
 
 INTERRUPTED = 130
 
@@ -81,6 +81,24 @@ def _read(case: str, overrides: tuple[str, ...]) -> Case:
     return load_case(Path(case), overrides)
 
 
+def _read_streams(case: str, overrides: tuple[str, ...]) -> Streams:
+    from harvest.model.reading import load_streams, read_streams
+
+    if case == "-":
+        return read_streams(_standard_input(), overrides, label="stdin", folder=Path())
+    return load_streams(Path(case), overrides)
+
+
+def _with_line(case: str, fault: str) -> str:
+    """Name the file and line of the field that a fault begins with, where the case is a file that gives it."""
+    from harvest.model.case_text import bounded_text, key_lines
+
+    if case == "-":
+        return f"stdin: {fault}"
+    line = key_lines(bounded_text(Path(case))).get(fault.partition(":")[0])
+    return f"{case}:{line}: {fault}" if line else f"{case}: {fault}"
+
+
 def _standard_input() -> str:
     from harvest.model.case_text import LARGEST_FILE
 
@@ -104,6 +122,30 @@ def cli() -> None:
 
 @cli.command()
 @_case_arguments
+@click.option("--figure-of-merit", default=0.8, show_default=True, help="Z T of the modules at the mean temperature.")
+def screen(case: str, overrides: tuple[str, ...], as_json: bool, figure_of_merit: float) -> None:
+    """What two streams could give at most, what is realistic, and whether a design is worth it.
+
+    CASE needs only [hot] and [cold] without ducts; what else it holds is not judged.
+    """
+    loaded = _read_streams(case, overrides)
+    from harvest.report.documents import json_text
+    from harvest.report.screen_sheet import screen_document, screen_report
+    from harvest.study.screen import screen as screen_streams
+
+    answer = screen_streams(loaded, figure_of_merit=figure_of_merit)
+    if as_json:
+        click.echo(json_text(screen_document(answer)))
+    elif answer.valid:
+        click.echo(screen_report(loaded, answer))
+    if not answer.valid:
+        if answer.bad_input:
+            raise CaseError([_with_line(case, fault) for fault in answer.faults])
+        raise NoAnswerError(f"no valid answer: {answer.problem}")
+
+
+@cli.command()
+@_case_arguments
 def estimate(case: str, overrides: tuple[str, ...], as_json: bool) -> None:
     """Power, heat, temperatures, losses and checks of one design."""
     loaded = _read(case, overrides)
@@ -119,8 +161,9 @@ def estimate(case: str, overrides: tuple[str, ...], as_json: bool) -> None:
 
         click.echo(estimate_report(loaded, answer))
     if not answer.valid:
-        click.echo(f"harvest: no valid answer: {answer.problem}", err=True)
-        sys.exit(1)
+        if answer.bad_input:
+            raise CaseError([_with_line(case, fault) for fault in answer.faults])
+        raise NoAnswerError(f"no valid answer: {answer.problem}")
 
 
 @cli.command()
@@ -157,7 +200,9 @@ def explain(field: str | None, as_json: bool) -> None:
 @click.option(
     "--at", "temperatures", multiple=True, metavar="TEMPERATURE", help='Such as --at "80 degC"; may be repeated.'
 )
-@click.option("--pressure", default="101.325 kPa", show_default=True, help="Absolute unless it says gauge.")
+@click.option(
+    "--pressure", default="101.325 kPa", show_default=True, help='Absolute; "2 bar gauge" adds to 101.325 kPa.'
+)
 @click.option("--mass-fraction", default=None, help="Glycol by mass.")
 @click.option("--volume-fraction", default=None, help="Glycol by volume at 20 degC.")
 @click.option("--fuel", default=None, help="Fuel of an exhaust gas.")
@@ -178,6 +223,94 @@ def fluid(name: str, temperatures: tuple[str, ...], pressure: str, as_json: bool
         name, at=temperatures, pressure=pressure, **{key: value for key, value in composition.items() if value}
     )
     click.echo(json_text(fluid_document(sheet)) if as_json else fluid_report(sheet))
+
+
+@cli.command()
+@click.argument("module", metavar="CASE-OR-MODULE")
+@click.option("--hot-face", default="150 degC", show_default=True, help="Temperature of the hot face.")
+@click.option("--cold-face", default="50 degC", show_default=True, help="Temperature of the cold face.")
+@click.option("--set", "overrides", multiple=True, metavar="FIELD=VALUE", help="Replace a field of the module or case.")
+@click.option("--coolant", default=None, help="Fluid of the coolant in a steady bench record, such as water.")
+@click.option("--hot-mass", default=None, help='Body on the hot side of a transient record, such as "0.35 kg water".')
+@click.option("--cold-mass", default=None, help="Body on the cold side of a transient record.")
+@click.option("--ambient", default=None, help="Temperature around the bodies of a transient record.")
+@click.option("--footprint", default=None, help='Side of a module known by a bench record only, such as "40 mm".')
+@click.option("--plot", default=None, type=click.Path(dir_okay=False), help="Draw the curves (.svg, .png, .pdf).")
+@click.option("--write", default=None, type=click.Path(dir_okay=False), help="Save a module record; a new file.")
+@click.option("--json", "as_json", is_flag=True, help="Write one JSON document, not the report.")
+def module(
+    module: str,
+    hot_face: str,
+    cold_face: str,
+    overrides: tuple[str, ...],
+    coolant: str | None,
+    hot_mass: str | None,
+    cold_mass: str | None,
+    ambient: str | None,
+    footprint: str | None,
+    plot: str | None,
+    write: str | None,
+    as_json: bool,
+) -> None:
+    """Parameters of a module, where they come from, and its curves between two faces.
+
+    CASE-OR-MODULE is a case file, a module record, the name of a bundled one, or a bench record (CSV).
+    """
+    from harvest.model.fluid import quantity_of
+    from harvest.physics.fluids import FluidSpec
+    from harvest.report.documents import json_text, module_document
+    from harvest.report.module_sheet import module_report
+    from harvest.study.modules import BesideRecord, curve_of, load_module, thermal_mass
+
+    faces = [
+        quantity_of(name, text, "temperature") for name, text in (("hot-face", hot_face), ("cold-face", cold_face))
+    ]
+    beside = BesideRecord(
+        FluidSpec(name=coolant) if coolant else None,
+        thermal_mass(hot_mass) if hot_mass else None,
+        thermal_mass(cold_mass) if cold_mass else None,
+        quantity_of("ambient", ambient, "temperature") if ambient else None,
+        footprint,
+    )
+    loaded = load_module(module, overrides=overrides, beside=beside)
+    curve = curve_of(loaded, *faces)
+    if plot is not None:
+        from harvest.report.plots import module_figure, write_figure
+
+        write_figure(Path(plot), module_figure(loaded.title, curve, loaded.fit))
+    if write is not None:
+        from harvest.report.files import record_text, write_new
+
+        write_new(Path(write), record_text(loaded.record))
+    click.echo(
+        json_text(module_document(curve, loaded.fit)) if as_json else module_report(loaded.title, curve, loaded.fit)
+    )
+
+
+@cli.command()
+@_case_arguments
+@click.option("--hot-fouling", default=None, help='Growth in 1000 h on the hot side, such as "1e-4 m^2 K/W".')
+@click.option("--cold-fouling", default=None, help="Growth in 1000 h on the cold side.")
+@click.option("--fouling-time", default=None, help="Time constant towards a final fouling without growth; 1000 h.")
+@click.option("--horizon", default=None, help="How long fouling is followed; 16000 h.")
+@click.option("--part-load", multiple=True, metavar="FLOW:TEMPERATURE", help='Shares, such as "0.5:0.8"; repeatable.')
+@click.option("--coldest-ambient", default=None, help="Coldest surroundings at standstill; else the site's ambient.")
+@click.option("--hot-plate", default="stainless steel", show_default=True, help="Material of the hot plates.")
+@click.option("--cold-plate", default="aluminium", show_default=True, help="Material of the cold plates.")
+def whatif(case: str, overrides: tuple[str, ...], as_json: bool, **texts: Any) -> None:
+    """What can go wrong: load, coolant or a module lost, fouling, part load, standstill, expansion."""
+    loaded = _read(case, overrides)
+    from harvest.study.what_if import what_if, what_if_options
+
+    found = what_if(loaded, what_if_options(**texts))
+    if as_json:
+        from harvest.report.documents import json_text, what_if_document
+
+        click.echo(json_text(what_if_document(found)))
+    else:
+        from harvest.report.what_if_sheet import what_if_report
+
+        click.echo(what_if_report(loaded, found))
 
 
 @cli.command()

@@ -3,24 +3,25 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
+from typing import Self
 
 import numpy as np
 
 from harvest.errors import InputError
-from harvest.model.case import DECLARATIONS, Case, nearest_field, value_at
+from harvest.model.case import DECLARATIONS, Case, Streams, nearest_field, value_at
 from harvest.physics.arrays import FloatArray, IntArray
 
 
 @dataclass(frozen=True)
-class Batch:
-    """A base case and `varied`, SI numbers (cases,) by field path, that replace the base's.
+class StreamBatch:
+    """The streams of a case and `varied`, SI numbers (cases,) by field path, that replace the base's.
 
     All names, choices and the fields that are given at all are those of the base case. Raises InputError for a varied
     field that is unknown, not a single number, absent in the base, or of another length.
     """
 
-    base: Case
+    base: Streams
     cases: int = 1
     varied: Mapping[str, FloatArray] = field(default_factory=dict)
 
@@ -30,16 +31,18 @@ class Batch:
             declaration = DECLARATIONS.get(path)
             if declaration is None:
                 raise InputError(f"{path}: unknown field; {nearest_field(path)}")
-            if declaration.form not in ("quantity", "integer", "curve"):
+            many = isinstance(value_at(self.base, path), tuple)
+            if declaration.form not in ("quantity", "integer", "curve") or many:
                 raise InputError(f"{path}: is not a single number, so it cannot vary within a batch")
             if value_at(self.base, path) is None:
                 raise InputError(f"{path}: the base case has none, or something else in its place; give it there first")
             if np.shape(numbers) != (self.cases,):
                 raise InputError(f"{path}: has the shape {np.shape(numbers)}; the batch needs ({self.cases},)")
 
-    def take(self, which: IntArray) -> Batch:
+    def take(self, which: IntArray) -> Self:
         """Return the batch of a subset of cases."""
-        return Batch(self.base, len(which), {path: np.asarray(each)[which] for path, each in self.varied.items()})
+        varied = {path: np.asarray(each)[which] for path, each in self.varied.items()}
+        return replace(self, cases=len(which), varied=varied)
 
     def number(self, path: str, absent: float = np.nan) -> FloatArray:
         """Return a field's numbers, (cases,); `absent` where the field is not given."""
@@ -51,3 +54,10 @@ class Batch:
     def given(self, path: str) -> bool:
         """Whether a field has a value."""
         return path in self.varied or value_at(self.base, path) is not None
+
+
+@dataclass(frozen=True)
+class Batch(StreamBatch):
+    """A base case and the numbers in which designs differ from it; see `StreamBatch`."""
+
+    base: Case

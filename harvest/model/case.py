@@ -22,14 +22,17 @@ from harvest.model.case_fields import (
     other,
     quantity,
     section,
+    tables,
     text,
     walk,
 )
 from harvest.model.loads import LOADS
 from harvest.physics import films, fluids
 from harvest.quantities import (
+    ENERGY_PRICE,
     KINDS,
     STANDARD_VOLUME_FLOW,
+    EnergyPrice,
     StandardVolumeFlow,
     allowed_units,
     example_of,
@@ -54,7 +57,27 @@ DRIVES = {
     "fan": "power of a fan with its motor, by drive_efficiency",
     "engine": "back pressure costs shaft power, by swept_volume_flow and generator_efficiency",
 }
-DUCT_KINDS = {name: kind.meaning for name, kind in films.DUCT_KINDS.items()}
+DRIVE_POSITIONS = {
+    "inlet": "ahead of the stack: it handles the fluid as it enters",
+    "outlet": "behind the stack: it handles the fluid as it leaves, a cooled gas at T_out/T_in of the power",
+}
+PASSAGES = tuple(films.DUCT_KINDS)
+RATED = "rated"
+HEAT_SINK = "heat sink"
+DUCT_KINDS = {
+    **{name: kind.meaning for name, kind in films.DUCT_KINDS.items()},
+    RATED: "bought blocks with rated curves of thermal resistance and pressure drop against flow",
+    HEAT_SINK: "a sink in still room air on each module of the cold side; with a fan it is a duct of air",
+}
+RATED_FLUIDS = {
+    "own": "the fluid of this side",
+    "water": "water",
+    "air": "air at 101.325 kPa",
+}
+REFERENCES = {
+    "inlet": "wall to inlet temperature of the fluid, over the heat",
+    "mean": "wall to mean of inlet and outlet temperature of the fluid, over the heat",
+}
 FINNED = ("plain fins", "offset strip fins")
 ENTRANCES = {
     "fully developed": "entrance effects left out, which never flatters the film",
@@ -68,11 +91,24 @@ ROW_MODELS = {
     "exponential": "each stream approaches the row's wall exponentially; holds for any flow",
     "arithmetic": "the mean of inlet and outlet of a row; for many rows with little change in each",
 }
+EXTRACTIONS = {
+    "Lineykin": "from current, voltage and temperature difference (Lineykin and Ben-Yaakov 2007)",
+    "Zhang": "from current, heat and temperature difference (Zhang 2010); needs maximum_heat",
+}
+COOLER_MATERIALS = {
+    "bismuth telluride": "parameters follow the bundled bismuth telluride from the rating to the operating temperature",
+    "none": "parameters stay as rated, which flatters the result at higher temperatures",
+}
 
 _STREAM = ("fluid", STREAMS)
 _EXHAUST = ("fluid", ("exhaust gas",))
 _FIN = ("kind", FINNED)
 _ENGINE = ("drive", ("engine",))
+_MACHINE = ("drive", ("pump", "fan"))
+_PASSAGE = ("kind", PASSAGES)
+_CONNECTED = ("kind", (*PASSAGES, RATED))
+_RATED = ("kind", (RATED,))
+_SINK = ("kind", (HEAT_SINK,))
 
 NOT_TO_ZERO = "none unless given, which flatters the result"
 
@@ -88,6 +124,14 @@ class Curve:
     kind: str
     values: tuple[float, ...]
     temperatures: tuple[float, ...] = ()
+
+
+@dataclass(frozen=True)
+class FlowCurve:
+    """A quantity against volume flow: rising `flows` [m^3/s] and `values` [SI] of the points."""
+
+    flows: tuple[float, ...]
+    values: tuple[float, ...]
 
 
 FluidRows = tuple[tuple[float, float, float, float, float], ...]
@@ -115,15 +159,37 @@ class Site:
         minimum=180.0,
         maximum=373.15,
     )
+    heat_value: EnergyPrice | None = other(
+        "energy price",
+        "Worth of the hot stream's heat to somebody who uses it as heat; a screening compares with it.",
+        kind=ENERGY_PRICE,
+        default=None,
+        descriptive=True,
+    )
+    electricity_value: EnergyPrice | None = other(
+        "energy price",
+        "Worth of generated electricity, in the currency of heat_value.",
+        kind=ENERGY_PRICE,
+        default=None,
+        descriptive=True,
+    )
+    yearly_operation: float = quantity(
+        "duration",
+        "Time in a year in which the streams flow, for the worth of a year; unless given, common practice, no source.",
+        default=2.88e7,
+        above=0.0,
+        maximum=3.16224e7,
+        descriptive=True,
+    )
 
 
 @dataclass(frozen=True, kw_only=True)
 class Duct:
     """Ducts of one side: the passages that carry the stream along the plates."""
 
-    kind: str = choice(DUCT_KINDS, "Shape of the duct's inside.", default="smooth", applies=_STREAM)
+    kind: str | None = choice(DUCT_KINDS, "Shape of the duct's inside.", default="smooth", applies=_STREAM)
     gap: float | None = quantity(
-        "length", "Clear height of the duct between its plates.", symbol="b", above=0.0, maximum=10.0, applies=_STREAM
+        "length", "Clear height of the duct between its plates.", symbol="b", above=0.0, maximum=10.0, applies=_PASSAGE
     )
     faces: int = integer(
         "Layers that one duct serves: 1, or 2 for a duct between two layers.", default=1, minimum=1, maximum=2
@@ -141,7 +207,7 @@ class Duct:
         "conductivity", "Thermal conductivity of the wall; needed with a wall_thickness.", default=None, above=0.0
     )
     passages: int = integer(
-        "Equal parallel passages side by side in one duct.", default=1, minimum=1, maximum=100_000, applies=_STREAM
+        "Equal parallel passages side by side in one duct.", default=1, minimum=1, maximum=100_000, applies=_PASSAGE
     )
     width: float | None = quantity(
         "length",
@@ -150,7 +216,7 @@ class Duct:
         default=None,
         above=0.0,
         maximum=1000.0,
-        applies=_STREAM,
+        applies=_PASSAGE,
     )
     area_ratio: float = quantity(
         "dimensionless",
@@ -158,7 +224,7 @@ class Duct:
         default=1.0,
         above=0.0,
         maximum=1000.0,
-        applies=_STREAM,
+        applies=_PASSAGE,
     )
     fin_pitch: float | None = quantity(
         "length", "Distance from one fin to the next, across the flow.", above=0.0, maximum=1.0, applies=_FIN
@@ -176,8 +242,127 @@ class Duct:
     fin_conductivity: float | None = quantity(
         "conductivity", "Thermal conductivity of the fins.", above=0.0, applies=_FIN
     )
+    block_resistance: FlowCurve | None = other(
+        "flow curve",
+        "Thermal resistance of one block from its wall to the fluid against the flow through it.",
+        kind="thermal resistance",
+        above=0.0,
+        maximum=1e4,
+        applies=_RATED,
+    )
+    resistance_refers_to: str | None = choice(
+        REFERENCES, "Fluid temperature to which block_resistance refers.", applies=_RATED
+    )
+    block_pressure_drop: FlowCurve | None = other(
+        "flow curve",
+        "Pressure drop of one block against the flow through it.",
+        kind="pressure difference",
+        above=0.0,
+        maximum=1e8,
+        applies=_RATED,
+    )
+    rated_fluid: str | None = choice(RATED_FLUIDS, "Fluid with which the block was rated.", applies=_RATED)
+    rated_temperature: float | None = quantity(
+        "temperature", "Mean temperature of the fluid at the rating.", minimum=100.0, maximum=2000.0, applies=_RATED
+    )
+    modules_per_block: int | None = integer(
+        "Modules that one block serves, on both its faces together.", minimum=1, maximum=MOST_MODULES, applies=_RATED
+    )
+    blocks_in_parallel: int = integer(
+        "Blocks side by side across the flow that share it evenly; further blocks follow along the flow.",
+        default=1,
+        minimum=1,
+        maximum=MOST_ROWS,
+        applies=_RATED,
+    )
+    solid_resistance: float = quantity(
+        "thermal resistance",
+        "Part of a block's resistance that lies in its metal, or in deposits, and does not change with the fluid.",
+        default=0.0,
+        reason="all of the rated resistance is film",
+        minimum=0.0,
+        maximum=1e4,
+        applies=_RATED,
+    )
+    prandtl_exponent: float = quantity(
+        "dimensionless",
+        "Exponent of the Prandtl number at equal Reynolds number, by which another fluid or temperature is corrected.",
+        default=1.0 / 3.0,
+        reason="Colburn's analogy; 0 for developed laminar flow",
+        minimum=0.0,
+        maximum=1.0,
+        applies=_RATED,
+    )
+    sink_resistance: float | None = quantity(
+        "thermal resistance",
+        "Thermal resistance of the heat sink of one module, from its base to the room, at sink_temperature_rise.",
+        default=None,
+        above=0.0,
+        maximum=1e4,
+        applies=_SINK,
+    )
+    sink_temperature_rise: float | None = quantity(
+        "temperature difference",
+        "Rise of the base over the room at which sink_resistance holds.",
+        default=None,
+        above=0.0,
+        maximum=1000.0,
+        applies=_SINK,
+    )
+    sink_exponent: float = quantity(
+        "dimensionless",
+        "Exponent by which the conductance of a sink of given resistance grows with its rise over the room.",
+        default=0.25,
+        reason="laminar natural convection on plates",
+        minimum=0.0,
+        maximum=1.0,
+        applies=_SINK,
+    )
+    sink_height: float | None = quantity(
+        "length",
+        "Height of the sink's base, along its vertical fins.",
+        default=None,
+        above=0.0,
+        maximum=10.0,
+        applies=_SINK,
+    )
+    sink_width: float | None = quantity(
+        "length", "Width of the sink's base, across its fins.", default=None, above=0.0, maximum=10.0, applies=_SINK
+    )
+    sink_fin_height: float | None = quantity(
+        "length", "Height of the sink's fins from base to tip.", default=None, above=0.0, maximum=1.0, applies=_SINK
+    )
+    sink_fin_thickness: float | None = quantity(
+        "length", "Thickness of the sink's fins.", default=None, above=0.0, maximum=0.1, applies=_SINK
+    )
+    sink_fin_spacing: float | None = quantity(
+        "length",
+        "Clear distance between the sink's fins, of which as many as fit are taken; or give sink_fin_count.",
+        default=None,
+        above=0.0,
+        maximum=1.0,
+        applies=_SINK,
+    )
+    sink_fin_count: int | None = integer(
+        "Fins of the sink, evenly over its width, instead of sink_fin_spacing.",
+        default=None,
+        minimum=2,
+        maximum=10_000,
+        applies=_SINK,
+    )
+    sink_conductivity: float | None = quantity(
+        "conductivity", "Thermal conductivity of the sink's fins.", default=None, above=0.0, applies=_SINK
+    )
+    sink_emissivity: float | None = quantity(
+        "dimensionless",
+        "Emissivity of the sink's surface: anodised or painted about 0.8 to 0.9, bare aluminium about 0.1.",
+        default=None,
+        above=0.0,
+        maximum=1.0,
+        applies=_SINK,
+    )
     entrance: str = choice(
-        ENTRANCES, "What is done about entrance effects.", default="fully developed", applies=_STREAM
+        ENTRANCES, "What is done about entrance effects.", default="fully developed", applies=_PASSAGE
     )
     roughness: float = quantity(
         "length",
@@ -185,7 +370,7 @@ class Duct:
         default=0.0,
         minimum=0.0,
         maximum=0.1,
-        applies=_STREAM,
+        applies=_PASSAGE,
     )
     minor_loss_coefficient: float = quantity(
         "dimensionless",
@@ -194,7 +379,7 @@ class Duct:
         reason=NOT_TO_ZERO,
         minimum=0.0,
         maximum=1e6,
-        applies=_STREAM,
+        applies=_PASSAGE,
     )
     connection_diameter: float | None = quantity(
         "length",
@@ -202,7 +387,7 @@ class Duct:
         default=None,
         above=0.0,
         maximum=100.0,
-        applies=_STREAM,
+        applies=_CONNECTED,
     )
     connection_loss_coefficient: float = quantity(
         "dimensionless",
@@ -211,7 +396,7 @@ class Duct:
         reason="none unless given; often the largest loss on the gas side, so the drive power is flattered",
         minimum=0.0,
         maximum=1e6,
-        applies=_STREAM,
+        applies=_CONNECTED,
     )
     frontal_area_ratio: float = quantity(
         "dimensionless",
@@ -221,7 +406,7 @@ class Duct:
         reason="passages much smaller than the header, the largest entrance and exit losses",
         minimum=0.0,
         maximum=1.0,
-        applies=_STREAM,
+        applies=_PASSAGE,
     )
     entrance_loss_coefficient: float | None = quantity(
         "dimensionless",
@@ -229,7 +414,7 @@ class Duct:
         default=None,
         minimum=-10.0,
         maximum=1e6,
-        applies=_STREAM,
+        applies=_PASSAGE,
     )
     exit_loss_coefficient: float | None = quantity(
         "dimensionless",
@@ -237,13 +422,13 @@ class Duct:
         default=None,
         minimum=-10.0,
         maximum=1e6,
-        applies=_STREAM,
+        applies=_PASSAGE,
     )
 
 
 @dataclass(frozen=True, kw_only=True)
-class Side:
-    """The hot or the cold side: a stream with its ducts, or a reservoir."""
+class StreamSide:
+    """What comes to the hot or the cold side, whatever is built there: a stream, or a reservoir."""
 
     fluid: str = choice(FLUIDS, "What flows on this side.")
     mass_fraction: float | None = quantity(
@@ -388,6 +573,29 @@ class Side:
         applies=_STREAM,
         reason=("the pressure drop costs nothing"),
     )
+    drive_position: str | None = choice(
+        DRIVE_POSITIONS, "Where the pump or fan stands.", default="inlet", applies=_MACHINE
+    )
+    drive_curve: FlowCurve | None = other(
+        "flow curve",
+        "Pressure rise of the pump or fan against its volume flow, instead of a flow: where it meets the resistance of "
+        "stack and circuit the flow is found.",
+        kind="pressure difference",
+        default=None,
+        minimum=0.0,
+        maximum=1e8,
+        applies=_MACHINE,
+    )
+    circuit_flow: float | None = quantity(
+        "volume flow",
+        "Flow that the drive_curve gives without the stack: the rest of the circuit then takes the whole pressure "
+        "rise, which grows with the square of flow.",
+        default=None,
+        reason="the stack is the circuit's only resistance, which flatters the flow",
+        above=0.0,
+        maximum=1e6,
+        applies=_MACHINE,
+    )
     drive_efficiency: float | None = quantity(
         "dimensionless",
         "Hydraulic power over electrical power of the pump or fan with its motor.",
@@ -396,7 +604,7 @@ class Side:
         reason="common practice, no source: small machines with their motors",
         above=0.0,
         maximum=1.0,
-        applies=("drive", ("pump", "fan")),
+        applies=_MACHINE,
     )
     swept_volume_flow: float | None = quantity(
         "volume flow",
@@ -416,6 +624,12 @@ class Side:
         maximum=1.0,
         applies=_ENGINE,
     )
+
+
+@dataclass(frozen=True, kw_only=True)
+class Side(StreamSide):
+    """The hot or the cold side: a stream with its ducts, or a reservoir."""
+
     duct: Duct = section(Duct, "Ducts of this side; a reservoir may have a wall.")
 
 
@@ -518,6 +732,80 @@ class Legs:
 
 
 @dataclass(frozen=True, kw_only=True)
+class CoolerRating:
+    """Ratings of a single-stage cooler that is to generate."""
+
+    maximum_current: float = quantity(
+        "current", "Current at the largest temperature difference.", symbol="I_max", above=0.0, maximum=1e5
+    )
+    maximum_voltage: float = quantity(
+        "voltage", "Voltage at the largest temperature difference.", symbol="V_max", above=0.0, maximum=1e5
+    )
+    maximum_temperature_difference: float = quantity(
+        "temperature difference",
+        "Largest temperature difference that the cooler reaches without heat.",
+        symbol="dT_max",
+        above=0.0,
+        maximum=1000.0,
+    )
+    maximum_heat: float | None = quantity(
+        "power",
+        "Heat pumped without a temperature difference at the maximum current; compared with the other three ratings.",
+        symbol="Q_max",
+        default=None,
+        above=0.0,
+        maximum=1e6,
+    )
+    hot_side_temperature: float = quantity(
+        "temperature", "Temperature of the hot side at which the ratings were taken.", minimum=200.0, maximum=600.0
+    )
+    extraction: str = choice(EXTRACTIONS, "Which ratings the parameters are taken from.", default="Lineykin")
+    temperature_dependence: str = choice(
+        COOLER_MATERIALS,
+        "What is laid over the parameters from the rating to the operating temperature.",
+        default="bismuth telluride",
+        reason="the common material of coolers",
+    )
+
+
+@dataclass(frozen=True, kw_only=True)
+class GeneratorRating:
+    """One rated point of a generator at a matched load."""
+
+    hot_face_temperature: float = quantity("temperature", "Temperature of the hot face.", minimum=1.0, maximum=5000.0)
+    cold_face_temperature: float = quantity("temperature", "Temperature of the cold face.", minimum=1.0, maximum=5000.0)
+    matched_power: float | None = quantity(
+        "power", "Power into a load of the module's own resistance.", default=None, above=0.0, maximum=1e6
+    )
+    matched_voltage: float | None = quantity(
+        "voltage", "Voltage at the matched load.", default=None, above=0.0, maximum=1e6
+    )
+    matched_current: float | None = quantity(
+        "current", "Current at the matched load.", default=None, above=0.0, maximum=1e6
+    )
+    open_circuit_voltage: float | None = quantity(
+        "voltage", "Voltage without load at these face temperatures.", default=None, above=0.0, maximum=1e6
+    )
+    internal_resistance: float | None = quantity(
+        "resistance", "Resistance of the module at these face temperatures.", default=None, above=0.0, maximum=1e9
+    )
+    efficiency: float | None = quantity(
+        "dimensionless",
+        "Power over heat into the hot face at the matched load; it gives the conductance.",
+        default=None,
+        above=0.0,
+        maximum=1.0,
+    )
+    heat_flow: float | None = quantity(
+        "power",
+        "Heat into the hot face at the matched load, instead of efficiency.",
+        default=None,
+        above=0.0,
+        maximum=1e9,
+    )
+
+
+@dataclass(frozen=True, kw_only=True)
 class Module:
     """One thermoelectric module."""
 
@@ -573,6 +861,21 @@ class Module:
     description: str = text("What the module is.")
     source: str = text("Where the numbers come from.")
     legs: Legs | None = section(Legs, "The module from its materials and legs, instead of curves.", optional=True)
+    cooler_rating: CoolerRating | None = section(
+        CoolerRating, "The module from the ratings of a single-stage cooler, instead of curves.", optional=True
+    )
+    generator_rating: tuple[GeneratorRating, ...] | None = tables(
+        GeneratorRating,
+        "The module from its ratings as a generator, instead of curves: a table [[module.generator_rating]] for each "
+        "rated point. Two of power, voltage, current, open-circuit voltage and resistance determine a point; more are "
+        "reconciled by least squares. Points at different mean temperatures give straight lines in temperature.",
+    )
+    figure_of_merit: float | None = quantity(
+        "dimensionless",
+        "Z T at the mean face temperature, for generator ratings of which no point gives efficiency or heat_flow.",
+        default=None,
+        above=0.0,
+    )
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -677,17 +980,28 @@ class Limits:
 
 
 @dataclass(frozen=True, kw_only=True)
-class Case:
-    """One design. `given` is the document as typed, `assumed` the paths that were filled by a default."""
+class Streams:
+    """The streams of a case. `given` is the document as typed, `assumed` the paths that were filled by a default."""
 
     title: str = text("What the case is about.")
     site: Site = section(Site, "Where the stack stands.")
+    hot: StreamSide = section(StreamSide, "The hot side.")
+    cold: StreamSide = section(StreamSide, "The cold side, in counterflow to the hot side.")
+    limits: Limits = section(Limits, "What the design must keep to.")
+    given: dict[str, Any] = field(default_factory=dict, compare=False, repr=False)
+    assumed: tuple[str, ...] = field(default=(), compare=False, repr=False)
+    folder: Path = field(default=Path(), compare=False, repr=False)
+
+
+@dataclass(frozen=True, kw_only=True)
+class Case(Streams):
+    """One design: streams, and what is built between them."""
+
     hot: Side = section(Side, "The hot side.")
     cold: Side = section(Side, "The cold side, in counterflow to the hot side.")
     stack: Stack = section(Stack, "Arrangement of the modules.")
     module: Module = section(Module, "The module.")
     electrical: Electrical = section(Electrical, "Wiring, load and converter.")
-    limits: Limits = section(Limits, "What the design must keep to.")
     size: dict[str, Any] | None = other(
         "axes",
         "What sizing may change, as lists or { from = .., to = .., step = .. }, and its objective.",
@@ -700,9 +1014,6 @@ class Case:
         default=None,
         descriptive=True,
     )
-    given: dict[str, Any] = field(default_factory=dict, compare=False, repr=False)
-    assumed: tuple[str, ...] = field(default=(), compare=False, repr=False)
-    folder: Path = field(default=Path(), compare=False, repr=False)
 
 
 class FieldRecord(NamedTuple):
@@ -729,10 +1040,13 @@ def fields() -> Iterator[FieldRecord]:
         yield FieldRecord(path, declaration)
 
 
-def value_at(case: Case, path: str) -> Any:
-    """Value of a field by its dotted path; None inside a section that is not given."""
+def value_at(case: Streams, path: str) -> Any:
+    """Value of a field by its dotted path; None inside a section that is not given, a tuple in a list of tables."""
     value: Any = case
     for name in path.split("."):
+        if isinstance(value, tuple):
+            inside = tuple(getattr(each, name) for each in value)
+            return None if all(each is None for each in inside) else inside
         value = getattr(value, name, None)
     return value
 
@@ -766,11 +1080,14 @@ def display(value: Any, declaration: Declaration) -> str:
     if isinstance(value, float):
         return f"{value:.6g}" if KINDS[declaration.kind].bare else format_quantity(value, declaration.kind)
     if isinstance(value, tuple) and declaration.form == "pair":
-        return " to ".join(format_quantity(each, declaration.kind) for each in value)
+        joint = " x " if declaration.kind == "length" else " to "
+        return joint.join(format_quantity(each, declaration.kind) for each in value)
+    if isinstance(value, tuple) and declaration.form == "quantity":
+        return ", ".join(display(each, declaration) for each in value)
     return one_line(str(value), 300)
 
 
-def assumptions(case: Case) -> list[Assumption]:
+def assumptions(case: Streams) -> list[Assumption]:
     """Fields left at a default that matters for the result, with value and reason."""
     return [
         Assumption(path, display(value_at(case, path), DECLARATIONS[path]), DECLARATIONS[path].reason)
@@ -779,7 +1096,7 @@ def assumptions(case: Case) -> list[Assumption]:
     ]
 
 
-def case_hash(case: Case) -> str:
+def case_hash(case: Streams) -> str:
     """SHA-256 of what the result depends on, in SI with 12 digits: the same however the units were written.
 
     Titles, descriptions, sizing and sweep are left out; a material that is a file counts by its bytes.
@@ -799,7 +1116,7 @@ def _canonical(value: Any, declaration: Declaration) -> Any:
         return f"{value:.12g}"
     if isinstance(value, tuple):
         return [_canonical(each, declaration) for each in value]
-    if isinstance(value, Curve | StandardVolumeFlow):
+    if isinstance(value, Curve | FlowCurve | StandardVolumeFlow):
         return {name: _canonical(each, declaration) for name, each in vars(value).items()}
     if declaration.form == "file" and value is not None and Path(value).is_absolute():
         import hashlib
@@ -826,10 +1143,12 @@ def _explanation(path: str, declaration: Declaration) -> str:
     lines = [path, f"  {declaration.meaning}"]
     if declaration.section is not None:
         inside = [known for known in DECLARATIONS if known.startswith(f"{path}.")]
+        if declaration.form == "tables":
+            lines.append(f"  write: [[{path}]] before the fields of each table")
         return "\n".join([*lines, "  fields: " + ", ".join(known.removeprefix(f"{path}.") for known in inside)])
     if declaration.symbol:
         lines.append(f"  symbol: {declaration.symbol}")
-    if declaration.form in ("quantity", "pair", "curve", "standard volume flow"):
+    if declaration.form in ("quantity", "pair", "curve", "flow curve", "standard volume flow", "energy price"):
         lines.append(f"  write: {_written(declaration)}")
         lines.append(f"  units: {allowed_units(declaration.kind)}")
         lines.append(f"  inside and in JSON: {unit_of(declaration.kind)}")
@@ -848,6 +1167,11 @@ def _written(declaration: Declaration) -> str:
     example = f'"{example_of(declaration.kind)}"'
     if declaration.form == "pair":
         return f"[{example}, {example}]"
+    if declaration.form == "flow curve":
+        flow = f'"{example_of("volume flow")}"'
+        power_law = f"{{ flow = {flow}, value = {example}, exponent = -0.6, from = .., to = .. }}"
+        straight = "pairs of flow and value, [[" + f"{flow}, {example}], ...]"
+        return straight if declaration.minimum is not None else f"{straight}; or a power law, {power_law}"
     if declaration.form == "curve":
         return (
             f"{example}; or polynomial coefficients in (T - 300 K), T the mean temperature, lowest power first, as "

@@ -14,9 +14,9 @@ REQUIRED: Any = object()
 class Declaration:
     """One field: its form, unit, meaning, default with its reason, limits, choices and when it applies.
 
-    `form` is one of quantity, standard volume flow, pair, curve, text, file, choice, integer, integers, boolean,
-    fluid table, axes, section. `applies` names a field beside or above this one and its values for which this one is
-    asked. A `reason` marks a default that is an assumption worth telling.
+    `form` is one of quantity, standard volume flow, energy price, pair, curve, text, file, choice, integer, integers,
+    boolean, fluid table, axes, section, tables (a list of sections). `applies` names a field beside or above this one
+    and its values for which this one is asked. A `reason` marks a default that is an assumption worth telling.
     """
 
     form: str
@@ -65,6 +65,11 @@ def other(form: str, meaning: str, **more: Any) -> Any:
 def section(of: type, meaning: str, optional: bool = False) -> Any:
     """Declare a table of further fields."""
     return _declared(form="section", meaning=meaning, section=of, optional=optional)
+
+
+def tables(of: type, meaning: str) -> Any:
+    """Declare a list of tables, each with the same further fields; None where it is not given."""
+    return _declared(form="tables", meaning=meaning, section=of, optional=True, default=None)
 
 
 def walk(owner: type, prefix: str = "") -> Iterator[tuple[str, Declaration]]:

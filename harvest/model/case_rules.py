@@ -6,18 +6,29 @@ import functools
 from collections.abc import Callable, Iterator
 from typing import Any
 
-from harvest.model.case import GLYCOLS, MOST_MODULES
+import numpy as np
+
+from harvest.model.case import GASES, GLYCOLS, HEAT_SINK, MOST_MODULES, RATED
 from harvest.model.case_fields import Declaration
 from harvest.model.loads import FIXED_RESISTANCE, FIXED_VOLTAGE
+from harvest.model.rating_rules import (
+    LARGEST_MERIT,
+    LARGEST_SCATTER,
+    cooler_contradictions,
+    generator_contradictions,
+    generator_scatter,
+    rating_numbers,
+)
 from harvest.quantities import significant
 
-FLOWS = ("mass_flow", "volume_flow", "standard_volume_flow")
+FLOWS = ("mass_flow", "volume_flow", "standard_volume_flow", "drive_curve")
 ALTERNATIVES: tuple[tuple[str, ...], ...] = tuple(
     tuple(f"{side}.{name}" for name in names)
     for side in ("hot", "cold")
     for names in (FLOWS, ("mass_fraction", "volume_fraction"), ("excess_air_ratio", "dry_oxygen"))
 )
 CURVES = ("module.seebeck", "module.resistance", "module.conductance")
+MODULE_WAYS = ("legs", "cooler_rating", "generator_rating")
 
 
 class UnknownValueError(Exception):
@@ -63,7 +74,7 @@ def selector_path(selector: str, path: str, values: Values) -> str:
 
 def flow_is_given_once(side: str, values: Values) -> Faults:
     """Require one flow of a stream; exhaust gas may have it from the fuel."""
-    if values[f"{side}.fluid"] == "reservoir":
+    if values[f"{side}.fluid"] == "reservoir" or values.get(f"{side}.duct.kind") == HEAT_SINK:
         return
     flows = values.given(*(f"{side}.{name}" for name in FLOWS))
     if len(flows) > 1:
@@ -121,6 +132,129 @@ def connection_has_a_pipe(side: str, values: Values) -> Faults:
     duct = f"{side}.duct"
     if values[f"{duct}.connection_loss_coefficient"] and values[f"{duct}.connection_diameter"] is None:
         yield f"{duct}.connection_diameter", 'is missing; the connection losses need it, for example "50 mm"'
+
+
+def passages_fit_the_plate(side: str, values: Values) -> Faults:
+    """Require passages that fit side by side on the plate."""
+    width = values[f"{side}.duct.width"]
+    if width is None:
+        return
+    plate = values["stack.columns"] * values["stack.column_pitch"]
+    passages = values[f"{side}.duct.passages"]
+    if passages * width > plate * (1.0 + 1e-9):
+        most = _mm(plate / passages)
+        message = f"{passages} passages of {_mm(width)} do not fit on a plate of {_mm(plate)}; give at most {most}"
+        yield f"{side}.duct.width", message
+
+
+def blocks_tile_the_plate(side: str, values: Values) -> Faults:
+    """Require rated blocks that cover whole rows of their share of the columns."""
+    duct = f"{side}.duct"
+    if values.get(f"{duct}.kind") != RATED:
+        return
+    columns, rows, faces = values["stack.columns"], values["stack.rows"], values[f"{duct}.faces"]
+    across, modules = values[f"{duct}.blocks_in_parallel"], values[f"{duct}.modules_per_block"]
+    if columns % across:
+        yield f"{duct}.blocks_in_parallel", f"{across} does not divide the {columns} columns"
+        return
+    in_a_row = faces * columns // across
+    if modules % in_a_row or rows % (modules // in_a_row):
+        on_both = " on both faces" if faces == 2 else ""
+        yield (
+            f"{duct}.modules_per_block",
+            f"{modules} modules do not tile {rows} rows of {columns} columns; with blocks_in_parallel = {across} a "
+            f"block holds {in_a_row} modules a row{on_both}, and its rows must divide the {rows} rows",
+        )
+    if values[f"{side}.fouling"]:
+        yield (
+            f"{side}.fouling",
+            "needs the wetted area, which a rated block does not tell; give duct.solid_resistance instead",
+        )
+    if side == "cold" and (values["hot.duct.faces"], faces) == (2, 2):
+        yield (
+            f"{duct}.faces",
+            "2 on both sides is a repeating stack, which ends in half ducts, and there are no half blocks; give 1",
+        )
+    rated, fluid = values[f"{duct}.rated_fluid"], values[f"{side}.fluid"]
+    if rated != "own" and (rated in GASES) != (fluid in GASES):
+        yield (
+            f"{duct}.rated_fluid",
+            f"a curve for {rated} tells nothing of {fluid}; give a curve of the own fluid",
+        )
+
+
+SINK_GEOMETRY = tuple(
+    f"cold.duct.sink_{name}"
+    for name in ("height", "width", "fin_height", "fin_thickness", "conductivity", "emissivity")
+)
+FIN_COUNTS = ("cold.duct.sink_fin_spacing", "cold.duct.sink_fin_count")
+
+
+def heat_sink_is_described_once(values: Values) -> Faults:
+    """Require room air without a flow, and a resistance with its rise or a whole geometry."""
+    if values.get("hot.duct.kind") == HEAT_SINK:
+        yield "hot.duct.kind", 'a heat sink in room air is a cold side; for a hot wall give fluid = "reservoir"'
+    if values.get("cold.duct.kind") != HEAT_SINK:
+        return
+    if values["cold.fluid"] != "air":
+        yield "cold.fluid", f'{values["cold.fluid"]} cannot surround a heat sink; give "air"'
+    for moving in values.given(*(f"cold.{name}" for name in FLOWS)):
+        yield moving, 'does not apply to a heat sink in still air; for a fan give kind = "plain fins" or another duct'
+    if values["cold.drive"] != "free" or values["cold.fouling"]:
+        wrong = "fouling" if values["cold.fouling"] else "drive"
+        yield f"cold.{wrong}", "does not apply to a heat sink in still air; remove it"
+    if values["cold.duct.faces"] != 1:
+        yield "cold.duct.faces", "a heat sink serves one module; give 1"
+    if values["stack.layers"] > 1:
+        yield (
+            "stack.layers",
+            "heat sinks stand in the room, so only one layer can carry them; give 1",
+        )
+    resistance = values.given("cold.duct.sink_resistance", "cold.duct.sink_temperature_rise")
+    geometry, fins = values.given(*SINK_GEOMETRY), values.given(*FIN_COUNTS)
+    if resistance and (geometry or fins):
+        yield resistance[0], f"is given beside {(geometry + fins)[0]}; give a resistance or the geometry of the sink"
+    elif len(resistance) == 1:
+        missing = {"cold.duct.sink_resistance", "cold.duct.sink_temperature_rise"} - {*resistance}
+        yield missing.pop(), f"is missing beside {resistance[0]}: a sink in still air has a resistance at one rise only"
+    elif not resistance:
+        yield from _sink_geometry_is_whole(geometry, fins)
+
+
+def _sink_geometry_is_whole(geometry: list[str], fins: list[str]) -> Faults:
+    if not geometry and not fins:
+        yield (
+            "cold.duct.sink_resistance",
+            "is missing; give it with sink_temperature_rise, or sink_height, sink_width and the fins",
+        )
+        return
+    for missing in SINK_GEOMETRY:
+        if missing not in geometry:
+            yield missing, "is missing beside the other measures of the sink"
+    if len(fins) != 1:
+        yield (
+            FIN_COUNTS[len(fins) - 1] if fins else FIN_COUNTS[0],
+            "give sink_fin_spacing or sink_fin_count, one of them",
+        )
+
+
+def without_effect(values: Values) -> set[str]:
+    """Fields whose default assumes nothing, because the cold side is a heat sink."""
+    if values.get("cold.duct.kind") != HEAT_SINK:
+        return set()
+    by_geometry = values.get("cold.duct.sink_resistance") is None
+    return {"cold.fouling", "cold.drive", *(["cold.duct.sink_exponent"] if by_geometry else [])}
+
+
+def circuit_belongs_to_a_curve(side: str, values: Values) -> Faults:
+    """Require a circuit flow on the drive curve that gives it."""
+    curve, flow = values[f"{side}.drive_curve"], values[f"{side}.circuit_flow"]
+    if flow is None:
+        return
+    if curve is None:
+        yield f"{side}.circuit_flow", "is used with a drive_curve only; give one, or remove it"
+    elif not curve.flows[0] <= flow <= curve.flows[-1]:
+        yield f"{side}.circuit_flow", "lies outside the drive_curve, which cannot give it"
 
 
 def fins_fit_their_pitch(side: str, values: Values) -> Faults:
@@ -199,6 +333,16 @@ def own_converters_suit_the_load(values: Values) -> Faults:
         yield "electrical.independent", f'each string has its own converter, so the load cannot be "{load}" for all'
 
 
+def prices_are_in_one_currency(values: Values) -> Faults:
+    """Require worths that can be compared."""
+    heat, electricity = values["site.heat_value"], values["site.electricity_value"]
+    if heat is not None and electricity is not None and heat.currency != electricity.currency:
+        yield (
+            "site.electricity_value",
+            f"is in {electricity.currency}, and heat_value in {heat.currency}; give one currency",
+        )
+
+
 def module_range_is_ordered(values: Values) -> Faults:
     """Require the parameters' lowest temperature below their highest."""
     lower, upper = values["module.minimum_temperature"], values["module.maximum_temperature"]
@@ -207,15 +351,67 @@ def module_range_is_ordered(values: Values) -> Faults:
 
 
 def module_is_described_once(values: Values) -> Faults:
-    """Require either three curves or legs."""
-    curves, legs = values.given(*CURVES), values["module.legs.couples"] is not None
-    if curves and legs:
-        yield curves[0], "is given beside [module.legs]; describe the module in one way"
-    if not curves and not legs:
-        yield "module", 'is not described; give use = "...", or seebeck, resistance and conductance, or [module.legs]'
+    """Require curves, legs, cooler ratings or generator ratings."""
+    curves = values.given(*CURVES)
+    tables = [f"module.{way}" for way in MODULE_WAYS if values[f"module.{way}"] is not None]
+    if curves and tables:
+        yield curves[0], f"is given beside [{tables[0]}]; describe the module in one way"
+    for second in tables[1:]:
+        yield second, f"is given beside [{tables[0]}]; describe the module in one way"
+    if not curves and not tables:
+        yield (
+            "module",
+            'is not described; give use = "...", or seebeck, resistance and conductance, or one of '
+            "[module.legs], [module.cooler_rating], [[module.generator_rating]]",
+        )
+    if values["module.legs"] is not None and values["module.couples"] is not None:
+        yield "module.couples", "is given beside [module.legs], which has its own couples; leave it out"
     for missing in CURVES:
-        if curves and not legs and missing not in curves:
+        if curves and not tables and missing not in curves:
             yield missing, "is missing beside the other parameters of the module"
+
+
+def cooler_ratings_agree(values: Values) -> Faults:
+    """Require ratings of a cooler that can belong to one part."""
+    if values["module.cooler_rating"] is None:
+        return
+    names = ("maximum_current", "maximum_voltage", "maximum_temperature_difference", "maximum_heat")
+    given = [values[f"module.cooler_rating.{name}"] for name in (*names, "hot_side_temperature")]
+    if given[3] is None and values["module.cooler_rating.extraction"] == "Zhang":
+        yield "module.cooler_rating.maximum_heat", 'is missing; extraction = "Zhang" takes the parameters from it'
+    with np.errstate(all="ignore"):
+        for contradiction in cooler_contradictions(*(np.array([np.nan if v is None else v]) for v in given)):
+            if contradiction.where[0]:
+                yield f"module.cooler_rating.{contradiction.field}", contradiction.sentence(0)
+                return
+
+
+def generator_ratings_agree(values: Values) -> Faults:
+    """Require rated points that determine the module and can be true; the first fault of each point is told."""
+    points, merit = values["module.generator_rating"], values["module.figure_of_merit"]
+    if points is None:
+        if merit is not None:
+            yield "module.figure_of_merit", "is used with [[module.generator_rating]] only; remove it"
+        return
+    numbers = rating_numbers(points)
+    if merit is not None and merit > LARGEST_MERIT:
+        yield "module.figure_of_merit", f"{merit:g} is above {LARGEST_MERIT:g}; no module comes near it, 0.7 is usual"
+    if merit is not None and np.isfinite([numbers["efficiency"], numbers["heat_flow"]]).any():
+        yield "module.figure_of_merit", "is given beside an efficiency or heat_flow of a point; leave one out"
+    told: set[int] = set()
+    with np.errstate(all="ignore"):
+        for contradiction in generator_contradictions(numbers, merit):
+            for index in map(int, np.flatnonzero(contradiction.where)):
+                if index not in told:
+                    told.add(index)
+                    path = f"module.generator_rating[{index + 1}].{contradiction.field}"
+                    yield path, contradiction.sentence(index)
+    if not told and (scatter := generator_scatter(numbers, merit)) > LARGEST_SCATTER:
+        yield (
+            "module.generator_rating",
+            f"a point lies {100 * scatter:.0f} % from constants or straight lines in mean temperature through all "
+            "points; they cannot be of one module",
+        )
 
 
 SIDE_RULES: tuple[Callable[[str, Values], Faults], ...] = (
@@ -224,9 +420,13 @@ SIDE_RULES: tuple[Callable[[str, Values], Faults], ...] = (
     wall_is_complete,
     connection_has_a_pipe,
     fins_fit_their_pitch,
+    passages_fit_the_plate,
+    blocks_tile_the_plate,
+    circuit_belongs_to_a_curve,
 )
 RULES: tuple[Callable[[Values], Faults], ...] = (
     *(functools.partial(rule, side) for side in ("hot", "cold") for rule in SIDE_RULES),
+    heat_sink_is_described_once,
     substrate_is_complete,
     layers_suit_faces,
     modules_fit,
@@ -236,8 +436,11 @@ RULES: tuple[Callable[[Values], Faults], ...] = (
     blocks_add_up,
     window_is_ordered,
     own_converters_suit_the_load,
+    prices_are_in_one_currency,
     module_range_is_ordered,
     module_is_described_once,
+    cooler_ratings_agree,
+    generator_ratings_agree,
 )
 
 

@@ -61,16 +61,26 @@ def toml_document(text: str, label: str) -> dict[str, Any]:
 
 
 def key_lines(text: str) -> dict[str, int]:
-    """Line number of each table header and key of a TOML text, by dotted path."""
+    """Line number of each table header and key of a TOML text, by dotted path.
+
+    What stands in a list of tables is found by its place, "list[2].key"; without it, the first such key.
+    """
     lines: dict[str, int] = {}
-    table = ""
+    counts: dict[str, int] = {}
+    table, place = "", ""
     for number, line in enumerate(text.splitlines(), 1):
         if header := _HEADER.match(line):
-            table = _dotted(header[1])
+            table, place = _dotted(header[1]), ""
             lines.setdefault(table, number)
+            if line.lstrip().startswith("[["):
+                counts[table] = counts.get(table, 0) + 1
+                place = f"[{counts[table]}]"
+                lines[table + place] = number
         elif entry := _ENTRY.match(line):
             path = _dotted(entry[1])
             lines.setdefault(f"{table}.{path}" if table else path, number)
+            if place:
+                lines.setdefault(f"{table}{place}.{path}", number)
     return lines
 
 

@@ -9,12 +9,14 @@ from dataclasses import dataclass
 import numpy as np
 
 from harvest.errors import RangeError
-from harvest.model.batch import Batch
-from harvest.model.case import DECLARATIONS, limits_text
-from harvest.model.case import Curve as CaseCurve
+from harvest.model.batch import Batch, StreamBatch
+from harvest.model.case import DECLARATIONS, HEAT_SINK, RATED, limits_text
 from harvest.model.loads import MAXIMUM_POWER
-from harvest.model.materials import MaterialRecord, load_material
+from harvest.model.module import DescribedModule, cooler_faults, described_module, footprint_area
 from harvest.model.property_store import stored_table
+from harvest.model.rated_side import arrangement_faults, rated_film
+from harvest.model.rating_rules import Contradiction
+from harvest.model.room_side import base_area, room_sink
 from harvest.model.stack import (
     Circuit,
     Load,
@@ -28,27 +30,32 @@ from harvest.physics.combustion import (
     excess_air_from_flows,
     exhaust_flow_from_fuel,
 )
-from harvest.physics.curves import Curve, PolynomialCurve, TableCurve
 from harvest.physics.films import DUCT_KINDS, DuctMeasures, Film
 from harvest.physics.fluids import FluidBatch, FluidSpec, FluidTable, expansion_range
+from harvest.physics.natural_convection import RoomSink
+from harvest.physics.rated import RatedFilm
 from harvest.physics.spreading import Constriction
-from harvest.physics.thermoelectrics import LegModule, MeanTemperatureModule, ModuleModel
 
 OVERSHOOT = 40.0
 """How far past the inlets a gas is expanded [K]; further out there is no answer."""
 SPEC_NUMBERS = ("mass_fraction", "volume_fraction", "excess_air_ratio", "dry_oxygen", "intake_humidity")
 
 
+BETWEEN = " | "
+"""What stands between two faults of one case."""
+
+
 class Faults:
-    """Reasons why cases have no answer; the first one found for a case stands."""
+    """Reasons why cases have no answer, each named by its field; several for a case are joined by `BETWEEN`."""
 
     def __init__(self, cases: int) -> None:
         self.text = np.full(cases, "", dtype=object)
 
     def add(self, where: BoolArray, text: str | Callable[[int], str]) -> None:
         """Mark cases; `text`, or a function from the case's index to it."""
-        for index in np.flatnonzero(where & (self.text == "")):
-            self.text[index] = text if isinstance(text, str) else text(int(index))
+        for index in np.flatnonzero(where):
+            said = text if isinstance(text, str) else text(int(index))
+            self.text[index] = f"{self.text[index]}{BETWEEN}{said}" if self.text[index] else said
 
     @property
     def valid(self) -> BoolArray:
@@ -58,7 +65,10 @@ class Faults:
 
 @dataclass(frozen=True)
 class Stream:
-    """One side's stream, (cases,): total `mass_flow` [kg/s], duct counts, table data. A reservoir has no fluid."""
+    """One side's stream, (cases,): total `mass_flow` [kg/s], duct counts, table data.
+
+    A reservoir has no fluid, and neither have heat sinks in still air, which have a `sink`.
+    """
 
     name: str
     inlet_temperature: FloatArray
@@ -67,11 +77,12 @@ class Stream:
     fluid: FluidBatch | None
     tables: tuple[FluidTable, ...]
     table_of_case: IntArray
-    film: Film | None
+    film: Film | RatedFilm | None
     ducts: FloatArray
     half_ducts: FloatArray
     excess_air_ratio: FloatArray
     is_reservoir: bool
+    sink: RoomSink | None = None
 
     def table_value(self, name: str) -> FloatArray:
         """One number of each case's fluid table, (cases,)."""
@@ -92,12 +103,13 @@ class Design:
     module_count: FloatArray
     footprint_area: FloatArray
     place_area: FloatArray
-    materials: tuple[MaterialRecord, ...]
-    substrate_resistance: FloatArray
+    module: DescribedModule
     interface_resistance: tuple[FloatArray, FloatArray]
 
 
-def _fluid(batch: Batch, side: str, faults: Faults) -> tuple[FluidBatch | None, tuple[FluidTable, ...], IntArray]:
+def stream_fluid(
+    batch: StreamBatch, side: str, faults: Faults
+) -> tuple[FluidBatch | None, tuple[FluidTable, ...], IntArray]:
     """Property tables of one side, one for each different fluid state of the batch."""
     given = getattr(batch.base, side)
     inlet, pressure = batch.number(f"{side}.inlet_temperature"), batch.number(f"{side}.pressure")
@@ -105,7 +117,7 @@ def _fluid(batch: Batch, side: str, faults: Faults) -> tuple[FluidBatch | None, 
     numbers = {each: batch.number(f"{side}.{each}") for each in SPEC_NUMBERS if batch.given(f"{side}.{each}")}
     if given.fluid == "exhaust gas":
         numbers.pop("dry_oxygen", None)
-        numbers["excess_air_ratio"] = _excess_air_ratio(batch, side)
+        numbers["excess_air_ratio"] = stream_excess_air_ratio(batch, side)
     # modules that are driven as coolers can take a stream past both inlets
     lower, upper = expansion_range(
         given.fluid, np.minimum(inlet, other) - OVERSHOOT, np.maximum(inlet, other) + OVERSHOOT
@@ -137,7 +149,7 @@ def _fluid(batch: Batch, side: str, faults: Faults) -> tuple[FluidBatch | None, 
     return FluidBatch.stack(full, table_of_case), full, table_of_case
 
 
-def _excess_air_ratio(batch: Batch, side: str) -> FloatArray:
+def stream_excess_air_ratio(batch: StreamBatch, side: str) -> FloatArray:
     """Excess-air ratio of an exhaust gas from whichever way it was given [-], (cases,); NaN for other fluids."""
     given = getattr(batch.base, side)
     if given.fluid != "exhaust gas" or batch.given(f"{side}.excess_air_ratio"):
@@ -152,8 +164,8 @@ def _excess_air_ratio(batch: Batch, side: str) -> FloatArray:
     )
 
 
-def _mass_flow(
-    batch: Batch, side: str, inlet_density: FloatArray, molar_mass: FloatArray, water: FloatArray
+def stream_mass_flow(
+    batch: StreamBatch, side: str, inlet_density: FloatArray, molar_mass: FloatArray, water: FloatArray
 ) -> FloatArray:
     """Mass flow of one side from whichever way it was given [kg/s], (cases,)."""
     given = getattr(batch.base, side)
@@ -165,6 +177,8 @@ def _mass_flow(
         standard = given.standard_volume_flow
         moles = standard.volume_flow * standard.pressure / (GAS_CONSTANT * standard.temperature)
         return np.asarray(moles * molar_mass / (1.0 - water if standard.basis == "dry" else 1.0))
+    if given.drive_curve is not None:  # what the curve gives without the stack
+        return batch.number(f"{side}.circuit_flow", given.drive_curve.flows[-1]) * inlet_density
     return exhaust_flow_from_fuel(
         given.fuel,
         batch.number(f"{side}.fuel_flow"),
@@ -187,12 +201,11 @@ def duct_count(layers: FloatArray, faces: FloatArray, other_faces: FloatArray, c
 def _stream(batch: Batch, side: str, faults: Faults) -> Stream:
     """Flow, property tables and film of one side."""
     inlet = batch.number(f"{side}.inlet_temperature")
-    layers, columns = batch.number("stack.layers"), batch.number("stack.columns")
+    layers = batch.number("stack.layers")
     faces = batch.number(f"{side}.duct.faces")
     other_faces = batch.number(f"{'cold' if side == 'hot' else 'hot'}.duct.faces")
     ducts = duct_count(layers, faces, other_faces, closes_ends=side == "cold")
     half = np.where((faces == 2) & (other_faces == 2) & (side == "cold"), 2.0, 0.0)
-    duct = getattr(batch.base, side).duct
     nothing_flows = Stream(
         name=side,
         inlet_temperature=inlet,
@@ -204,24 +217,42 @@ def _stream(batch: Batch, side: str, faults: Faults) -> Stream:
         film=None,
         ducts=ducts,
         half_ducts=half,
-        excess_air_ratio=_excess_air_ratio(batch, side),
+        excess_air_ratio=stream_excess_air_ratio(batch, side),
         is_reservoir=getattr(batch.base, side).fluid == "reservoir",
     )
     if nothing_flows.is_reservoir:
         return nothing_flows
-    fluid, tables, table_of_case = _fluid(batch, side, faults)
+    fluid, tables, table_of_case = stream_fluid(batch, side, faults)
     if fluid is None:
         return nothing_flows
+    if getattr(batch.base, side).duct.kind == HEAT_SINK:
+        sink = room_sink(batch, fluid, faults)
+        return dataclasses.replace(nothing_flows, tables=tables, table_of_case=table_of_case, sink=sink)
     molar_mass = np.array([table.molar_mass for table in tables])[table_of_case]
     water = np.array([table.water_fraction for table in tables])[table_of_case]
-    mass_flow = _mass_flow(batch, side, fluid.density(inlet[None])[0], molar_mass, water)
+    mass_flow = stream_mass_flow(batch, side, fluid.density(inlet[None])[0], molar_mass, water)
+    stream = dataclasses.replace(
+        nothing_flows, mass_flow=mass_flow, fluid=fluid, tables=tables, table_of_case=table_of_case
+    )
+    return dataclasses.replace(stream, film=stream_film(batch, stream, mass_flow, faults))
+
+
+def stream_film(
+    batch: Batch, stream: Stream, mass_flow: FloatArray, faults: Faults | None = None
+) -> Film | RatedFilm | None:
+    """Film of a side at its total `mass_flow` [kg/s], (cases,); faults of rated blocks are noted where asked for."""
+    side, duct = stream.name, getattr(batch.base, stream.name).duct
+    faces = batch.number(f"{side}.duct.faces")
+    of_one_duct = mass_flow * faces / batch.number("stack.layers")
+    if duct.kind == RATED:
+        return rated_film(batch, stream, of_one_duct, faults)
     passages = batch.number(f"{side}.duct.passages", 1.0)
-    width = columns * batch.number("stack.column_pitch")
+    width = batch.number("stack.columns") * batch.number("stack.column_pitch")
     passage_width = batch.number(f"{side}.duct.width")
     passage_width = np.where(np.isnan(passage_width), width / passages, passage_width)
-    film = DUCT_KINDS[duct.kind].build(
+    return DUCT_KINDS[duct.kind].build(
         DuctMeasures(
-            mass_flow=mass_flow * faces / layers,
+            mass_flow=of_one_duct,
             gap=batch.number(f"{side}.duct.gap"),
             faces=faces,
             length=batch.number("stack.rows") * batch.number("stack.row_pitch"),
@@ -239,15 +270,14 @@ def _stream(batch: Batch, side: str, faults: Faults) -> Stream:
         ),
         duct.entrance == "developing",
     )
-    return dataclasses.replace(
-        nothing_flows, mass_flow=mass_flow, fluid=fluid, tables=tables, table_of_case=table_of_case, film=film
-    )
 
 
 def _stack_side(batch: Batch, stream: Stream, module_resistance: FloatArray, segments: int) -> StackSide:
     """One side as the solver takes it."""
     side = stream.name
     place = batch.number("stack.row_pitch") * batch.number("stack.column_pitch")
+    if stream.sink is not None:
+        place = base_area(batch)
     footprint = footprint_area(batch)
     thickness = batch.number(f"{side}.duct.wall_thickness", 0.0)
     conductivity = batch.number(f"{side}.duct.wall_conductivity")
@@ -264,49 +294,8 @@ def _stack_side(batch: Batch, stream: Stream, module_resistance: FloatArray, seg
         fluid=stream.fluid,
         film=stream.film,
         arithmetic=batch.base.stack.row_model == "arithmetic",
+        sink=stream.sink,
     )
-
-
-def footprint_area(batch: Batch) -> FloatArray:
-    """Area of a module's face [m^2], (cases,)."""
-    along, across = batch.base.module.footprint
-    return np.full(batch.cases, along * across)
-
-
-def _curve(batch: Batch, path: str, curve: CaseCurve | None) -> Curve:
-    """Turn a case's curve, or the numbers that vary in its place, into one the solver evaluates."""
-    if path in batch.varied:
-        return PolynomialCurve.constant(batch.number(path))
-    assert curve is not None
-    if curve.kind == "table" and len(curve.values) > 1:
-        return TableCurve(np.array(curve.temperatures), np.array(curve.values))
-    return PolynomialCurve(np.array(curve.values)[:, None] * np.ones(batch.cases))
-
-
-def module_model(batch: Batch) -> tuple[ModuleModel, tuple[MaterialRecord, ...], FloatArray]:
-    """Return the module's model, its materials, and the resistance of one substrate [K/W], (cases,)."""
-    module = batch.base.module
-    if module.legs is None:
-        curves = (
-            _curve(batch, f"module.{name}", getattr(module, name)) for name in ("seebeck", "resistance", "conductance")
-        )
-        return MeanTemperatureModule(*curves), (), np.zeros(batch.cases)
-    materials = (load_material(module.legs.n_material), load_material(module.legs.p_material))
-    couples, length, area = (batch.number(f"module.legs.{name}") for name in ("couples", "length", "area"))
-    free_area = np.maximum(footprint_area(batch) - 2.0 * couples * area, 0.0)
-    model = LegModule(
-        materials[0].material,
-        materials[1].material,
-        couples,
-        length,
-        area,
-        batch.number("module.legs.contact_resistivity", 0.0),
-        batch.number("module.legs.gap_filler", 0.0) * free_area / length,
-    )
-    thickness = batch.number("module.legs.substrate_thickness", 0.0)
-    conductivity = batch.number("module.legs.substrate_conductivity")
-    substrate = np.where(thickness > 0, thickness / (conductivity * footprint_area(batch)), 0.0)
-    return model, materials, substrate
 
 
 def _circuit(batch: Batch, segments: int) -> Circuit:
@@ -359,6 +348,12 @@ def _arrangement_faults(batch: Batch, faults: Faults) -> None:
     faults.add(
         layers % batch.number("electrical.layers_in_series") != 0, "electrical.layers_in_series: must divide layers"
     )
+    for side in ("hot", "cold"):
+        taken = batch.number(f"{side}.duct.width") * batch.number(f"{side}.duct.passages", 1.0)
+        plate = columns * batch.number("stack.column_pitch") * (1.0 + 1e-9)
+        faults.add(taken > plate, f"{side}.duct.width: the passages are wider than the plate; decrease it")
+        if getattr(batch.base, side).duct.kind == RATED:
+            arrangement_faults(batch, side, faults)
     faces = batch.number("hot.duct.faces") + batch.number("cold.duct.faces")
     faults.add(
         (faces > 2) & (layers % 2 != 0), "stack.layers: ducts that serve two layers need an even number of layers"
@@ -366,8 +361,9 @@ def _arrangement_faults(batch: Batch, faults: Faults) -> None:
     faults.add((faces == 4) & (layers < 4), "stack.layers: a repeating stack needs at least 4 layers")
     if batch.base.electrical.row_blocks is not None:
         faults.add(rows != sum(batch.base.electrical.row_blocks), "electrical.row_blocks: must add up to the rows")
+    found = {f"{side}.mass_flow" for side in ("hot", "cold") if batch.given(f"{side}.drive_curve")}
     for path, declaration in DECLARATIONS.items():
-        if path in batch.varied:
+        if path in batch.varied and path not in found:
             number, low, high = batch.varied[path], declaration.minimum, declaration.maximum
             wrong = ~np.isfinite(number)
             if declaration.form == "integer":
@@ -378,6 +374,19 @@ def _arrangement_faults(batch: Batch, faults: Faults) -> None:
             faults.add(wrong, f"{path}: out of range; allowed is {limits_text(declaration) or 'a finite number'}")
 
 
+def _of_cooler_rating(contradiction: Contradiction) -> Callable[[int], str]:
+    return lambda index: f"module.cooler_rating.{contradiction.field}: {contradiction.sentence(index)}"
+
+
+def _no_flow(batch: Batch, side: str) -> str:
+    if getattr(batch.base, side).drive_curve is None:
+        return f"{side}.mass_flow: must be above zero"
+    return (
+        f"{side}.drive_curve: meets the resistance of stack and circuit at none of its flows; the stack takes more "
+        "than the curve gives at its lowest flow, or less than at its highest"
+    )
+
+
 def design(batch: Batch) -> Design:
     """Make a batch ready for the solver; faults of single cases are noted, not raised.
 
@@ -385,26 +394,28 @@ def design(batch: Batch) -> Design:
     """
     faults = Faults(batch.cases)
     _arrangement_faults(batch, faults)
+    arranged = faults.valid
     segments = batch.base.stack.segments
     hot, cold = _stream(batch, "hot", faults), _stream(batch, "cold", faults)
     for stream in (hot, cold):
         if stream.fluid is not None:
-            flow = f"{stream.name}.mass_flow: must be above zero"
-            faults.add(~(stream.mass_flow > 0), flow)
-    model, materials, substrate = module_model(batch)
+            faults.add(~(stream.mass_flow > 0), _no_flow(batch, stream.name))
+    for contradiction in cooler_faults(batch):
+        faults.add(contradiction.where, _of_cooler_rating(contradiction))
+    module = described_module(batch)
     footprint = footprint_area(batch)
     place = batch.number("stack.row_pitch") * batch.number("stack.column_pitch")
     interfaces = tuple(batch.number(f"stack.{side}_interface", 0.0) / footprint for side in ("hot", "cold"))
-    rows = np.where(faults.valid, batch.number("stack.rows"), 1.0).astype(np.int64)
+    rows = np.where(arranged, batch.number("stack.rows"), 1.0).astype(np.int64)
     problem = StackProblem(
         rows=int(rows.max()) * segments,
         active_rows=rows * segments,
-        hot=_stack_side(batch, hot, interfaces[0] + substrate, segments),
-        cold=_stack_side(batch, cold, interfaces[1] + substrate, segments),
+        hot=_stack_side(batch, hot, interfaces[0] + module.substrate_resistance, segments),
+        cold=_stack_side(batch, cold, interfaces[1] + module.substrate_resistance, segments),
         bypass=batch.number("stack.filler_conductance", 0.0) * (place - footprint),
         loss=batch.number("stack.heat_loss_conductance", 0.0) * place,
         ambient_temperature=batch.number("site.ambient_temperature"),
-        module=model,
+        module=module.model,
         circuit=_circuit(batch, segments),
     )
     return Design(
@@ -418,7 +429,6 @@ def design(batch: Batch) -> Design:
         module_count=batch.number("stack.rows") * batch.number("stack.columns") * batch.number("stack.layers"),
         footprint_area=footprint,
         place_area=place,
-        materials=materials,
-        substrate_resistance=substrate,
+        module=module,
         interface_resistance=(interfaces[0], interfaces[1]),
     )

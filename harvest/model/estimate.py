@@ -11,7 +11,8 @@ from harvest.model.assessment import assess
 from harvest.model.batch import Batch
 from harvest.model.case import Case, case_hash
 from harvest.model.checks import PASS, BatchCheck
-from harvest.model.design import Design, Stream, design, maximum_power_load
+from harvest.model.design import BETWEEN, Design, Stream, design, maximum_power_load
+from harvest.model.driven_flow import driven_batch
 from harvest.model.loads import MATCHED, MAXIMUM_POWER, OPEN_CIRCUIT
 from harvest.model.pressure import PressureDrop, pressure_drop, side_drive_power
 from harvest.model.results import SCALARS, Estimate, Estimates, Rows
@@ -23,8 +24,17 @@ from harvest.model.stack import (
     solve_stack,
 )
 from harvest.physics.arrays import FloatArray, IntArray, ObjectArray
+from harvest.physics.films import Film
 from harvest.physics.thermoelectrics import carnot_efficiency, hot_junction_heat
 from harvest.version import VERSION
+
+MOST_APART = 100
+"""Most strings in the ideal that a mismatch is compared with; beyond it, neighbouring rows share one."""
+
+NO_DROP = 1e-9
+"""Drop of a diode that blocks and loses nothing [V]."""
+LEAST_SHARE = 1e-12
+"""Power over heat that counts as none."""
 
 # Gauss-Legendre, five points on -1 to 1, for the integral of cp/T
 _POINTS, _WEIGHTS = np.polynomial.legendre.leggauss(5)
@@ -78,12 +88,12 @@ def terminal_power(problem: StackProblem, state: StackState) -> FloatArray:
 def _side_heat(
     stream: Stream, problem: StackProblem, solution_wall: FloatArray, outlet: FloatArray, share: FloatArray
 ) -> FloatArray:
-    """Heat that a stream gives by its enthalpies, or a reservoir by its film [W], (cases,)."""
+    """Heat that a stream gives by its enthalpies, or a reservoir or sink by its film [W], (cases,)."""
     if stream.fluid is not None:
         ends = stream.fluid.enthalpy(np.stack([stream.inlet_temperature, outlet]))
         return np.asarray(stream.mass_flow * (ends[0] - ends[1]))
     side = problem.hot if stream.name == "hot" else problem.cold
-    conductance = side.film_conductance / (1.0 + side.film_conductance * side.wall_resistance)
+    conductance = side.still_conductance(solution_wall)[0]
     return np.asarray((conductance * (side.inlet_temperature - solution_wall) * share).sum(axis=0))
 
 
@@ -115,8 +125,8 @@ def unfold(made: Design, problem: StackProblem, state: StackState) -> Solution:
         row_current=current,
         module_heat=heat,
         module_power=power,
-        hot_face=state.hot_junction + heat * made.substrate_resistance,
-        cold_face=state.cold_junction - (heat - power) * made.substrate_resistance,
+        hot_face=state.hot_junction + heat * made.module.substrate_resistance,
+        cold_face=state.cold_junction - (heat - power) * made.module.substrate_resistance,
         hot_metal=state.hot_wall + hot_q * problem.hot.wall_resistance,
         cold_metal=state.cold_wall - cold_q * problem.cold.wall_resistance,
         hot_heat=_side_heat(made.hot, problem, state.hot_wall, state.hot_stream[-1], share),
@@ -127,14 +137,17 @@ def unfold(made: Design, problem: StackProblem, state: StackState) -> Solution:
 
 
 def _rows_apart(problem: StackProblem, segments: int) -> StackProblem:
-    """Return the same stack with a converter for every row and nothing lost in leads or diodes."""
-    starts = np.arange(0, problem.rows, segments, dtype=np.int64)
+    """Return the same stack with a converter for every row, or few rows, and nothing lost in leads or diodes."""
+    together = segments * max(1, -(-problem.rows // segments // MOST_APART))
+    starts = np.arange(0, problem.rows, together, dtype=np.int64)
     return dataclasses.replace(problem, circuit=_bare(problem.circuit, starts, independent=True))
 
 
 def _bare(circuit: Circuit, starts: IntArray, independent: bool) -> Circuit:
-    nothing = np.zeros_like(circuit.lead)
-    return dataclasses.replace(circuit, block_starts=starts, lead=nothing, diode_drop=nothing, independent=independent)
+    """Return a circuit that loses nothing in leads and diodes; where there are diodes, they still block."""
+    drop = np.where((circuit.diode_drop > 0) & (not independent), NO_DROP, 0.0)
+    lead = np.zeros_like(circuit.lead)
+    return dataclasses.replace(circuit, block_starts=starts, lead=lead, diode_drop=drop, independent=independent)
 
 
 def _spread_blocks(state: StackState, problem: StackProblem, to: StackProblem) -> StackState:
@@ -153,8 +166,7 @@ def _mismatch(problem: StackProblem, segments: int, load: Load, maximum: StackSt
     apart = _rows_apart(problem, segments)
     state = solve_stack(apart, Load(MAXIMUM_POWER), _spread_blocks(maximum, problem, apart))
     best = np.where(state.converged, terminal_power(apart, state), np.nan)
-    with np.errstate(invalid="ignore", divide="ignore"):
-        return 1.0 - power / best
+    return 1.0 - power / best
 
 
 def _entropy_given(stream: Stream, outlet: FloatArray, heat: FloatArray) -> FloatArray:
@@ -169,6 +181,30 @@ def _entropy_given(stream: Stream, outlet: FloatArray, heat: FloatArray) -> Floa
 
 
 @dataclass(frozen=True)
+class CoolantLost:
+    """The stack settled with its cold stream stopped and the hot one flowing, [K], (cases,)."""
+
+    hot_face: FloatArray
+    cold_wall: FloatArray
+
+
+def _without_coolant(problem: StackProblem) -> CoolantLost:
+    """Solve with the cold film removed: no heat crosses the modules, so no load can draw a current either."""
+    # behind a wall that takes no heat nothing spreads either, whatever its thickness
+    no_heat = dataclasses.replace(problem.cold.constriction, reach=np.ones(problem.cases))
+    cold = dataclasses.replace(
+        problem.cold, fluid=None, film=None, sink=None, film_conductance=np.zeros(problem.cases), constriction=no_heat
+    )
+    state = solve_stack(dataclasses.replace(problem, cold=cold), Load(OPEN_CIRCUIT))
+    active = np.arange(problem.rows)[:, None] < problem.active_rows
+
+    def hottest(values: FloatArray) -> FloatArray:
+        return np.where(state.converged, np.where(active, values, -np.inf).max(axis=0), np.nan)
+
+    return CoolantLost(hottest(state.hot_junction), hottest(state.cold_wall))
+
+
+@dataclass(frozen=True)
 class Solved:
     """All the solutions that an estimate stands on."""
 
@@ -177,6 +213,7 @@ class Solved:
     matched_power: FloatArray
     maximum_power: FloatArray
     open_circuit: Solution
+    coolant_lost: CoolantLost
     mismatch: FloatArray
     hot_drop: PressureDrop
     cold_drop: PressureDrop
@@ -194,8 +231,10 @@ def _solve(made: Design) -> Solved:
     if state is None:
         state = solve_stack(problem, made.load, matched)
     for name, each in (("at its load", state), ("at maximum power", best), ("at matched load", matched)):
-        made.faults.add(~each.converged, f"no solution found {name}; the operating point may not exist")
-    made.faults.add(~opened.converged, "no solution found without current")
+        lost = ~each.converged & made.faults.valid
+        made.faults.add(lost, f"no solution found {name}; the operating point may not exist")
+    found = state.converged & best.converged & matched.converged
+    made.faults.add(found & ~opened.converged, "no solution found without current")
     chosen = unfold(made, problem, state)
     for stream, boundaries in ((made.hot, state.hot_stream), (made.cold, state.cold_stream)):
         _flag_range(made, stream, boundaries)
@@ -215,6 +254,7 @@ def _solve(made: Design) -> Solved:
         terminal_power(problem, matched),
         best_power,
         open_circuit,
+        _without_coolant(problem),
         _mismatch(problem, made.segments, best_load, best, best_power),
         drops[0],
         drops[1],
@@ -235,19 +275,21 @@ def _flag_range(made: Design, stream: Stream, boundaries: FloatArray) -> None:
     lower = np.fmax(stream.table_value("lower"), stream.table_value("lower_limit"))
     upper = np.fmin(stream.table_value("upper"), stream.table_value("upper_limit"))
     beyond = (warmest > upper) | (coldest < lower)
-    made.faults.add(beyond, sentence)
+    made.faults.add(beyond & made.faults.valid, sentence)
 
 
 def _scalars(solved: Solved) -> dict[str, FloatArray]:
     """Scalar results by name, (cases,)."""
     made, chosen, batch = solved.made, solved.chosen, solved.made.batch
     problem, circuit, state = made.problem, made.problem.circuit, solved.chosen.state
-    generated = terminal_power(problem, state)
+    opened_up = made.load.mode == OPEN_CIRCUIT
+    generated = np.zeros(batch.cases) if opened_up else terminal_power(problem, state)
     efficiency = batch.number("electrical.converter_efficiency", 1.0)
-    hot_drive = side_drive_power(batch, made.hot, solved.hot_drop.total)
-    cold_drive = side_drive_power(batch, made.cold, solved.cold_drop.total)
-    converted = efficiency * generated
-    current = circuit.parallel * state.current.sum(axis=0)
+    hot_drive = side_drive_power(batch, made.hot, solved.hot_drop.total, chosen.hot_outlet)
+    cold_drive = side_drive_power(batch, made.cold, solved.cold_drop.total, chosen.cold_outlet)
+    # what the stack draws instead of giving has to come through the converter too
+    converted = np.where(generated >= 0, efficiency * generated, generated / efficiency)
+    current = np.zeros(batch.cases) if opened_up else circuit.parallel * state.current.sum(axis=0)
     voltage = state.string_voltage[0]
     weight = circuit.series * chosen.active
     starts = circuit.block_starts
@@ -277,6 +319,10 @@ def _scalars(solved: Solved) -> dict[str, FloatArray]:
     upper = np.maximum(made.hot.inlet_temperature, made.cold.inlet_temperature)
     lower = np.minimum(made.hot.inlet_temperature, made.cold.inlet_temperature)
     module_heat = chosen.total(chosen.module_heat)
+    # where the hot side is the colder one, the cold side gives the heat
+    heat_in = np.where(chosen.hot_heat >= 0, chosen.hot_heat, -chosen.cold_heat)
+    module_heat_in = np.where(module_heat >= 0, module_heat, generated - module_heat)
+    something = solved.maximum_power > LEAST_SHARE * chosen.heat_scale
     layers = batch.number("stack.layers")
     height = sum(
         (stream.ducts * 1.0) * (_gap(batch, stream) + 2.0 * batch.number(f"{stream.name}.duct.wall_thickness", 0.0))
@@ -301,6 +347,7 @@ def _scalars(solved: Solved) -> dict[str, FloatArray]:
         "open_circuit_voltage": opened,
         "operating_emf": emf,
         "internal_resistance": internal,
+        "lead_loss": in_leads,
         "load_resistance": load_resistance,
         "load_ratio": load_resistance / internal,
         "hot_heat_flow": chosen.hot_heat,
@@ -316,10 +363,10 @@ def _scalars(solved: Solved) -> dict[str, FloatArray]:
         "cold_pressure_drop": solved.cold_drop.total,
         "hot_velocity": _velocity(made.hot),
         "cold_velocity": _velocity(made.cold),
-        "conversion_efficiency": generated / chosen.hot_heat,
-        "module_efficiency": generated / module_heat,
+        "conversion_efficiency": np.where(heat_in > 0, generated / heat_in, np.nan),
+        "module_efficiency": np.where(module_heat_in > 0, generated / module_heat_in, np.nan),
         "carnot_efficiency": carnot_efficiency(upper, lower),
-        "mismatch_loss": solved.mismatch,
+        "mismatch_loss": np.where(something, solved.mismatch, np.nan),
         "module_count": made.module_count,
         "hot_duct_count": made.hot.ducts,
         "cold_duct_count": made.cold.ducts,
@@ -330,13 +377,15 @@ def _scalars(solved: Solved) -> dict[str, FloatArray]:
         "module_mass": made.module_count * batch.number("module.mass"),
         "hottest_face_temperature": chosen.largest(chosen.hot_face),
         "open_circuit_face_temperature": solved.open_circuit.largest(solved.open_circuit.hot_face),
+        "coolant_lost_face_temperature": solved.coolant_lost.hot_face,
         "energy_closure": unclosed / chosen.heat_scale,
         "entropy_generation": entropy,
     }
 
 
 def _gap(batch: Batch, stream: Stream) -> FloatArray:
-    return batch.number(f"{stream.name}.duct.gap") if stream.fluid is not None else np.zeros(batch.cases)
+    still = stream.is_reservoir and stream.sink is None
+    return np.zeros(batch.cases) if still else batch.number(f"{stream.name}.duct.gap")
 
 
 def _of_stream(stream: Stream, value: FloatArray) -> FloatArray:
@@ -345,7 +394,7 @@ def _of_stream(stream: Stream, value: FloatArray) -> FloatArray:
 
 def _velocity(stream: Stream) -> FloatArray:
     """Velocity in the ducts at inlet density [m/s], (cases,)."""
-    if stream.fluid is None or stream.film is None:
+    if stream.fluid is None or not isinstance(stream.film, Film):
         return np.full(len(stream.inlet_temperature), np.nan)
     return np.asarray(stream.film.mass_flux / stream.fluid.density(stream.inlet_temperature[None])[0])
 
@@ -359,7 +408,7 @@ def _rows(made: Design, chosen: Solution) -> dict[str, FloatArray]:
     )
 
     def reynolds(stream: Stream, temperature: FloatArray) -> FloatArray:
-        if stream.fluid is None or stream.film is None:
+        if stream.fluid is None or not isinstance(stream.film, Film):
             return np.full_like(temperature, np.nan)
         return stream.film.reynolds(stream.fluid.viscosity(temperature))
 
@@ -370,6 +419,8 @@ def _rows(made: Design, chosen: Solution) -> dict[str, FloatArray]:
         "cold_junction_temperature": state.cold_junction,
         "cold_face_temperature": chosen.cold_face,
         "cold_stream_temperature": cold,
+        "hot_wall_temperature": chosen.hot_metal,
+        "cold_wall_temperature": chosen.cold_metal,
         "current": chosen.row_current,
         "module_power": chosen.module_power,
         "module_heat_flow": chosen.module_heat,
@@ -385,10 +436,12 @@ def _rows(made: Design, chosen: Solution) -> dict[str, FloatArray]:
 
 def _sources(made: Design) -> tuple[str, ...]:
     """Where the numbers of a batch come from, one line each."""
-    module = made.batch.base.module
+    module, source = made.module, made.batch.base.module.source
     lines = [f"{stream.name} fluid: {table.source}" for stream in (made.hot, made.cold) for table in stream.tables[:1]]
-    lines.append(f"module: {module.source or 'as given in the case'}")
-    lines += [f"material {each.name}: {each.source}" for each in {item.name: item for item in made.materials}.values()]
+    lines.append(f"module: {module.provenance}; {source or 'as given in the case'}")
+    lines += [
+        f"material {each.name}: {each.source}" for each in {item.name: item for item in module.materials}.values()
+    ]
     return tuple(lines)
 
 
@@ -407,24 +460,39 @@ def estimate_batch(batch: Batch, *, grid: bool = False) -> Estimates:
     effect. A case without an answer is NaN throughout and says why in `problem`. Raises InputError for faults of all.
     """
     with np.errstate(all="ignore"):
+        batch = driven_batch(batch)
         made = design(batch)
         wanting = made.faults.valid
         if not wanting.any():
             nan = np.full(batch.cases, np.nan)
             counts = batch.number("stack.rows")
-            return Estimates(dict.fromkeys(SCALARS, nan), {}, counts, (), made.faults.text, _sources(made))
+            return Estimates(dict.fromkeys(SCALARS, nan), {}, counts, (), made.faults.text, ~wanting, _sources(made))
         if not wanting.all():
             which = np.flatnonzero(wanting)
             return _among(estimate_batch(batch.take(which), grid=grid), which, made.faults.text, batch)
         solved = _solve(made)
         scalars = _scalars(solved)
-        effect = _grid_effect(batch, scalars["maximum_power"]) if grid else np.full(batch.cases, np.nan)
-        made.faults.add(~np.isfinite(scalars["net_power"]), "the result is not a finite number")
+        something = solved.maximum_power > LEAST_SHARE * solved.chosen.heat_scale
+        effect = (
+            np.where(something, _grid_effect(batch, solved.maximum_power), np.nan)
+            if grid
+            else np.full(batch.cases, np.nan)
+        )
+        lost = ~np.isfinite(scalars["net_power"]) & made.faults.valid
+        made.faults.add(lost, "the result is not a finite number")
         checks = assess(solved, scalars, effect)
         valid = made.faults.valid
         scalars = {name: np.where(valid, value, np.nan) for name, value in scalars.items()}
         rows = {name: np.where(valid, value, np.nan) for name, value in _rows(made, solved.chosen).items()}
-    return Estimates(scalars, rows, batch.number("stack.rows"), checks, made.faults.text, _sources(made))
+    return Estimates(
+        scalars,
+        rows,
+        batch.number("stack.rows"),
+        checks,
+        made.faults.text,
+        np.zeros(batch.cases, dtype=bool),
+        _sources(made),
+    )
 
 
 def _among(answers: Estimates, which: IntArray, problem: ObjectArray, batch: Batch) -> Estimates:
@@ -455,6 +523,7 @@ def _among(answers: Estimates, which: IntArray, problem: ObjectArray, batch: Bat
         batch.number("stack.rows"),
         tuple(spread_check(check) for check in answers.checks),
         problem,
+        ~np.isin(np.arange(batch.cases), which),
         answers.sources,
     )
 
@@ -477,6 +546,8 @@ def estimate(case: Case) -> Estimate:
         checks=tuple(check.of(0) for check in answers.checks) if valid else (),
         valid=valid,
         problem=str(answers.problem[0]),
+        faults=tuple(answers.problem[0].split(BETWEEN)) if not valid else (),
+        bad_input=bool(answers.bad_input[0]),
         sources=answers.sources,
         version=VERSION,
         case_hash=case_hash(case),

@@ -15,6 +15,8 @@ from harvest.physics.combustion import water_dew_point
 from harvest.physics.fluids import FLUIDS, FluidBatch, FluidSpec, expansion_range
 from harvest.quantities import parse_quantity, unit_of
 
+STANDARD_ATMOSPHERE = 101325.0
+"""What a gauge pressure adds to where there is no site [Pa]."""
 COMPOSITION = ("mass_fraction", "volume_fraction", "excess_air_ratio", "dry_oxygen", "intake_humidity")
 PROPERTY_KINDS = {
     "temperature": "temperature",
@@ -53,9 +55,10 @@ class FluidSheet:
         return {name: unit_of(kind) for name, kind in PROPERTY_KINDS.items()}
 
 
-def _number(name: str, given: str | float, kind: str) -> float:
+def quantity_of(name: str, given: str | float, kind: str) -> float:
+    """SI value of an option's text; raises InputError that names the option."""
     try:
-        return parse_quantity(given, kind)
+        return parse_quantity(given, kind, ambient_pressure=STANDARD_ATMOSPHERE)
     except QuantityError as error:
         raise InputError(f"{name}: {error}") from None
 
@@ -81,9 +84,9 @@ def fluid(
     unknown = sorted(set(composition) - set(COMPOSITION))
     if unknown:
         raise InputError(f"fluid: {unknown[0]!r} is not part of a composition; known are {', '.join(COMPOSITION)}")
-    pascal = _number("pressure", pressure, "pressure") if isinstance(pressure, str) else pressure
-    kelvin = np.array([_number("at", each, "temperature") if isinstance(each, str) else each for each in at])
-    numbers: dict[str, Any] = {key: _number(key, value, "dimensionless") for key, value in composition.items()}
+    pascal = quantity_of("pressure", pressure, "pressure") if isinstance(pressure, str) else pressure
+    kelvin = np.array([quantity_of("at", each, "temperature") if isinstance(each, str) else each for each in at])
+    numbers: dict[str, Any] = {key: quantity_of(key, value, "dimensionless") for key, value in composition.items()}
     spec = FluidSpec(name=name, fuel=fuel, **numbers)
     span = kelvin if kelvin.size else np.array([300.0])
     lower, upper = expansion_range(name, np.array([span.min()]), np.array([span.max()]))

@@ -3,20 +3,27 @@
 from __future__ import annotations
 
 import copy
+import dataclasses
 import functools
 import itertools
 import math
 import numbers
+import re
 from collections.abc import Mapping, Sequence
 from pathlib import Path
-from typing import Any, NamedTuple
+from typing import Any, NamedTuple, TypeVar
 
 from harvest.errors import CaseError, InputError, QuantityError
 from harvest.model.case import (
     DECLARATIONS,
+    HEAT_SINK,
     Case,
     Curve,
+    FlowCurve,
     FluidRows,
+    Side,
+    Streams,
+    StreamSide,
     limits_text,
     nearest_field,
     nearest_name,
@@ -25,21 +32,25 @@ from harvest.model.case_fields import REQUIRED, Declaration, declared, walk
 from harvest.model.case_rules import (
     ALTERNATIVES,
     CURVES,
+    MODULE_WAYS,
     UnknownValueError,
     Values,
     applies,
     broken_rules,
     selector_path,
+    without_effect,
 )
 from harvest.model.case_text import bounded_text, key_lines, toml_document, toml_value
 from harvest.quantities import (
     HIGHEST_DEGREE,
     KINDS,
+    EnergyPrice,
     StandardVolumeFlow,
     example_of,
     from_pint,
     is_pint_quantity,
     one_line,
+    parse_energy_price,
     parse_quantity,
     parse_standard_volume_flow,
     per_kelvin,
@@ -49,7 +60,6 @@ from harvest.quantities import (
 
 OPTION = "--set"
 DATA = Path(__file__).parents[1] / "data"
-LATER = {"cooler_rating", "generator_rating"}
 FLUID_COLUMNS = {
     "temperature": "temperature",
     "density": "density",
@@ -60,6 +70,11 @@ FLUID_COLUMNS = {
 CONSTANT_FLUID_TEMPERATURE = 300.0
 MOST_CURVE_POINTS = 1000
 MOST_SUGGESTIONS = 50
+LARGEST_EXPONENT = 4.0
+NOT_JUDGED: dict[type, type] = {Streams: Case, StreamSide: Side}
+"""Sections that are read in part, with the section whose other fields may stand there without being judged."""
+AnyStreams = TypeVar("AnyStreams", bound=Streams)
+_PLACE = re.compile(r"\[[0-9]{1,6}\]")
 
 
 class Origin(NamedTuple):
@@ -80,14 +95,23 @@ def load_case(source: str | Path, overrides: Sequence[str] = ()) -> Case:
     `overrides` are texts "hot.mass_flow=0.4 kg/s" that go before what the file says.
     Raises CaseError with all faults, one line each.
     """
+    return _loaded(Case, source, overrides)
+
+
+def load_streams(source: str | Path, overrides: Sequence[str] = ()) -> Streams:
+    """Read the streams of a case file as `load_case`; what is built between them may be missing and is not judged."""
+    return _loaded(Streams, source, overrides)
+
+
+def _loaded(kind: type[AnyStreams], source: str | Path, overrides: Sequence[str]) -> AnyStreams:
     if isinstance(source, str) and "\n" in source:
-        return read_case(source, overrides)
+        return _read(kind, source, overrides)
     path = Path(source)
     try:
         text = bounded_text(path)
     except InputError as error:
         raise CaseError([str(error)]) from None
-    return read_case(text, overrides, label=str(source), folder=path.parent)
+    return _read(kind, text, overrides, label=str(source), folder=path.parent)
 
 
 def read_case(text: str, overrides: Sequence[str] = (), *, label: str = "case", folder: Path | None = None) -> Case:
@@ -95,6 +119,19 @@ def read_case(text: str, overrides: Sequence[str] = (), *, label: str = "case", 
 
     Raises CaseError with all faults, one line each.
     """
+    return _read(Case, text, overrides, label=label, folder=folder)
+
+
+def read_streams(
+    text: str, overrides: Sequence[str] = (), *, label: str = "case", folder: Path | None = None
+) -> Streams:
+    """Read the streams of a case file's text as `read_case`; what is built between them is not judged."""
+    return _read(Streams, text, overrides, label=label, folder=folder)
+
+
+def _read(
+    kind: type[AnyStreams], text: str, overrides: Sequence[str], *, label: str = "case", folder: Path | None = None
+) -> AnyStreams:
     if not text.strip():
         raise CaseError([f'{label}: is empty; a case begins for example with [hot] and fluid = "water"'])
     try:
@@ -113,7 +150,7 @@ def read_case(text: str, overrides: Sequence[str] = (), *, label: str = "case", 
         except InputError as error:
             faults.append(f"{OPTION} {error}")
     try:
-        case = case_from(document, label=label, folder=folder, origins=origins)
+        case = _from(kind, document, label=label, folder=folder, origins=origins)
     except CaseError as error:
         raise CaseError([*error.faults, *faults]) from None
     if faults:
@@ -129,17 +166,30 @@ def case_from(
     origins: Mapping[str, Origin] | None = None,
 ) -> Case:
     """Validate a nested mapping that is laid out as a case file; raises CaseError with all faults."""
+    return _from(Case, document, label=label, folder=folder, origins=origins)
+
+
+def _from(
+    kind: type[AnyStreams],
+    document: Mapping[str, Any],
+    *,
+    label: str = "case",
+    folder: Path | None = None,
+    origins: Mapping[str, Origin] | None = None,
+) -> AnyStreams:
     given = copy.deepcopy(dict(document))
     reading = _Reading(label, folder or Path(), dict(origins or {}))
-    reading.read(given)
+    reading.read(given, kind)
     if reading.faults:
         raise CaseError([origin.fault(path, message) for origin, path, message in reading.in_order()])
-    case: Case = _built(Case, "", reading.values, given=given, assumed=tuple(reading.assumed), folder=reading.folder)
+    case: AnyStreams = _built(
+        kind, "", reading.values, given=given, assumed=tuple(reading.assumed), folder=reading.folder
+    )
     return case
 
 
-def replace(case: Case, changes: Mapping[str, Any]) -> Case:
-    """Make a validated case with other values, by path: SI numbers, texts with units, or pint quantities.
+def replace(case: AnyStreams, changes: Mapping[str, Any]) -> AnyStreams:
+    """Make a validated case, or streams, with other values, by path: SI numbers, texts with units, or pint quantities.
 
     Raises CaseError with all faults.
     """
@@ -154,17 +204,20 @@ def replace(case: Case, changes: Mapping[str, Any]) -> Case:
             faults.append(str(error))
     if faults:
         raise CaseError(faults)
-    return case_from(document, folder=case.folder)
+    return _from(type(case), document, folder=case.folder)
 
 
 def _put(document: dict[str, Any], path: str, value: Any) -> None:
     """Set a value in a document; what is an alternative to it goes."""
-    if path not in DECLARATIONS and not path.startswith(("size.", "sweep.")):
+    if _PLACE.sub("", path) not in DECLARATIONS and not path.startswith(("size.", "sweep.")):
         raise InputError(f"{one_line(path)}: unknown field; {nearest_field(path[:60])}")
     *parents, name = path.split(".", 1) if path.startswith("sweep.") else path.split(".")
     table = document
     for parent in parents:
-        table = table.setdefault(parent, {})
+        if _PLACE.search(parent):
+            table = _listed(table, parent)
+        else:
+            table = table.setdefault(parent, {})
         if not isinstance(table, dict):
             raise InputError(f"{path}: {parent} is not a table in the case")
     table[name] = value
@@ -173,6 +226,21 @@ def _put(document: dict[str, Any], path: str, value: Any) -> None:
             for other in alternatives:
                 if other != path:
                     table.pop(other.rpartition(".")[2], None)
+
+
+def _inside(document: Mapping[str, Any], *names: str) -> Any:
+    """Value inside of tables in a document; None where there is none."""
+    value: Any = document
+    for name in names:
+        value = value.get(name) if isinstance(value, Mapping) else None
+    return value
+
+
+def _listed(table: dict[str, Any], name: str) -> Any:
+    """Table of a list of tables by its place, such as "generator_rating[2]"; None if there is none."""
+    listed, _, place = name.rstrip("]").partition("[")
+    tables = table.get(listed)
+    return tables[int(place) - 1] if isinstance(tables, list) and 1 <= int(place) <= len(tables) else None
 
 
 def _as_typed(path: str, value: Any) -> Any:
@@ -187,10 +255,17 @@ def _as_typed(path: str, value: Any) -> Any:
             [f"{t!r} K", f"{v!r} {unit_of(declaration.kind)}"]
             for t, v in zip(value.temperatures, value.values, strict=True)
         ]
-    if isinstance(value, StandardVolumeFlow):
+    if isinstance(value, FlowCurve):
+        return [
+            [f"{float(flow)!r} m^3/s", f"{float(each)!r} {unit_of(declaration.kind)}"]
+            for flow, each in zip(value.flows, value.values, strict=True)
+        ]
+    if isinstance(value, StandardVolumeFlow | EnergyPrice):
         return str(value)
     if isinstance(value, tuple | list):
         return [_as_typed(path, each) for each in value]
+    if declaration.form == "tables" and dataclasses.is_dataclass(value):
+        return {name: _as_typed(f"{path}.{name}", each) for name, each in vars(value).items() if each is not None}
     if is_pint_quantity(value):
         value = from_pint(value, declaration.kind)
     if isinstance(value, numbers.Integral):
@@ -207,7 +282,7 @@ def _built(owner: type, prefix: str, values: Values, **more: Any) -> Any:
     items = {}
     for name, declaration in declared(owner):
         path = prefix + name
-        if declaration.section is None:
+        if declaration.section is None or declaration.form == "tables":
             items[name] = values[path]
         elif declaration.optional and values[path] is None:
             items[name] = None
@@ -227,11 +302,16 @@ class _Reading:
         self.assumed: list[str] = []
         self.faults: list[tuple[Origin, str, str]] = []
 
-    def read(self, document: Mapping[str, Any]) -> None:
-        """Judge every field, then the rules between them."""
-        self.section(Case, "", document)
+    def read(self, document: Mapping[str, Any], kind: type[Streams] = Case) -> None:
+        """Judge every field of a case, or of its streams, then the rules between them."""
+        self.values.faulty.update(DECLARATIONS.keys() - dict(walk(kind)).keys())  # so that no rule asks for the rest
+        self.section(kind, "", document)
+        if kind is Streams and _inside(document, "cold", "duct", "kind") == HEAT_SINK:
+            self.values["cold.duct.kind"] = HEAT_SINK  # the one part of a duct that decides whether there is a flow
         for path, message in broken_rules(self.values):
             self.fault(path, message)
+        nothing_assumed = without_effect(self.values)
+        self.assumed = [path for path in self.assumed if path not in nothing_assumed]
 
     def in_order(self) -> list[tuple[Origin, str, str]]:
         """Faults in the order of the file's lines, options last, without repetitions."""
@@ -247,25 +327,49 @@ class _Reading:
         if path in self.origins:
             return self.origins[path]
         while path:
-            path = path.rpartition(".")[0]
+            is_place = path.endswith("]") and _PLACE.search(path)
+            path = path.rpartition("[" if is_place else ".")[0]
             if path in self.origins and self.origins[path].label != OPTION:
                 return self.origins[path]
         return Origin(self.label)
 
     def section(self, owner: type, prefix: str, table: Mapping[str, Any]) -> None:
         known = dict(declared(owner))
+        may_stand = dict(declared(NOT_JUDGED.get(owner, owner)))
         for name in table:
-            if name not in known:
-                self.unknown(prefix, str(name), list(known))
+            if name not in may_stand:
+                self.unknown(prefix, str(name), list(may_stand))
         for name, declaration in known.items():
             path = prefix + name
             if declaration.section is None:
                 self.field(path, declaration, table.get(name))
+            elif declaration.form == "tables":
+                self.tables(path, declaration, table.get(name))
             elif isinstance(inside := table.get(name, {}), Mapping):
                 self.subsection(path, declaration, inside, name in table)
             else:
                 self.fault(path, f"is a section; write [{path}] and its fields below it")
                 self.give_up(path, declaration)
+
+    def tables(self, path: str, declaration: Declaration, raw: Any) -> None:
+        """Judge each table of a list of tables by its place."""
+        assert declaration.section is not None
+        if raw is None:
+            self.values[path] = None
+            return
+        if not isinstance(raw, list | tuple) or not raw or not all(isinstance(each, Mapping) for each in raw):
+            self.fault(path, f"is a list of tables; write [[{path}]] and its fields below it, once for each")
+            return
+        if len(raw) > MOST_CURVE_POINTS:
+            self.fault(path, f"has {len(raw)} tables; give at most {MOST_CURVE_POINTS}")
+            return
+        places = [f"{path}[{number}]." for number in range(1, len(raw) + 1)]
+        for place, table in zip(places, raw, strict=True):
+            self.section(declaration.section, place, table)
+        try:
+            self.values[path] = tuple(_built(declaration.section, place, self.values) for place in places)
+        except UnknownValueError:
+            self.values.faulty.add(path)
 
     def subsection(self, path: str, declaration: Declaration, inside: Mapping[str, Any], is_there: bool) -> None:
         assert declaration.section is not None
@@ -300,9 +404,7 @@ class _Reading:
 
     def unknown(self, prefix: str, name: str, known: list[str]) -> None:
         path = prefix + name
-        if prefix == "module." and name in LATER:
-            message = "is not available yet; give seebeck, resistance and conductance, or [module.legs]"
-        elif len(self.faults) > MOST_SUGGESTIONS:  # finding the nearest name takes a millisecond
+        if len(self.faults) > MOST_SUGGESTIONS:  # finding the nearest name takes a millisecond
             message = "unknown field"
         else:
             message = f"unknown field; {nearest_name(name[:60], known)}"
@@ -345,13 +447,15 @@ class _Reading:
             if not asked:
                 return None
             raise QuantityError(f"is missing; {_how_to_write(declaration)}")
-        if asked:
+        if asked and not _PLACE.search(path):
             self.assumed.append(path)
         if declaration.default_from:
             return self.values[declaration.default_from]
         if declaration.default_by is not None and asked:
             selector, defaults = declaration.default_by
             return defaults[self.values[selector_path(selector, path, self.values)]]
+        if declaration.form == "choice" and not asked:
+            return None
         return declaration.default
 
     def value(self, path: str, declaration: Declaration, raw: Any) -> Any:
@@ -381,8 +485,12 @@ class _Reading:
             return tuple(_integer(declaration, each) for each in raw)
         if form == "standard volume flow":
             return parse_standard_volume_flow(raw)
+        if form == "energy price":
+            return parse_energy_price(raw)
         if form == "curve":
             return _curve(declaration, raw)
+        if form == "flow curve":
+            return _flow_curve(declaration, raw)
         if form == "fluid table":
             return _fluid_rows(raw, self.folder)
         return self.axes(path, raw)
@@ -418,12 +526,15 @@ class _Reading:
         state = path.stat()
         record, lines = _record(path, state.st_mtime_ns, state.st_size)
         self.origins = {**{f"module.{key}": Origin(path.name, line) for key, line in lines.items()}, **self.origins}
-        if "legs" in module:
-            record = {name: value for name, value in record.items() if f"module.{name}" not in CURVES}
-        legs, record_legs = module.get("legs", {}), record.get("legs", {})
-        if isinstance(legs, Mapping) and (legs or record_legs):
-            return {**record, **module, "legs": {**record_legs, **legs}}
-        return {**record, **module}
+        own = [way for way in MODULE_WAYS if way in module]
+        if own:
+            others = {*MODULE_WAYS, *(path.rpartition(".")[2] for path in CURVES)} - {*own}
+            record = {name: value for name, value in record.items() if name not in others}
+        merged = {**record, **module}
+        for way in own:
+            if isinstance(inside := module[way], Mapping) and isinstance(below := record.get(way), Mapping):
+                merged[way] = {**below, **inside}
+        return merged
 
 
 @functools.lru_cache(32)
@@ -525,6 +636,49 @@ def _curve_table(declaration: Declaration, raw: Sequence[Any]) -> Curve:
     return Curve("table", values, temperatures)
 
 
+def _flow_curve(declaration: Declaration, raw: Any) -> FlowCurve:
+    """Pairs of flow and value, or a power law between two flows where a value cannot be zero."""
+    kind, is_drive = declaration.kind, declaration.minimum is not None
+    how = f'[["2 L/min", "{example_of(kind)}"], ...]'
+    if isinstance(raw, Mapping) and not is_drive:
+        return _power_law(declaration, raw)
+    if not isinstance(raw, list | tuple) or not 2 <= len(raw) <= MOST_CURVE_POINTS:
+        raise QuantityError(f"is not a list of 2 to {MOST_CURVE_POINTS} pairs of flow and value such as {how}")
+    if any(not isinstance(pair, list | tuple) or len(pair) != 2 for pair in raw):
+        raise QuantityError(f"is not a list of pairs such as {how}")
+    flows = tuple(parse_quantity(pair[0], "volume flow") for pair in raw)
+    values = tuple(parse_quantity(pair[1], kind) for pair in raw)
+    for lower, upper, pair in zip((-1.0 if is_drive else 0.0, *flows), flows, raw, strict=False):
+        if lower >= upper or upper < 0:
+            raise QuantityError(
+                f"its flows do not rise from above zero: {shown(pair[0])} is not more than the one before"
+            )
+    for pair, value in zip(raw, values, strict=True):
+        _within(declaration, value, pair[1])
+    for first, second in itertools.pairwise(range(len(values)) if is_drive else ()):
+        if values[first] <= values[second]:
+            raise QuantityError(
+                f"its pressure does not fall from {shown(raw[first][1])} to {shown(raw[second][1])}; give the stable "
+                "part of the curve"
+            )
+    return FlowCurve(flows, values)
+
+
+def _power_law(declaration: Declaration, raw: Mapping[str, Any]) -> FlowCurve:
+    """Two points of a power law, at the ends of its range: between points a rated curve is a power law anyway."""
+    names = ("flow", "value", "exponent", "from", "to")
+    if set(raw) != set(names):
+        raise QuantityError(f"is a power law and needs {', '.join(names)}, and nothing else")
+    at, low, high = (parse_quantity(raw[name], "volume flow") for name in ("flow", "from", "to"))
+    value, exponent = parse_quantity(raw["value"], declaration.kind), parse_quantity(raw["exponent"], "dimensionless")
+    if not 0 < low < high or at <= 0:
+        raise QuantityError("needs flows above zero and its from below its to")
+    if abs(exponent) > LARGEST_EXPONENT:
+        raise QuantityError(f"its exponent {exponent:g} is not between -{LARGEST_EXPONENT:g} and {LARGEST_EXPONENT:g}")
+    _within(declaration, value, raw["value"])
+    return FlowCurve((low, high), (value * (low / at) ** exponent, value * (high / at) ** exponent))
+
+
 def _ascending(temperatures: Sequence[float]) -> None:
     for lower, upper in itertools.pairwise((0.0, *temperatures)):
         if lower >= upper:
@@ -585,7 +739,7 @@ def _csv_columns(path: Path) -> dict[str, list[str]]:
 def _how_to_write(declaration: Declaration) -> str:
     if declaration.form == "choice":
         return f"give one of {', '.join(declaration.choices)}"
-    if declaration.form in ("quantity", "standard volume flow"):
+    if declaration.form in ("quantity", "standard volume flow", "energy price"):
         example = example_of(declaration.kind)
         return f"give for example {example}" if KINDS[declaration.kind].bare else f'give for example "{example}"'
     if declaration.form == "pair":

@@ -29,6 +29,8 @@ class Rows:
     cold_junction_temperature: FloatArray = _result("temperature", "Temperature of the cold junctions.")
     cold_face_temperature: FloatArray = _result("temperature", "Temperature of the modules' cold faces.")
     cold_stream_temperature: FloatArray = _result("temperature", "Mean temperature of the cold stream in the row.")
+    hot_wall_temperature: FloatArray = _result("temperature", "Temperature of the wall that the hot stream wets.")
+    cold_wall_temperature: FloatArray = _result("temperature", "Temperature of the wall that the cold stream wets.")
     current: FloatArray = _result("current", "Current through each module.")
     module_power: FloatArray = _result("power", "Electrical power of one module.")
     module_heat_flow: FloatArray = _result("power", "Heat that enters one module's hot face.")
@@ -45,13 +47,16 @@ class Estimate:
     hot_drive_power: float = _result("power", "Power that drives the hot stream through the stack.")
     cold_drive_power: float = _result("power", "Power that drives the cold stream through the stack.")
     net_power: float = _result("power", "Converted power less converter standby, auxiliaries and both drives.")
-    matched_load_power: float = _result("power", "Power with the load resistance equal to the internal resistance.")
+    matched_load_power: float = _result(
+        "power", "Power with load resistance equal to internal resistance, whatever the converter's window."
+    )
     maximum_power: float = _result("power", "Largest power of any load, temperatures reacting, within the window.")
     current: float = _result("current", "Current at the terminals.")
     voltage: float = _result("voltage", "Voltage at the terminals.")
     open_circuit_voltage: float = _result("voltage", "Voltage without current, temperatures settled.")
     operating_emf: float = _result("voltage", "Sum of Seebeck voltages at operating temperatures.")
     internal_resistance: float = _result("resistance", "Operating emf less voltage, over current.")
+    lead_loss: float = _result("power", "Power lost in leads and blocking diodes, before the terminals.")
     load_resistance: float = _result("resistance", "Voltage over current.")
     load_ratio: float = _result("dimensionless", "Load resistance over internal resistance.")
     hot_heat_flow: float = _result("power", "Heat that the hot side gives, bypass and loss included.")
@@ -71,7 +76,8 @@ class Estimate:
     module_efficiency: float = _result("dimensionless", "Generated power over heat through the modules.")
     carnot_efficiency: float = _result("dimensionless", "Carnot efficiency between the inlet temperatures.")
     mismatch_loss: float = _result(
-        "dimensionless", "One less maximum power over the maximum with every row on its own."
+        "dimensionless",
+        "One less maximum power over that of every row on its own; leads, drops and window left out.",
     )
     module_count: float = _result("dimensionless", "Modules in the stack.")
     hot_duct_count: float = _result("dimensionless", "Full ducts to build on the hot side.")
@@ -83,6 +89,9 @@ class Estimate:
     module_mass: float = _result("mass", "Mass of the modules alone; NaN without the module's mass.")
     hottest_face_temperature: float = _result("temperature", "Highest hot face temperature at the chosen load.")
     open_circuit_face_temperature: float = _result("temperature", "Highest hot face temperature without current.")
+    coolant_lost_face_temperature: float = _result(
+        "temperature", "Highest hot face temperature when the cold stream stops and the hot one goes on."
+    )
     energy_closure: float = _result("dimensionless", "Unclosed part of the heat flow, from the reported outlets.")
     entropy_generation: float = _result("conductance", "Entropy that the stack generates per time.")
 
@@ -90,6 +99,8 @@ class Estimate:
     checks: tuple[Check, ...]
     valid: bool
     problem: str
+    faults: tuple[str, ...]
+    bad_input: bool
     sources: tuple[str, ...]
     version: str
     case_hash: str
@@ -105,13 +116,17 @@ UNITS: dict[str, str] = {
 
 @dataclass(frozen=True)
 class Estimates:
-    """Answers of a batch: `scalars` (cases,) and `rows` (rows, cases) by result name; `problem` is "" where valid."""
+    """Answers of a batch: `scalars` (cases,) and `rows` (rows, cases) by result name.
+
+    `problem` (cases,) is "" where valid; `bad_input` (cases,) where the input is at fault.
+    """
 
     scalars: dict[str, FloatArray]
     rows: dict[str, FloatArray]
     row_counts: FloatArray
     checks: tuple[BatchCheck, ...]
     problem: ObjectArray
+    bad_input: BoolArray
     sources: tuple[str, ...]
 
     @property

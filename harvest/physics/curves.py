@@ -74,3 +74,22 @@ class TableCurve:
     def take(self, which: IntArray) -> TableCurve:
         """Return itself: the table is shared."""
         return self
+
+
+@dataclass(frozen=True)
+class HeldCurve:
+    """A curve within its range, held constant below `lower` and above `upper` [K]."""
+
+    curve: Curve
+    lower: float
+    upper: float
+
+    def value_and_slope(self, temperature: FloatArray) -> tuple[FloatArray, FloatArray]:
+        """Value and derivative; no slope outside of the range."""
+        at = np.clip(temperature, self.lower, self.upper)
+        value, slope = self.curve.value_and_slope(at)
+        return value, np.where(at == temperature, slope, 0.0)
+
+    def take(self, which: IntArray) -> HeldCurve:
+        """Return the curve of a subset of cases."""
+        return HeldCurve(self.curve.take(which), self.lower, self.upper)

@@ -106,7 +106,9 @@ class FluidLimits:
         lowest = self.lower_limit if below else self.data_lower
         reason, advice = (self.lower_reason, self.lower_advice) if below else (self.upper_reason, self.upper_advice)
         text = f"{temperature:.6g} K is outside {lowest:.6g} to {self.upper_limit:.6g} K for {self.label} ({reason})"
-        return f"{text}; {advice}" if advice else text
+        celsius = [round(each - 273.15, 1) + 0.0 for each in (temperature, lowest, self.upper_limit)]
+        text = f"{text}; {advice}" if advice else text
+        return text + "; in degC {:g}, allowed {:g} to {:g}".format(*celsius)
 
 
 @dataclass(frozen=True, kw_only=True, eq=False)

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
-from typing import Protocol
+from typing import NamedTuple, Protocol
 
 import numpy as np
 
@@ -100,13 +100,30 @@ def efficiency_at_load_ratio(
     )
 
 
+class JunctionParameters(NamedTuple):
+    """Parameters of a module at its junction temperatures, and their derivatives, shape (..., cases).
+
+    The `_slope`s are by the mean of the two junction temperatures, the `_spread`s by half their difference [per K].
+    """
+
+    seebeck: FloatArray
+    resistance: FloatArray
+    conductance: FloatArray
+    seebeck_slope: FloatArray
+    resistance_slope: FloatArray
+    conductance_slope: FloatArray
+    seebeck_spread: FloatArray
+    resistance_spread: FloatArray
+    conductance_spread: FloatArray
+
+
 class ModuleModel(Protocol):
-    """Parameters of a module at given junction temperatures, and their change when both junctions warm together."""
+    """Parameters of a module at given junction temperatures, with how they change with them."""
 
     def parameters(
         self, hot_junction_temperature: FloatArray, cold_junction_temperature: FloatArray
-    ) -> tuple[FloatArray, FloatArray, FloatArray, FloatArray, FloatArray, FloatArray]:
-        """Seebeck [V/K], resistance [ohm], conductance [W/K], then their slopes [per K], shape (..., cases)."""
+    ) -> JunctionParameters:
+        """Return parameters and derivatives at junction temperatures [K], shape (..., cases)."""
 
     def take(self, which: IntArray) -> ModuleModel:
         """Return the model of a subset of cases."""
@@ -122,13 +139,16 @@ class MeanTemperatureModule:
 
     def parameters(
         self, hot_junction_temperature: FloatArray, cold_junction_temperature: FloatArray
-    ) -> tuple[FloatArray, FloatArray, FloatArray, FloatArray, FloatArray, FloatArray]:
-        """Return the parameters and slopes at the mean junction temperature; see `ModuleModel`."""
+    ) -> JunctionParameters:
+        """Return the parameters at the mean junction temperature; see `ModuleModel`."""
         mean = 0.5 * (hot_junction_temperature + cold_junction_temperature)
         seebeck, seebeck_slope = self.seebeck.value_and_slope(mean)
         resistance, resistance_slope = self.resistance.value_and_slope(mean)
         conductance, conductance_slope = self.conductance.value_and_slope(mean)
-        return seebeck, resistance, conductance, seebeck_slope, resistance_slope, conductance_slope
+        none = np.zeros_like(mean)
+        return JunctionParameters(
+            seebeck, resistance, conductance, seebeck_slope, resistance_slope, conductance_slope, none, none, none
+        )
 
     def take(self, which: IntArray) -> MeanTemperatureModule:
         """Return the model of a subset of cases."""
@@ -171,39 +191,47 @@ class LegModule:
 
     def parameters(
         self, hot_junction_temperature: FloatArray, cold_junction_temperature: FloatArray
-    ) -> tuple[FloatArray, FloatArray, FloatArray, FloatArray, FloatArray, FloatArray]:
-        """Return the zero-current averages and their slopes; see `ModuleModel`."""
+    ) -> JunctionParameters:
+        """Return the zero-current averages and their derivatives; see `ModuleModel`."""
         mean = 0.5 * (hot_junction_temperature + cold_junction_temperature)
         half = 0.5 * (hot_junction_temperature - cold_junction_temperature)
-        zero = np.zeros_like(mean)
-        seebeck, seebeck_slope, conductance, conductance_slope = zero, zero, zero, zero
-        resistance, resistance_slope = zero, zero
+        # rows: value, derivative by the mean, derivative by half the difference
+        seebeck, conductance, resistance = np.zeros((3, 3, *mean.shape))
         for sign, material in ((-1.0, self.n_material), (1.0, self.p_material)):
-            mean_k, mean_k_slope, mean_rk, mean_rk_slope = zero, zero, zero, zero
+            mean_k, mean_rk = np.zeros((2, 3, *mean.shape))
             for offset, weight in zip(_GAUSS_OFFSETS, _GAUSS_WEIGHTS, strict=True):
                 temperature = mean + offset * half
                 alpha, alpha_slope = material.seebeck.value_and_slope(temperature)
                 rho, rho_slope = material.resistivity.value_and_slope(temperature)
                 k, k_slope = material.conductivity.value_and_slope(temperature)
-                seebeck = seebeck + sign * weight * alpha
-                seebeck_slope = seebeck_slope + sign * weight * alpha_slope
-                mean_k = mean_k + weight * k
-                mean_k_slope = mean_k_slope + weight * k_slope
-                mean_rk = mean_rk + weight * rho * k
-                mean_rk_slope = mean_rk_slope + weight * (rho_slope * k + rho * k_slope)
-            conductance = conductance + mean_k
-            conductance_slope = conductance_slope + mean_k_slope
-            leg = mean_rk / mean_k
-            resistance = resistance + leg
-            resistance_slope = resistance_slope + (mean_rk_slope - leg * mean_k_slope) / mean_k
-        along, across = self.couples * self.length / self.area, self.couples * self.area / self.length
-        return (
-            self.couples * seebeck,
-            along * resistance + self.couples * 4.0 * self.contact_resistivity / self.area,
-            across * conductance + self.filler_conductance,
-            self.couples * seebeck_slope,
-            along * resistance_slope,
-            across * conductance_slope,
+                product_slope = rho_slope * k + rho * k_slope
+                for total, value, slope, factor in (
+                    (seebeck, alpha, alpha_slope, sign * weight),
+                    (mean_k, k, k_slope, weight),
+                    (mean_rk, rho * k, product_slope, weight),
+                ):
+                    total[0] += factor * value
+                    total[1] += factor * slope
+                    total[2] += (factor * offset) * slope
+            conductance += mean_k
+            leg = mean_rk[0] / mean_k[0]
+            resistance[0] += leg
+            resistance[1:] += (mean_rk[1:] - leg * mean_k[1:]) / mean_k[0]
+        seebeck *= self.couples
+        resistance *= self.couples * self.length / self.area
+        conductance *= self.couples * self.area / self.length
+        resistance[0] += self.couples * 4.0 * self.contact_resistivity / self.area
+        conductance[0] += self.filler_conductance
+        return JunctionParameters(
+            seebeck[0],
+            resistance[0],
+            conductance[0],
+            seebeck[1],
+            resistance[1],
+            conductance[1],
+            seebeck[2],
+            resistance[2],
+            conductance[2],
         )
 
     def take(self, which: IntArray) -> LegModule:

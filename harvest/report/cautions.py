@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from harvest.model.case import Case
+from harvest.model.case import HEAT_SINK, Case
 from harvest.model.results import Estimate
 from harvest.quantities import format_quantity
 
@@ -18,6 +18,8 @@ def _celsius(kelvin: float) -> str:
 def cautions(case: Case, answer: Estimate) -> list[str]:
     """Sentences on what can hurt somebody or the equipment in this case."""
     hot, cold = case.hot, case.cold
+    values = {check.name: check.value for check in answer.checks}
+    limits = {check.name: check.limit for check in answer.checks}
     lines = []
     hottest = max(hot.inlet_temperature, cold.inlet_temperature)
     if hottest > TOUCH_LIMIT:
@@ -29,34 +31,50 @@ def cautions(case: Case, answer: Estimate) -> list[str]:
         lines += [
             "Exhaust: leaks carry carbon monoxide. Joints, gaskets and thermal expansion need the care of an exhaust "
             "system; ventilate, and use a carbon monoxide alarm where people stay.",
-            "Back pressure: the engine's or burner's maker states how much is allowed; soot raises it with time, so "
-            "make the ducts accessible for cleaning.",
-            "Condensate of exhaust gas is acid; drain it from the lowest point, and expect it in cold starts.",
+            f"Back pressure: {format_quantity(answer.hot_pressure_drop, 'pressure difference', 3)} when clean; the "
+            "engine's or burner's maker states how much is allowed; soot raises it with time, so make the ducts "
+            "accessible for cleaning.",
         ]
-    if any(side.fluid in LIQUIDS for side in (hot, cold)):
+        if "hot water dew point" in values:
+            lines.append(
+                "Condensate of exhaust gas is acid; water condenses below "
+                f"{_celsius(limits['hot water dew point'])}, and the coldest wall is at "
+                f"{_celsius(values['hot water dew point'])}. Drain it from the lowest point; expect it in cold starts."
+            )
+    pressures = [side.pressure for side in (hot, cold) if side.fluid in LIQUIDS]
+    if pressures:
         lines.append(
-            "Pressure: a liquid loop that can be shut off while it is heated needs a relief valve and room to expand; "
-            "keep its protection against freezing and scaling."
+            f"Pressure: a liquid loop, here at up to {format_quantity(max(pressures), 'pressure', 3)} absolute, that "
+            "can be shut off while it is heated needs a relief valve and room to expand; keep its protection against "
+            "freezing and scaling."
         )
-    if cold.fluid != "reservoir":
+    lines.append(
+        f"Loss of load: without current the hottest face settles at {_celsius(answer.open_circuit_face_temperature)}, "
+        f"{answer.open_circuit_face_temperature - answer.hottest_face_temperature:.0f} K above that at this load."
+    )
+    if cold.fluid != "reservoir" and cold.duct.kind != HEAT_SINK:
         lines.append(
-            f"Loss of coolant: if the cold stream stops, the modules drift towards the hot inlet, "
-            f"{_celsius(hot.inlet_temperature)}; provide a trip or a bypass on the hot side if they do not bear it."
+            f"Loss of coolant: if the cold stream stops, the modules settle at up to "
+            f"{_celsius(answer.coolant_lost_face_temperature)}; provide a trip or a bypass on the hot side if they do "
+            "not bear it."
         )
-    if abs(answer.open_circuit_voltage) > LOW_VOLTAGE:
+    highest = values["open-circuit voltage"]
+    if highest > LOW_VOLTAGE:
         lines.append(
-            f"Electrical: the string stands at up to {format_quantity(answer.open_circuit_voltage, 'voltage', 3)} DC "
+            f"Electrical: a string stands at up to {format_quantity(highest, 'voltage', 3)} DC "
             "whenever the stack is warm, also with the load disconnected; it cannot be switched off. Insulate, mark "
             "and fuse it."
         )
     else:
         lines.append(
-            "Electrical: the string is live whenever the stack is warm; fuse parallel strings, since DC arcs do not go "
-            "out by themselves."
+            f"Electrical: a string stands at up to {format_quantity(highest, 'voltage', 3)} DC whenever the stack is "
+            "warm; fuse parallel strings, since DC arcs do not go out by themselves."
         )
     lines += [
-        "Clamping: modules crack under uneven load; tighten evenly with springs that follow thermal expansion, and "
-        "release the force with care.",
+        "Clamping: modules crack under uneven load; tighten each to "
+        f"{format_quantity(values['clamping force'], 'force', 3)}, evenly, with springs that follow up to "
+        f"{format_quantity(values['thermal expansion'], 'length', 2)} of thermal expansion, and release the force with "
+        "care.",
         "Local codes and the judgement of a licensed engineer go before this estimate.",
     ]
     return lines

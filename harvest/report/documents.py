@@ -11,10 +11,15 @@ import numpy as np
 from harvest.model.case import DECLARATIONS, Case, assumptions, case_hash, default_text, explain, limits_text, value_at
 from harvest.model.results import UNITS, Estimate
 from harvest.quantities import unit_of
+from harvest.report.reference import FORMS_WITH_UNIT
 from harvest.version import VERSION
 
 if TYPE_CHECKING:
     from harvest.model.fluid import FluidSheet
+    from harvest.model.module_curve import ModuleCurve
+    from harvest.study.bench_record import BenchFit
+    from harvest.study.heat_pump_record import HeatPumpFit
+    from harvest.study.what_if import WhatIf
 
 
 def plain(value: Any) -> Any:
@@ -70,7 +75,7 @@ def field_documents(field: str | None) -> list[dict[str, Any]]:
         {
             "field": path,
             "meaning": declaration.meaning,
-            "unit": unit_of(declaration.kind) if declaration.form in ("quantity", "pair", "curve") else None,
+            "unit": unit_of(declaration.kind) if declaration.form in FORMS_WITH_UNIT else None,
             "default": default_text(declaration),
             "allowed": limits_text(declaration) or None,
             "choices": dict(declaration.choices) or None,
@@ -80,6 +85,79 @@ def field_documents(field: str | None) -> list[dict[str, Any]]:
     ]
 
 
+WHAT_IF_KINDS = {
+    "healthy_power": "power",
+    "power": "power",
+    "power_lost": "power",
+    "voltage": "voltage",
+    "string_current": "current",
+    "other_current": "current",
+    "hot_junction_rise": "temperature difference",
+    "share_lost": "dimensionless",
+    "share_lost_at_fixed_temperatures": "dimensionless",
+    "time": "duration",
+    "hot_fouling": "areal thermal resistance",
+    "cold_fouling": "areal thermal resistance",
+    "net_power": "power",
+    "generated_power": "power",
+    "hot_inlet_temperature": "temperature",
+    "hot_outlet_temperature": "temperature",
+    "gas_wall_temperature": "temperature",
+    "water_dew_point": "temperature",
+    "acid_dew_point": "temperature",
+    "freezing": "temperature",
+    "coldest_ambient": "temperature",
+    "hot_temperature": "temperature",
+    "cold_temperature": "temperature",
+    "along": "length",
+    "across": "length",
+    "clamping_force_of_module": "force",
+    "clamping_force_of_layer": "force",
+}
+
+
+def what_if_document(found: WhatIf) -> dict[str, Any]:
+    """What can go wrong, with the estimate it stands on and the units of its numbers; `hours` are hours."""
+    units = {**{name: unit_of(kind) for name, kind in WHAT_IF_KINDS.items()}, "hours": "h"}
+    return {**plain(found), "estimate": estimate_document(found.estimate), "units": units, "version": VERSION}
+
+
 def fluid_document(sheet: FluidSheet) -> dict[str, Any]:
     """A fluid's properties with their units."""
     return {**plain(sheet), "units": sheet.units()}
+
+
+MODULE_KINDS = {
+    "hot_face_temperature": "temperature",
+    "cold_face_temperature": "temperature",
+    "mean_temperature": "temperature",
+    "seebeck": "Seebeck coefficient",
+    "resistance": "resistance",
+    "conductance": "conductance",
+    "figure_of_merit": "dimensionless",
+    "maximum_efficiency": "dimensionless",
+    "curve.current": "current",
+    "curve.voltage": "voltage",
+    "curve.power": "power",
+    "curve.heat_flow": "power",
+    "curve.efficiency": "dimensionless",
+    "temperatures": "temperature",
+    "merit_curve": "dimensionless",
+}
+
+
+def module_document(curve: ModuleCurve, fit: BenchFit | HeatPumpFit | None) -> dict[str, Any]:
+    """A module's parameters, points and curves, with the intervals of a fit where there is one."""
+    document: dict[str, Any] = plain(curve)
+    arrays = ("current", "voltage", "power", "heat_flow", "efficiency")
+    document["curve"] = {name: document.pop(name) for name in arrays}
+    document["interval"] = None
+    if fit is not None:
+        names = zip(fit.names, fit.values, fit.lower, fit.upper, fit.standard_errors, strict=True)
+        document["interval"] = {
+            name: {"value": plain(value), "lower": plain(low), "upper": plain(high), "standard_error": plain(error)}
+            for name, value, low, high, error in names
+        }
+        document["record"] = plain(fit)
+    document["units"] = {name: unit_of(kind) for name, kind in MODULE_KINDS.items()}
+    return document

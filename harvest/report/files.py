@@ -6,6 +6,7 @@ import contextlib
 import os
 import tempfile
 from pathlib import Path
+from typing import Any
 
 from harvest.errors import InputError
 
@@ -27,6 +28,13 @@ def write_whole(path: Path, content: str | bytes) -> None:
     finally:
         with contextlib.suppress(FileNotFoundError):
             Path(name).unlink()
+
+
+def record_text(record: dict[str, Any]) -> str:
+    """A module record as TOML text."""
+    import tomli_w
+
+    return tomli_w.dumps(record)
 
 
 def write_new(path: Path, content: str) -> None:

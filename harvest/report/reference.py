@@ -10,8 +10,9 @@ from harvest.model.case import DECLARATIONS, default_text, display, limits_text
 from harvest.model.case_fields import Declaration
 from harvest.model.results import ROW_RESULTS, SCALARS
 from harvest.quantities import KINDS, allowed_units, example_of, unit_of
+from harvest.study.screen import NUMBERS
 
-FORMS_WITH_UNIT = ("quantity", "pair", "curve", "standard volume flow")
+FORMS_WITH_UNIT = ("quantity", "pair", "curve", "flow curve", "standard volume flow", "energy price")
 WRITTEN = {
     "text": "text",
     "file": "name or path",
@@ -37,6 +38,10 @@ CURVES_AND_UNITS = """\
 `module.seebeck`, `module.resistance` and `module.conductance` hold at the mean of the two junction temperatures and are
 one text (`"0.05 V/K"`), a list of polynomial coefficients in (T - 300 K), lowest power first (texts with the unit per
 power, or plain SI numbers), or pairs of temperature and value (`[["300 K", "0.05 V/K"], ["400 K", "0.054 V/K"]]`).
+
+`block_resistance`, `block_pressure_drop` and `drive_curve` are pairs of volume flow and value
+(`[["2 L/min", "0.03 K/W"], ["6 L/min", "0.015 K/W"]]`). The first two may also be a power law,
+`{ flow = "2 L/min", value = "0.03 K/W", exponent = -0.6, from = "1 L/min", to = "6 L/min" }`.
 
 ## Units
 
@@ -99,9 +104,13 @@ def case_reference() -> str:
 
 
 def result_reference() -> str:
-    """Page of every result of an estimate with its unit and meaning."""
+    """Page of every result of an estimate and of a screening with its unit and meaning."""
     parts = [RESULT_INTRODUCTION]
-    for heading, results in (("Whole stack", SCALARS), ("`rows`: along the hot stream", ROW_RESULTS)):
+    for heading, results in (
+        ("Whole stack", SCALARS),
+        ("`rows`: along the hot stream", ROW_RESULTS),
+        ("`harvest screen`", NUMBERS),
+    ):
         rows = [(f"`{name}`", unit_of(metadata["kind"]), metadata["meaning"]) for name, metadata in results.items()]
         parts += [f"## {heading}\n", _table(("result", "unit", "meaning"), rows)]
     return "\n".join(parts)

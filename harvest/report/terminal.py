@@ -3,21 +3,30 @@
 from __future__ import annotations
 
 import math
-import textwrap
-from collections.abc import Iterable, Sequence
-from typing import TYPE_CHECKING
+from collections.abc import Mapping, Sequence
+from typing import TYPE_CHECKING, Any
 
-from harvest.model.case import DECLARATIONS, Case, Side, assumptions, case_hash, display, value_at
+from harvest.model.case import (
+    DECLARATIONS,
+    HEAT_SINK,
+    Case,
+    Streams,
+    StreamSide,
+    assumptions,
+    case_hash,
+    display,
+    value_at,
+)
 from harvest.model.checks import STATUS_NAMES, Check
 from harvest.model.results import Estimate
 from harvest.quantities import format_quantity, one_line
 from harvest.report.cautions import cautions
+from harvest.report.layout import WIDTH, heading, pairs, table, wrapped
 from harvest.version import VERSION
 
 if TYPE_CHECKING:
     from harvest.model.fluid import FluidSheet
 
-WIDTH = 100
 LONGEST_TITLE = 200
 MOST_ROWS_SHOWN = 8
 MARKS = {"pass": "ok  ", "warn": "WARN", "fail": "FAIL"}
@@ -32,41 +41,12 @@ def _t(kelvin: float) -> str:
 
 
 def _percent(share: float, digits: int = 2) -> str:
-    return "-" if not math.isfinite(share) else f"{100 * share:.{digits}f} %"
+    if not math.isfinite(share):
+        return "-"
+    return f"{100 * share:.{digits}f} %" if abs(share) < 10 else f"{100 * share:.3g} %"
 
 
-def _heading(text: str) -> str:
-    return f"\n{text}\n{'-' * len(text)}"
-
-
-def _pairs(pairs: Iterable[tuple[str, str]], indent: int = 2) -> list[str]:
-    """Name and value in two columns."""
-    kept = list(pairs)
-    width = max(len(name) for name, _ in kept)
-    return [f"{' ' * indent}{name:{width}}  {value}".rstrip() for name, value in kept]
-
-
-def _wrapped(first: str, text: str, rest: str | None = None) -> str:
-    return textwrap.fill(
-        text,
-        WIDTH,
-        initial_indent=first,
-        subsequent_indent=" " * len(first) if rest is None else rest,
-        break_long_words=False,
-        break_on_hyphens=False,
-    )
-
-
-def _table(header: Sequence[str], rows: Sequence[Sequence[str]], indent: int = 2) -> list[str]:
-    """Right-aligned columns under their headers."""
-    widths = [max(len(line[i]) for line in (header, *rows)) for i in range(len(header))]
-    return [
-        " " * indent + "  ".join(f"{cell:>{width}}" for cell, width in zip(line, widths, strict=True)).rstrip()
-        for line in (header, *rows)
-    ]
-
-
-def title(case: Case) -> str:
+def title(case: Streams) -> str:
     """Title of a case as one printable line."""
     return one_line(case.title, LONGEST_TITLE) or "Untitled case"
 
@@ -95,6 +75,9 @@ def _streams(case: Case, answer: Estimate) -> list[str]:
         if side.fluid == "reservoir":
             rows.append((name, "reservoir", "", _t(side.inlet_temperature), "", "", "", ""))
             continue
+        if side.duct.kind == HEAT_SINK:
+            rows.append((name, "room air", "", _t(side.inlet_temperature), "", "", "", "still air at heat sinks"))
+            continue
         cost = (
             "free head"
             if side.drive == "free"
@@ -112,10 +95,10 @@ def _streams(case: Case, answer: Estimate) -> list[str]:
                 cost,
             )
         )
-    return _table(("", "", "flow", "in", "out", "velocity", "drop", "driven by"), rows)
+    return table(("", "", "flow", "in", "out", "velocity", "drop", "driven by"), rows)
 
 
-def fluid_words(side: Side) -> str:
+def fluid_words(side: StreamSide) -> str:
     """Name a side's fluid with its composition, as in a sentence."""
     if side.volume_fraction is not None:
         return f"{side.fluid} {100 * side.volume_fraction:g} % by volume"
@@ -136,6 +119,7 @@ def _energy_path(case: Case, answer: Estimate) -> list[str]:
         ("  past the modules", answer.bypass_heat_flow),
         ("  through the modules", answer.module_heat_flow),
         ("heat into the cold side", answer.cold_heat_flow),
+        ("lost in leads and diodes", answer.lead_loss),
         ("generated at the terminals", answer.generated_power),
         ("  lost in the converter", answer.generated_power - answer.converted_power),
         ("  standby and auxiliaries", electrical.converter_standby_power + electrical.auxiliary_power),
@@ -143,8 +127,8 @@ def _energy_path(case: Case, answer: Estimate) -> list[str]:
         ("  cold drive", answer.cold_drive_power),
         ("net", answer.net_power),
     ]
-    kept = [(name, value) for name, value in rows if not name.startswith(" ") or abs(value) > 0]
-    return _table(
+    kept = [(name, value) for name, value in rows if not name.startswith((" ", "lost")) or abs(value) > 0]
+    return table(
         ("", "", "of the heat"),
         [(f"{name:28}", _q(value, "power"), _percent(value / heat) if heat else "-") for name, value in kept],
     )
@@ -165,7 +149,9 @@ def _electrical(case: Case, answer: Estimate) -> list[str]:
             ("terminals", f"{_q(answer.voltage, 'voltage')}, {_q(answer.current, 'current')}"),
             (
                 "resistance",
-                f"load {_q(answer.load_resistance, 'resistance')}, internal "
+                f"internal {_q(answer.internal_resistance, 'resistance')}, no load"
+                if not math.isfinite(answer.load_resistance)
+                else f"load {_q(answer.load_resistance, 'resistance')}, internal "
                 f"{_q(answer.internal_resistance, 'resistance')}, ratio {answer.load_ratio:.3g}",
             ),
             (
@@ -183,7 +169,7 @@ def _electrical(case: Case, answer: Estimate) -> list[str]:
             f"all heat; Carnot between the inlets {_percent(answer.carnot_efficiency, 1)}",
         ),
     ]
-    return _pairs(lines)
+    return pairs(lines)
 
 
 def _temperatures(answer: Estimate) -> list[str]:
@@ -232,7 +218,7 @@ def _temperatures(answer: Estimate) -> list[str]:
         "Re cold",
     )
     return [
-        *_table(header, lines),
+        *table(header, lines),
         "  temperatures in degC; current and power of one module; row 1 is where the hot stream enters",
     ]
 
@@ -245,7 +231,7 @@ def _checks(checks: Sequence[Check]) -> list[str]:
         for check in checks:
             if check.status == status:
                 text = check.text if status != "pass" else _value_and_limit(check)
-                lines.append(_wrapped(f"  {MARKS[status]}  {check.name:{width}}  ", text))
+                lines.append(wrapped(f"  {MARKS[status]}  {check.name:{width}}  ", text))
     return lines
 
 
@@ -265,7 +251,8 @@ def verdict(answer: Estimate) -> str:
     if failed:
         return f"Not acceptable as it stands: {', '.join(failed)}."
     if answer.net_power <= 0:
-        return "Not worth driving: the drives take more than the modules give."
+        nothing = answer.generated_power <= 0
+        return "Nothing is generated at this load." if nothing else "Not worth it: driving it takes more than it gives."
     if warned:
         return f"Read the warnings before relying on it: {', '.join(warned)}."
     return "All checks pass."
@@ -273,33 +260,34 @@ def verdict(answer: Estimate) -> str:
 
 def estimate_report(case: Case, answer: Estimate) -> str:
     """The report of one design."""
-    share = answer.net_power / answer.hot_heat_flow if answer.hot_heat_flow else math.nan
+    heat = max(answer.hot_heat_flow, -answer.cold_heat_flow)
+    where = "" if answer.hot_heat_flow >= 0 else ", which flows from the cold to the hot side"
     lines = [
         title(case),
         "=" * min(len(title(case)), WIDTH),
         "",
-        f"Net power {_q(answer.net_power, 'power')} from {_q(answer.hot_heat_flow, 'power')} of heat "
-        f"({_percent(share)}); load: {case.electrical.load}.",
-        _wrapped("", stack_sentence(case, answer) + "."),
-        _wrapped("", verdict(answer)),
-        _heading("Where the energy goes"),
+        f"Net power {_q(answer.net_power, 'power')} from {_q(heat, 'power')} of heat"
+        f"{f' ({_percent(answer.net_power / heat)})' if heat else ''}{where}; load: {case.electrical.load}.",
+        wrapped("", stack_sentence(case, answer) + "."),
+        wrapped("", verdict(answer)),
+        heading("Where the energy goes"),
         *_energy_path(case, answer),
-        _heading("Electrical"),
+        heading("Electrical"),
         *_electrical(case, answer),
-        _heading("Streams"),
+        heading("Streams"),
         *_streams(case, answer),
-        _heading("Along the stack"),
+        heading("Along the stack"),
         *_temperatures(answer),
-        _heading("To build"),
-        *_pairs(_to_build(answer)),
-        _heading("Checks"),
+        heading("To build"),
+        *pairs(_to_build(answer)),
+        heading("Checks"),
         *_checks(answer.checks),
-        _heading("Assumed, because not given"),
+        heading("Assumed, because not given"),
         *(_assumption_lines(case) or ["  nothing that matters"]),
-        _heading("Sources"),
-        *(_wrapped("  ", one_line(source, 300), rest="    ") for source in answer.sources),
-        _heading("Cautions"),
-        *(_wrapped("  - ", text) for text in cautions(case, answer)),
+        heading("Sources"),
+        *(wrapped("  ", one_line(source, 300), rest="    ") for source in answer.sources),
+        heading("Cautions"),
+        *(wrapped("  - ", text) for text in cautions(case, answer)),
         "",
         f"harvest {VERSION}, case {answer.case_hash[:12]}",
     ]
@@ -325,23 +313,33 @@ def _to_build(answer: Estimate) -> list[tuple[str, str]]:
 
 def _assumption_lines(case: Case) -> list[str]:
     return [
-        _wrapped("  ", f"{item.path} = {item.value}" + (f": {item.reason}" if item.reason else ""), rest="      ")
+        wrapped("  ", f"{item.path} = {item.value}" + (f": {item.reason}" if item.reason else ""), rest="      ")
         for item in assumptions(case)
     ]
 
 
+def _stands_in(document: Mapping[str, Any], path: str) -> bool:
+    """Whether a document gives a field."""
+    name, _, rest = path.partition(".")
+    inside = document.get(name)
+    return inside is not None if not rest else isinstance(inside, Mapping) and _stands_in(inside, rest)
+
+
 def check_report(case: Case) -> str:
     """What a case says, and what is assumed."""
-    lines = [title(case), "", "The case is well formed. Given:"]
+    given, of_record = [], []
     for path, declaration in DECLARATIONS.items():
         value = value_at(case, path)
-        if (
-            declaration.section is None
-            and value is not None
-            and path not in case.assumed
-            and path not in ("size", "sweep")
-        ):
-            lines.append(_wrapped(f"  {path} = ", display(value, declaration), rest="      "))
+        if declaration.section is not None or value is None or path in ("size", "sweep"):
+            continue
+        line = wrapped(f"  {path} = ", display(value, declaration), rest="      ")
+        if _stands_in(case.given, path):
+            given.append(line)
+        elif path.startswith("module.") and path not in case.assumed and value != declaration.default:
+            of_record.append(line)
+    lines = [title(case), "", "The case is well formed. Given:", *given]
+    if case.module.use:
+        lines += ["", f"From the module record {one_line(case.module.use)}:", *of_record]
     lines += ["", "Assumed, because not given:", *(_assumption_lines(case) or ["  nothing that matters"])]
     return "\n".join([*lines, "", f"case {case_hash(case)[:12]}; nothing was computed"])
 
@@ -354,13 +352,13 @@ def field_list() -> str:
         if declaration.section is not None:
             lines.append(f"\n[{path}]  {declaration.meaning}")
         else:
-            lines.append(_wrapped(f"  {path:{width}}  ", declaration.meaning.split("; ")[0]))
+            lines.append(wrapped(f"  {path:{width}}  ", declaration.meaning.split("; ")[0]))
     return "\n".join(lines).strip("\n")
 
 
 def fluid_report(sheet: FluidSheet) -> str:
     """A fluid's properties as a table with range and source."""
-    pairs = [
+    facts = [
         ("served", f"{_t(sheet.lower_limit)} ({sheet.lower_reason}) to {_t(sheet.upper_limit)} ({sheet.upper_reason})"),
         ("freezes", _t(sheet.freezing)),
         ("boils", _t(sheet.boiling)),
@@ -368,7 +366,7 @@ def fluid_report(sheet: FluidSheet) -> str:
         ("molar mass", f"{1e3 * sheet.molar_mass:.2f} g/mol"),
         ("source", sheet.source),
     ]
-    shown = [(name, value) for name, value in pairs if not value.startswith(("-", "nan")) or value[1:2].isdigit()]
+    shown = [(name, value) for name, value in facts if not value.startswith(("-", "nan")) or value[1:2].isdigit()]
     header = ("degC", "density", "heat capacity", "viscosity", "conductivity", "Prandtl")
     rows = [
         (
@@ -382,6 +380,4 @@ def fluid_report(sheet: FluidSheet) -> str:
         for i in range(len(sheet.temperature))
     ]
     title = f"{sheet.label} at {_q(sheet.pressure, 'pressure', 6)}"
-    return "\n".join(
-        [title, "", *_table(header, rows), "", *(_wrapped(f"  {name:16}", value) for name, value in shown)]
-    )
+    return "\n".join([title, "", *table(header, rows), "", *(wrapped(f"  {name:16}", value) for name, value in shown)])

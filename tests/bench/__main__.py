@@ -1,8 +1,8 @@
-"""`python -m tests.bench [solver] [start_up] [script]` prints speeds beside their yardsticks, measured in one run.
+"""Speeds beside their yardsticks, measured in one run: `python -m tests.bench [solver] [checks] [start_up] [script]`.
 
 Solver: 10,000 random designs of 20 rows against one evaluation of both streams' properties and films over the same
-arrays; the time a design with the number of designs. Script: what an engineer would write, one design at a time.
-Start-up: the commands against importing what they cannot do without.
+arrays; the time a design with the number of designs. Checks: what they add to a batch of estimates. Script: what an
+engineer would write, one design at a time. Start-up: the commands against importing what they cannot do without.
 """
 
 from __future__ import annotations
@@ -14,9 +14,11 @@ import sys
 import time
 from collections.abc import Callable
 from pathlib import Path
+from typing import Any
 
 import numpy as np
 
+from harvest.model import estimate as estimating
 from harvest.model.batch import Batch
 from harvest.model.design import Design, design
 from harvest.model.loads import MATCHED, MAXIMUM_POWER
@@ -79,6 +81,40 @@ def solver() -> None:
         print(f"    {count:7,} designs  {1e6 * seconds / count:8.1f} us")
 
 
+def checks() -> None:
+    """What all checks add to a batch of estimates, the solution without coolant included."""
+    batch = random_batch(CASES)
+    spent: dict[str, float] = {}
+
+    def timed(name: str, function: Callable[..., Any]) -> Callable[..., Any]:
+        def run(*arguments: Any) -> Any:
+            begun = time.perf_counter()
+            result = function(*arguments)
+            spent[name] = time.perf_counter() - begun
+            return result
+
+        return run
+
+    judging = {name: getattr(estimating, name) for name in ("assess", "_without_coolant")}
+    ratios = []
+    try:
+        for name, function in judging.items():
+            setattr(estimating, name, timed(name, function))
+        for _ in range(REPEATS):
+            begun = time.perf_counter()
+            estimating.estimate_batch(batch)
+            whole = time.perf_counter() - begun
+            ratios.append(whole / (whole - sum(spent.values())))
+    finally:
+        for name, function in judging.items():
+            setattr(estimating, name, function)
+    print(
+        f"checks of {CASES:,} estimates: {1e3 * spent['assess']:.0f} ms, without coolant "
+        f"{1e3 * spent['_without_coolant']:.0f} ms of {1e3 * whole:.0f} ms; with over without all checks "
+        f"{statistics.median(ratios):.2f} (gate 1.5)"
+    )
+
+
 def script() -> None:
     """The multiple over an engineer's script, with the same answers."""
     print("script with a root finder and CoolProp, one design at a time (20 rows)")
@@ -129,6 +165,6 @@ def start_up() -> None:
 
 
 if __name__ == "__main__":
-    for part in (solver, start_up, script):
+    for part in (solver, checks, start_up, script):
         if len(sys.argv) == 1 or part.__name__ in sys.argv[1:]:
             part()

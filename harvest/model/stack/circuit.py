@@ -18,7 +18,8 @@ the square of it."""
 class CircuitWork:
     """Strings and load during the iteration, (cases,) or (blocks, cases).
 
-    `held` marks cases whose load of largest power has been found, `switched` those in which a diode just changed state.
+    `held` marks cases whose load of largest power has been found, `switched` those in which a diode just changed state,
+    `whole` the strings that are not interrupted.
     """
 
     def __init__(self, circuit: Circuit, load: Load) -> None:
@@ -27,9 +28,12 @@ class CircuitWork:
         self.last_point = np.full((blocks, cases), np.nan)
         self.last_residual = np.full((blocks, cases), np.nan)
         self.held = np.zeros(cases, dtype=bool)
-        self.conducting = np.ones((blocks, cases), dtype=bool)
+        broken = circuit.interrupted
+        self.whole = np.ones((blocks, cases), dtype=bool) if broken is None else ~broken
+        self.conducting = self.whole
         self.switched = np.zeros(cases, dtype=bool)
         self.diodes = bool(np.any(circuit.diode_drop > 0))
+        self.gaps = self.diodes or not self.whole.all()
 
     def take(self, which: IntArray) -> None:
         """Keep a subset of cases."""
@@ -58,7 +62,7 @@ class CircuitWork:
             small = SETTLED * np.abs(current) + NOTHING * emf_scale / resistance
             return self._independent_step(current, near, small, voltage, string_resistance, jacobian)
         conducting = self.conducting
-        if self.diodes:
+        if self.gaps:
             identity = np.eye(len(current))[:, :, None]
             jacobian_used = np.where(conducting[:, None], jacobian, identity)
             right = np.stack([np.where(conducting, voltage, current), conducting.astype(float)])
@@ -76,13 +80,15 @@ class CircuitWork:
         new = base + per_volt * new_bus
         if self.diodes and self.load.mode == OPEN_CIRCUIT:
             # behind diodes nothing flows, not even between strings, and the highest string sets the bus
-            alone = (voltage - np.einsum("bt...,t...->b...", jacobian, current)).max(axis=0)
+            alone = voltage - np.einsum("bt...,t...->b...", jacobian, current)
+            alone = np.where(self.whole, alone, 0.0).max(axis=0)
             blocked = circuit.diode_drop > 0
             new = np.where(blocked, 0.0, new)
             new_bus = np.where(blocked, np.maximum(alone, 0.0), new_bus)
         elif self.diodes:
             unloaded = voltage + np.einsum("bt...,t...->b...", jacobian, np.maximum(new, 0.0) - current)
             self.conducting = np.where(conducting, new >= 0.0, unloaded > new_bus) | (circuit.diode_drop <= 0)
+            self.conducting &= self.whole
             self.switched = (self.conducting != conducting).any(axis=0)
             new = np.where((circuit.diode_drop > 0) & (new < 0.0), 0.0, new)
         return new - current, np.broadcast_to(new_bus, current.shape)
@@ -142,23 +148,30 @@ class CircuitWork:
             diagonal = np.arange(len(current))
             matrix = jacobian.copy()
             matrix[diagonal, diagonal] -= resistance
-            step = _solve_blocks(matrix, (resistance * current + drop - voltage)[None])[0]
+            step = self._step_of_whole(matrix, resistance * current + drop - voltage, current)
         else:
             gradient = voltage + np.einsum("bt...,b...->t...", jacobian, current)
             curvature = jacobian + np.swapaxes(jacobian, 0, 1)
-            free = -_solve_blocks(curvature, gradient[None])[0]
+            free = self._step_of_whole(curvature, -gradient, current)
             step = self._accelerated(current, free) - current
             if self.load.lowest is not None and self.load.highest is not None:
                 wanted = voltage + np.einsum("bt...,t...->b...", jacobian, free)
                 bound = np.clip(wanted, self.load.lowest, self.load.highest)
-                outside = wanted != bound
+                outside = (wanted != bound) & self.whole
                 matrix = np.where(outside[:, None], jacobian, curvature)
-                held_in = _solve_blocks(matrix, np.where(outside, bound - voltage, -gradient)[None])[0]
+                held_in = self._step_of_whole(matrix, np.where(outside, bound - voltage, -gradient), current)
                 held_in = np.where(outside & (current + held_in < 0.0), -current, held_in)
                 step = np.where(outside.any(axis=0), held_in, step)
             step = np.where(self.held, 0.0, step)
             self.held |= near & (np.abs(step) <= small.max(axis=0)).all(axis=0)
         return step, voltage + np.einsum("bt...,t...->b...", jacobian, step)
+
+    def _step_of_whole(self, matrix: FloatArray, right: FloatArray, current: FloatArray) -> FloatArray:
+        """Step in the currents that solves the system; strings that are broken lose what current they have."""
+        if not self.whole.all():
+            matrix = np.where(self.whole[:, None], matrix, np.eye(len(current))[:, :, None])
+            right = np.where(self.whole, right, -current)
+        return np.asarray(_solve_blocks(matrix, right[None])[0])
 
 
 def _solve_blocks(matrix: FloatArray, right: FloatArray) -> FloatArray:

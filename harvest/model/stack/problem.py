@@ -10,8 +10,13 @@ import numpy as np
 from harvest.physics.arrays import BoolArray, FloatArray, IntArray
 from harvest.physics.films import Film
 from harvest.physics.fluids import FluidBatch
+from harvest.physics.natural_convection import RoomSink
+from harvest.physics.rated import RatedFilm
 from harvest.physics.spreading import Constriction
 from harvest.physics.thermoelectrics import ModuleModel
+
+METAL_PASSES = 8
+"""Fixed-point passes from the wall face to the metal that a sink's air meets; each gains two digits or more."""
 
 
 def take_cases(item: Any, which: IntArray) -> Any:
@@ -26,8 +31,8 @@ class StackSide:
     """One side of the stack; arrays (cases,).
 
     A stream has `fluid`, `film` and `mass_flow` [kg/s] per place (times segments); a reservoir has none of them and
-    `film_conductance` [W/K] of a place. `wall_resistance` and `module_resistance` (interface and substrate) [K/W] are
-    of one place; `constriction` depends on the film.
+    `film_conductance` [W/K] of a place, or a `sink` of a place whose film follows the metal. `wall_resistance` and
+    `module_resistance` (interface and substrate) [K/W] are of one place; `constriction` depends on the film.
     """
 
     inlet_temperature: FloatArray
@@ -38,8 +43,21 @@ class StackSide:
     constriction: Constriction
     place_area: FloatArray
     fluid: FluidBatch | None
-    film: Film | None
+    film: Film | RatedFilm | None
     arithmetic: bool
+    sink: RoomSink | None = None
+
+    def still_conductance(self, wall: FloatArray) -> tuple[FloatArray, FloatArray]:
+        """Conductance from a reservoir or the room to the wall face at `wall` [K], and its film's, [W/K]."""
+        if self.sink is None:
+            film = np.broadcast_to(self.film_conductance, wall.shape)
+            return film / (1.0 + film * self.wall_resistance), film
+        metal = wall
+        for _ in range(METAL_PASSES if np.any(self.wall_resistance > 0) else 1):
+            film = self.sink.conductance(metal, self.inlet_temperature)
+            shared = 1.0 / (1.0 + film * self.wall_resistance)
+            metal = self.inlet_temperature + (wall - self.inlet_temperature) * shared
+        return film * shared, film
 
     def take(self, which: IntArray) -> StackSide:
         """Return the side of a subset of cases."""
@@ -52,7 +70,8 @@ class Circuit:
 
     `block_starts` are the rows at which a new string begins, (blocks,), the same in every case. `series` is the number
     of modules in series that one row gives to a string, `parallel` the number of equal strings of a block, `lead` and
-    `diode_drop` the resistance [ohm] and voltage [V] of one string's leads and blocking diode.
+    `diode_drop` the resistance [ohm] and voltage [V] of one string's leads and blocking diode. `interrupted`,
+    (blocks, cases), marks blocks whose strings are broken and carry nothing.
     """
 
     block_starts: IntArray
@@ -61,6 +80,7 @@ class Circuit:
     lead: FloatArray
     diode_drop: FloatArray
     independent: bool
+    interrupted: BoolArray | None = None
 
     def take(self, which: IntArray) -> Circuit:
         """Return the circuit of a subset of cases."""
@@ -71,6 +91,7 @@ class Circuit:
             self.lead[which],
             self.diode_drop[which],
             self.independent,
+            take_cases(self.interrupted, which),
         )
 
 

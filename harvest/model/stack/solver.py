@@ -6,7 +6,7 @@ from dataclasses import replace
 
 import numpy as np
 
-from harvest.model.loads import MAXIMUM_POWER
+from harvest.model.loads import FIXED_VOLTAGE, MAXIMUM_POWER, OPEN_CIRCUIT
 from harvest.model.stack.circuit import CircuitWork
 from harvest.model.stack.problem import Load, StackProblem, StackState, take_cases
 from harvest.model.stack.streams import SideWork
@@ -16,6 +16,10 @@ from harvest.physics.arrays import FloatArray, IntArray
 CHUNK_CELLS = 100_000
 """Rows times cases that are solved together: large enough to hide the interpreter, small enough for the caches."""
 MAXIMUM_PASSES = 60
+PEAK_SHARES = tuple(np.linspace(0.02, 0.98, 49))
+PEAK_ROUNDS = 7
+"""Scan of the voltage, in parts of the open-circuit voltage, and how often the best of it is narrowed down, where
+blocks behind diodes make several peaks of power."""
 SMALLEST_SCALE = 0.1
 """Temperature difference below which errors are no longer judged in proportion [K]."""
 TOLERANCE = 1e-10
@@ -41,6 +45,8 @@ class _Solver:
         self.fresh = start is None
         if start is not None:
             self.state = start.take(np.arange(cases))
+            carrying = (start.current > 0.0) | (problem.circuit.diode_drop <= 0)
+            self.circuit.conducting = carrying & self.circuit.whole
             self.state.converged[:] = False
             self.state.passes[:] = 0
             return
@@ -63,15 +69,15 @@ class _Solver:
         """Iterate until every case has converged or the passes are used up."""
         result = self.state.take(np.arange(self.problem.cases))
         where = np.arange(self.problem.cases)
-        self.hot.guess(self.state.hot_stream)
-        self.cold.guess(self.state.cold_stream)
+        self.hot.guess(self.state.hot_stream, self.state.hot_wall)
+        self.cold.guess(self.state.cold_stream, self.state.cold_wall)
         if self.fresh:
             self.step()
         finished = np.zeros(len(where), dtype=bool)
         for count in range(1, MAXIMUM_PASSES + 1):
             exact_slopes = count == 2 and self.maximising
-            self.hot.evaluate(self.state.hot_stream, count > 1, exact_slopes)
-            self.cold.evaluate(self.state.cold_stream, count > 1, exact_slopes)
+            self.hot.evaluate(self.state.hot_stream, self.state.hot_wall, count > 1, exact_slopes)
+            self.cold.evaluate(self.state.cold_stream, self.state.cold_wall, count > 1, exact_slopes)
             change = self.step()
             rate = np.clip(change / np.maximum(self.previous_change, 1e-300), 1e-3, 0.5)
             done = (change < 1e-5) & (change * rate < TOLERANCE)
@@ -111,25 +117,31 @@ class _Solver:
         hot = self.hot.line(state.hot_stream, state.hot_wall)
         cold = self.cold.line(state.cold_stream, state.cold_wall)
         into, out = self.hot.module_resistance(), self.cold.module_resistance()
-        a, resistance, k, a_slope, resistance_slope, k_slope = problem.module.parameters(
-            state.hot_junction, state.cold_junction
-        )
+        module = problem.module.parameters(state.hot_junction, state.cold_junction)
+        a, resistance, k = module.seebeck, module.resistance, module.conductance
         rows = problem.rows
         lengths = np.diff(np.append(circuit.block_starts, rows))
         block_of_row = np.repeat(np.arange(len(lengths)), lengths)
         current = state.current[block_of_row]
         difference = state.hot_junction - state.cold_junction
-        mean = 0.5 * (state.hot_junction + state.cold_junction)
 
         # heat into the hot junctions u1 Thj + v1 Tcj - s1, heat out of the cold ones, negative, u2 Thj + v2 Tcj - s2
         peltier = a * current
         joule = 0.5 * current * current * resistance
-        half_joule_slope = 0.5 * current * current * resistance_slope
-        hot_slope = a_slope * current * state.hot_junction + k_slope * difference - half_joule_slope
-        cold_slope = a_slope * current * state.cold_junction + k_slope * difference + half_joule_slope
-        v1, u2 = 0.5 * hot_slope - k, -k - 0.5 * cold_slope
-        u1, v2 = peltier - v1 + hot_slope, -peltier - u2 - cold_slope
-        s1, s2 = joule + hot_slope * mean, joule - cold_slope * mean
+        half_square = 0.5 * current * current
+        by_mean = module.conductance_slope * difference, half_square * module.resistance_slope
+        by_spread = module.conductance_spread * difference, half_square * module.resistance_spread
+        seebeck_mean, seebeck_spread = module.seebeck_slope * current, module.seebeck_spread * current
+        hot_mean = seebeck_mean * state.hot_junction + by_mean[0] - by_mean[1]
+        hot_spread = seebeck_spread * state.hot_junction + by_spread[0] - by_spread[1]
+        cold_mean = seebeck_mean * state.cold_junction + by_mean[0] + by_mean[1]
+        cold_spread = seebeck_spread * state.cold_junction + by_spread[0] + by_spread[1]
+        hot_by_hot, hot_by_cold = 0.5 * (hot_mean + hot_spread), 0.5 * (hot_mean - hot_spread)
+        cold_by_hot, cold_by_cold = 0.5 * (cold_mean + cold_spread), 0.5 * (cold_mean - cold_spread)
+        u1, v1 = k + peltier + hot_by_hot, hot_by_cold - k
+        u2, v2 = -k - cold_by_hot, k - peltier - cold_by_cold
+        s1 = joule + hot_by_hot * state.hot_junction + hot_by_cold * state.cold_junction
+        s2 = joule - cold_by_hot * state.hot_junction - cold_by_cold * state.cold_junction
 
         # junctions from wall faces, [1 + r1 u1, r1 v1; r2 u2, 1 + r2 v2] (Thj, Tcj) = (Twh + r1 s1, Twc + r2 s2)
         x1, y1, x2, y2 = 1.0 + into * u1, into * v1, out * u2, 1.0 + out * v2
@@ -192,17 +204,22 @@ class _Solver:
         d_cold_junction = x1 * d_cold_wall - x2 * d_hot_wall + d20
 
         # string voltages, made linear in the currents around the swept temperatures
-        shift = 0.5 * (hot_junction + cold_junction) - mean
+        hot_shift, cold_shift = hot_junction - state.hot_junction, cold_junction - state.cold_junction
+        shift, spread = 0.5 * (hot_shift + cold_shift), 0.5 * (hot_shift - cold_shift)
         difference = hot_junction - cold_junction
         weight = circuit.series if self.active is None else circuit.series * self.active
         starts = circuit.block_starts
-        row_resistance = weight * (resistance + resistance_slope * shift)
-        row_emf = weight * (a + a_slope * shift) * difference
+        new_resistance = resistance + module.resistance_slope * shift + module.resistance_spread * spread
+        new_seebeck = a + module.seebeck_slope * shift + module.seebeck_spread * spread
+        row_resistance = weight * new_resistance
+        row_emf = weight * new_seebeck * difference
         string_resistance = np.add.reduceat(row_resistance, starts, axis=0) + circuit.lead
         emf = np.add.reduceat(row_emf, starts, axis=0)
+        by_mean_shift = module.seebeck_slope * difference - current * module.resistance_slope
+        by_spread_shift = module.seebeck_spread * difference - current * module.resistance_spread
         d_row = weight * (
-            a * (d_hot_junction - d_cold_junction)
-            + (a_slope * difference - current * resistance_slope) * (0.5 * (d_hot_junction + d_cold_junction))
+            (a + 0.5 * by_spread_shift) * (d_hot_junction - d_cold_junction)
+            + 0.5 * by_mean_shift * (d_hot_junction + d_cold_junction)
         )
         jacobian = np.add.reduceat(d_row, starts, axis=1)
         jacobian = np.swapaxes(jacobian, 0, 1).copy()  # [block b, current t]
@@ -275,6 +292,8 @@ def solve_stack(problem: StackProblem, load: Load, start: StackState | None = No
     are marked in `converged` and hold whatever the last pass gave. Rows that a case does not have repeat its last.
     """
     cases, blocks = problem.cases, len(problem.circuit.block_starts)
+    if start is None and blocks > 1 and load.mode == MAXIMUM_POWER and np.any(problem.circuit.diode_drop > 0):
+        return _highest_peak(problem, load)
     in_rows, at_ends, in_blocks = (problem.rows, cases), (problem.rows + 1, cases), (blocks, cases)
     result = StackState(
         hot_stream=np.empty(at_ends),
@@ -289,7 +308,7 @@ def solve_stack(problem: StackProblem, load: Load, start: StackState | None = No
         passes=np.empty(cases, dtype=np.int64),
     )
     order = np.argsort(problem.active_rows, kind="stable")
-    chunk = max(1, CHUNK_CELLS // problem.rows)
+    chunk = max(1, int(CHUNK_CELLS / (problem.rows * (1.0 + 0.1 * (blocks - 1)))))
     with np.errstate(all="ignore"):
         for first in range(0, cases, chunk):
             which = order[first : first + chunk]
@@ -299,3 +318,36 @@ def solve_stack(problem: StackProblem, load: Load, start: StackState | None = No
             state = _Solver(replace(part, rows=rows), load.take(which), begun).run()
             result.put(which, _with_rows(state, problem.rows))
     return result
+
+
+def _highest_peak(problem: StackProblem, load: Load) -> StackState:
+    """Solve for the largest power of blocks behind diodes, which has a peak for every set of strings that conduct.
+
+    The voltage is scanned, and around the best of the scan a parabola through three points is narrowed down.
+    """
+    opened = solve_stack(problem, Load(OPEN_CIRCUIT))
+    highest = opened.string_voltage[0]
+    best, best_power = opened.take(np.arange(problem.cases)), np.full(problem.cases, -np.inf)
+
+    def power_at(voltage: FloatArray) -> FloatArray:
+        """Power at a voltage within the converter's window; the best state so far is kept."""
+        if load.lowest is not None and load.highest is not None:
+            voltage = np.clip(voltage, load.lowest, np.maximum(load.highest, load.lowest))
+        state = solve_stack(problem, Load(FIXED_VOLTAGE, voltage=voltage), best)
+        power = np.where(state.converged, (state.current * state.string_voltage).sum(axis=0), -np.inf)
+        higher = np.flatnonzero(power > best_power)
+        best.put(higher, state.take(higher))
+        best_power[higher] = power[higher]
+        return power
+
+    for share in PEAK_SHARES:
+        power_at(share * highest)
+    width = (PEAK_SHARES[1] - PEAK_SHARES[0]) * highest
+    for _ in range(PEAK_ROUNDS):
+        middle = best.string_voltage[0].copy()
+        below, centre, above = power_at(middle - width), best_power.copy(), power_at(middle + width)
+        bend = below - 2.0 * centre + above
+        shift = np.where(bend < 0, 0.5 * width * (below - above) / np.where(bend < 0, bend, -1.0), 0.0)
+        power_at(middle + np.clip(shift, -width, width))
+        width = width / 4.0
+    return best

@@ -12,6 +12,11 @@ from harvest.physics.arrays import FloatArray, IntArray
 SLOPE_STEP = 0.05
 """Warming by which slopes are taken [K]."""
 
+SINK_STEP = 1e-4
+"""Part of a sink's rise over the room by which its slope is taken, since films in still air change with ln(rise)."""
+SMALLEST_RISE = 1e-3
+"""Rise below which a sink's slope is taken as at this one [K]."""
+
 
 class FilmTerms(NamedTuple):
     """Effective conductance from stream to wall face, heat capacity rate and film conductance, (rows, cases)."""
@@ -81,10 +86,10 @@ class SideWork:
             effective = -capacity * np.expm1(-transfer_units)
         return FilmTerms(effective / (1.0 + effective * self.side.wall_resistance), capacity, film)
 
-    def guess(self, stream: FloatArray) -> None:
+    def guess(self, stream: FloatArray, wall: FloatArray) -> None:
         """Take films and capacities from the straight line through the two first evaluations."""
         if self.side.film is None:
-            self._reservoir(stream)
+            self._still(stream, wall)
             return
         mean = 0.5 * (stream[:-1] + stream[1:])
         share = np.clip((mean - self.ends[0]) * self.inverse_span, -0.2, 2.0)
@@ -95,14 +100,14 @@ class SideWork:
         )
         self.mean = mean
 
-    def evaluate(self, stream: FloatArray, renew_slopes: bool, exact_slopes: bool) -> None:
+    def evaluate(self, stream: FloatArray, wall: FloatArray, renew_slopes: bool, exact_slopes: bool) -> None:
         """Evaluate films and capacities at the streams' temperatures.
 
         Slopes are renewed from the step since the last evaluation, or by evaluating a second time a little warmer.
         """
         side = self.side
         if side.film is None or side.fluid is None:
-            self._reservoir(stream)
+            self._still(stream, wall)
             return
         mean = 0.5 * (stream[:-1] + stream[1:])
         heat_capacity, viscosity, conductivity = side.fluid.film_properties(mean)
@@ -131,12 +136,17 @@ class SideWork:
             self.capacity_slope = np.where(moved, (terms.capacity - self.terms.capacity) / step, self.capacity_slope)
         self.terms, self.mean = terms, mean
 
-    def _reservoir(self, stream: FloatArray) -> None:
-        if self.terms is None:
-            film = np.broadcast_to(self.side.film_conductance, stream[1:].shape)
-            conductance = film / (1.0 + film * self.side.wall_resistance)
+    def _still(self, stream: FloatArray, wall: FloatArray) -> None:
+        """Take the conductance of a reservoir, once, or of a sink at the latest wall temperature, with its slope."""
+        side = self.side
+        if self.terms is None or side.sink is not None:
+            conductance, film = side.still_conductance(wall)
             self.terms = FilmTerms(conductance, np.ones_like(film), film)
             self.mean = stream[1:]
+            if side.sink is not None:
+                rise = wall - side.inlet_temperature
+                step = SINK_STEP * np.where(np.abs(rise) < SMALLEST_RISE, SMALLEST_RISE, rise)
+                self.conductance_slope = (side.still_conductance(wall + step)[0] - conductance) / step
 
     def line(self, stream: FloatArray, wall: FloatArray) -> StreamLine:
         """Return the stream's linear model around the latest temperatures."""
@@ -145,7 +155,10 @@ class SideWork:
         if self.side.film is None:
             one = np.ones_like(conductance)
             zero = np.zeros_like(conductance)
-            return StreamLine(one, zero, zero, conductance, conductance, zero)
+            if self.side.sink is None:
+                return StreamLine(one, zero, zero, conductance, conductance, zero)
+            s = self.conductance_slope * (self.side.inlet_temperature - wall)
+            return StreamLine(one, zero, zero, conductance, conductance - s, -s * wall)
         entering, leaving = self.ends_of_rows(stream)
         half = 0.5 * self.capacity_slope * (entering - leaving)
         r = 1.0 / (capacity - half)

@@ -1,0 +1,315 @@
+"""The module of a case: its model from curves, legs, cooler ratings or generator ratings, and where it comes from."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from dataclasses import dataclass
+
+import numpy as np
+
+from harvest.model.batch import Batch
+from harvest.model.case import Curve as CaseCurve
+from harvest.model.materials import MaterialRecord, load_material
+from harvest.model.rating_rules import (
+    Contradiction,
+    cooler_contradictions,
+    rating_deviations,
+    rating_numbers,
+)
+from harvest.physics.arrays import FloatArray
+from harvest.physics.curves import Curve, HeldCurve, PolynomialCurve, TableCurve
+from harvest.physics.ratings import (
+    SMALLEST_SPAN,
+    ModuleParameters,
+    ScaledModule,
+    cooler_maximum_heat,
+    cooler_parameters_by_heat,
+    cooler_parameters_by_voltage,
+    generator_parameters,
+    matched_power,
+    temperature_line,
+)
+from harvest.physics.thermoelectrics import LegModule, Material, MeanTemperatureModule, ModuleModel
+from harvest.quantities import format_quantity
+
+COOLER_RATINGS = (
+    "maximum_current",
+    "maximum_voltage",
+    "maximum_temperature_difference",
+    "maximum_heat",
+    "hot_side_temperature",
+)
+SOURCES = {"Lineykin": "Lineykin and Ben-Yaakov", "Zhang": "Zhang"}
+COOLER = "cooler ratings"
+GENERATOR = "generator ratings"
+LARGEST_DISAGREEMENT = 0.05
+"""Relative disagreement of a module's data that is worth a warning."""
+
+
+@dataclass(frozen=True)
+class DescribedModule:
+    """A module with where it comes from.
+
+    `substrate_resistance` (cases,) of one substrate [K/W], `lower` and `upper` [K] the range in which the parameters
+    hold (0 and infinity if unknown); `provenance` one sentence that goes after "parameters"; `residual` the largest
+    relative residual of fitted rated points.
+    """
+
+    model: ModuleModel
+    substrate_resistance: FloatArray
+    materials: tuple[MaterialRecord, ...]
+    lower: float
+    upper: float
+    way: str
+    provenance: str
+    warnings: tuple[str, ...] = ()
+    residual: float = 0.0
+
+
+def described_module(batch: Batch) -> DescribedModule:
+    """Return the module of a batch from whichever way it is described.
+
+    Raises InputError for an unknown material. Where cases differ in their ratings, words are those of the first case.
+    """
+    module = batch.base.module
+    build: Callable[[Batch], DescribedModule] = _of_curves
+    if module.legs is not None:
+        build = _of_legs
+    elif module.cooler_rating is not None:
+        build = _of_cooler_ratings
+    elif module.generator_rating is not None:
+        build = _of_generator_ratings
+    return build(batch)
+
+
+def footprint_area(batch: Batch) -> FloatArray:
+    """Area of a module's face [m^2], (cases,)."""
+    along, across = batch.base.module.footprint
+    return np.full(batch.cases, along * across)
+
+
+def _described(
+    batch: Batch,
+    model: ModuleModel,
+    way: str,
+    provenance: str,
+    materials: tuple[MaterialRecord, ...] = (),
+    substrate: FloatArray | None = None,
+    lower: float = 0.0,
+    upper: float = np.inf,
+    warnings: tuple[str, ...] = (),
+    residual: float = 0.0,
+) -> DescribedModule:
+    """Join what a way knows with the range that the case states."""
+    module = batch.base.module
+    return DescribedModule(
+        model,
+        np.zeros(batch.cases) if substrate is None else substrate,
+        materials,
+        max(lower, module.minimum_temperature or 0.0),
+        min(upper, module.maximum_temperature or np.inf),
+        way,
+        provenance,
+        warnings,
+        residual,
+    )
+
+
+def _curve(batch: Batch, path: str, curve: CaseCurve | None) -> Curve:
+    """Turn a case's curve, or the numbers that vary in its place, into one the solver evaluates."""
+    if path in batch.varied:
+        return PolynomialCurve.constant(batch.number(path))
+    assert curve is not None
+    if curve.kind == "table" and len(curve.values) > 1:
+        return TableCurve(np.array(curve.temperatures), np.array(curve.values))
+    return PolynomialCurve(np.array(curve.values)[:, None] * np.ones(batch.cases))
+
+
+def _of_curves(batch: Batch) -> DescribedModule:
+    module = batch.base.module
+    curves = (
+        _curve(batch, f"module.{name}", getattr(module, name)) for name in ("seebeck", "resistance", "conductance")
+    )
+    return _described(batch, MeanTemperatureModule(*curves), "curves", "from curves of mean temperature")
+
+
+def _of_legs(batch: Batch) -> DescribedModule:
+    legs = batch.base.module.legs
+    assert legs is not None
+    materials = (load_material(legs.n_material), load_material(legs.p_material))
+    couples, length, area = (batch.number(f"module.legs.{name}") for name in ("couples", "length", "area"))
+    free_area = np.maximum(footprint_area(batch) - 2.0 * couples * area, 0.0)
+    model = LegModule(
+        materials[0].material,
+        materials[1].material,
+        couples,
+        length,
+        area,
+        batch.number("module.legs.contact_resistivity", 0.0),
+        batch.number("module.legs.gap_filler", 0.0) * free_area / length,
+    )
+    thickness = batch.number("module.legs.substrate_thickness", 0.0)
+    conductivity = batch.number("module.legs.substrate_conductivity")
+    substrate = np.where(thickness > 0, thickness / (conductivity * footprint_area(batch)), 0.0)
+    return _described(
+        batch,
+        model,
+        "legs",
+        "from materials and legs",
+        materials,
+        substrate,
+        max(each.lower for each in materials),
+        min(each.upper for each in materials),
+    )
+
+
+# ---- Cooler ratings
+
+
+def cooler_faults(batch: Batch) -> list[Contradiction]:
+    """Contradictions in the cooler ratings of the cases of a batch; none for a module of another kind."""
+    if batch.base.module.cooler_rating is None:
+        return []
+    return list(cooler_contradictions(*_cooler_numbers(batch)))
+
+
+def cooler_heat_disagreement(batch: Batch) -> FloatArray:
+    """Stated over implied heat rating of coolers, less one [-], (cases,); NaN where no heat is stated.
+
+    It is also by how much each parameter differs between the two extractions.
+    """
+    current, voltage, difference, heat, hot_side = _cooler_numbers(batch)
+    return heat / cooler_maximum_heat(current, voltage, difference, hot_side) - 1.0
+
+
+def cooler_matched_powers(batch: Batch, hot_face: FloatArray, cold_face: FloatArray) -> tuple[FloatArray, FloatArray]:
+    """Matched-load power of one module made of a cooler, corrected for temperature and uncorrected [W].
+
+    Parameters: a batch with cooler ratings; face temperatures [K], (..., cases). Both whatever the case uses.
+    """
+    corrected = _bismuth_telluride(batch)[0].parameters(hot_face, cold_face)
+    uncorrected = _cooler_parameters(batch)
+    return (
+        matched_power(corrected[0], corrected[1], hot_face, cold_face),
+        matched_power(uncorrected.seebeck_coefficient, uncorrected.resistance, hot_face, cold_face),
+    )
+
+
+def _cooler_numbers(batch: Batch) -> tuple[FloatArray, ...]:
+    return tuple(batch.number(f"module.cooler_rating.{name}") for name in COOLER_RATINGS)
+
+
+def _cooler_parameters(batch: Batch) -> ModuleParameters:
+    """Parameters as rated, by the extraction that the case chooses, (cases,)."""
+    rating = batch.base.module.cooler_rating
+    assert rating is not None
+    current, voltage, difference, heat, hot_side = _cooler_numbers(batch)
+    if rating.extraction == "Zhang":
+        return cooler_parameters_by_heat(current, heat, difference, hot_side)
+    return cooler_parameters_by_voltage(current, voltage, difference, hot_side)
+
+
+def _bismuth_telluride(batch: Batch) -> tuple[ScaledModule, tuple[MaterialRecord, ...]]:
+    """Legs of the bundled material, held beyond its range, with the rated parameters at the rating's two faces."""
+    records = (load_material("bismuth telluride n"), load_material("bismuth telluride p"))
+    n_type, p_type = (_held(record) for record in records)
+    one, nothing = np.ones(batch.cases), np.zeros(batch.cases)
+    *_, difference, _, hot_side = _cooler_numbers(batch)
+    legs = LegModule(n_type, p_type, one, one, one, nothing, nothing)
+    return ScaledModule.through(legs, _cooler_parameters(batch), hot_side, hot_side - difference), records
+
+
+def _held(record: MaterialRecord) -> Material:
+    return Material(
+        HeldCurve(record.material.seebeck, record.lower, record.upper),
+        HeldCurve(record.material.resistivity, record.lower, record.upper),
+        HeldCurve(record.material.conductivity, record.lower, record.upper),
+    )
+
+
+def _of_cooler_ratings(batch: Batch) -> DescribedModule:
+    rating = batch.base.module.cooler_rating
+    assert rating is not None
+    apart = float(cooler_heat_disagreement(batch)[0])
+    hot_side = format_quantity(float(batch.number("module.cooler_rating.hot_side_temperature")[0]), "temperature")
+    says = f"from {COOLER} at {hot_side} ({SOURCES[rating.extraction]})"
+    stated = np.isfinite(apart)
+    says += f", two extractions {100 * abs(apart):.1f} % apart" if stated else ", no fourth rating to compare"
+    warnings: list[str] = []
+    if abs(apart) > LARGEST_DISAGREEMENT:
+        warnings.append(
+            f"The stated heat rating differs by {100 * apart:+.1f} % from the one that the other three imply, "
+            "and so do the parameters by the two extractions."
+        )
+    if rating.temperature_dependence == "none":
+        warnings.append(
+            f"The parameters are used as rated at {hot_side}, whatever the operating temperature, "
+            "which flatters a warmer module."
+        )
+        constant = MeanTemperatureModule(*(PolynomialCurve.constant(each) for each in _cooler_parameters(batch)))
+        return _described(batch, constant, COOLER, f"{says}, without temperature dependence", warnings=tuple(warnings))
+    model, records = _bismuth_telluride(batch)
+    return _described(
+        batch,
+        model,
+        COOLER,
+        f"{says}, with the temperature dependence of {rating.temperature_dependence}",
+        records,
+        lower=max(each.lower for each in records),
+        upper=min(each.upper for each in records),
+        warnings=tuple(warnings),
+    )
+
+
+# ---- Generator ratings
+
+
+def _of_generator_ratings(batch: Batch) -> DescribedModule:
+    """Constants of one point, or straight lines in the mean temperature of several."""
+    module = batch.base.module
+    assert module.generator_rating is not None
+    numbers = rating_numbers(module.generator_rating)
+    hot, cold = numbers["hot_face_temperature"], numbers["cold_face_temperature"]
+    merit = batch.number("module.figure_of_merit")
+    by_merit = bool(np.isfinite(merit[0]))
+    parameters = generator_parameters(**numbers, figure_of_merit=np.array(merit[0]))
+    mean = 0.5 * (hot + cold)
+    lines = [temperature_line(mean, each) for each in parameters]
+    residual = max(line.largest_residual for line in lines)
+    model: ModuleModel = MeanTemperatureModule(*(line.curve for line in lines))
+    if "module.figure_of_merit" in batch.varied:
+        same = np.ones(batch.cases)
+        model = ScaledModule(model, np.stack([same, same, merit[0] / merit]))
+    words = f"from {GENERATOR} at {_faces(hot[0], cold[0])} (hot/cold face)"
+    if len(hot) > 1:
+        words = f"from {GENERATOR} at {len(hot)} points"
+    if np.ptp(mean) >= SMALLEST_SPAN:
+        words += (
+            f", straight lines in mean temperature from {format_quantity(float(mean.min()), 'temperature')} to "
+            f"{format_quantity(float(mean.max()), 'temperature')} and held beyond"
+        )
+    else:
+        words += ", constants without temperature dependence"
+    if len(hot) > 1:
+        words += f", largest residual {100 * residual:.1f} %"
+    apart = rating_deviations(numbers).max()
+    if apart > 0.0:
+        words += f", redundant numbers within {100 * apart:.1f} %"
+    words += f", conductance from an assumed Z T of {merit[0]:.3g}" if by_merit else ", conductance from the rated heat"
+    warnings: tuple[str, ...] = ()
+    if residual > LARGEST_DISAGREEMENT:
+        warnings = (f"A rated point lies {100 * residual:.1f} % from the fit through all points; check the points.",)
+    return _described(
+        batch,
+        model,
+        GENERATOR,
+        words,
+        lower=float(cold.min()),
+        upper=float(hot.max()),
+        warnings=warnings,
+        residual=residual,
+    )
+
+
+def _faces(hot: float, cold: float) -> str:
+    return f"{hot - 273.15:.6g}/{cold - 273.15:.6g} degC"

@@ -1,0 +1,115 @@
+"""Drawings by matplotlib: the same bytes for the same input, legible without colour."""
+
+from __future__ import annotations
+
+import io
+from pathlib import Path
+from typing import TYPE_CHECKING, Any
+
+from harvest.errors import InputError, MissingExtraError
+from harvest.model.module_curve import ModuleCurve
+from harvest.report.files import write_whole
+
+if TYPE_CHECKING:
+    from matplotlib.figure import Figure
+
+    from harvest.study.bench_record import BenchFit
+    from harvest.study.heat_pump_record import HeatPumpFit
+
+SUFFIXES = (".svg", ".png", ".pdf")
+# the Okabe-Ito colours, each with a line style of its own
+BLUE, VERMILION, GREEN = "#0072B2", "#D55E00", "#009E73"
+
+
+def new_figure(width: float, height: float) -> Figure:
+    """Return an empty figure [inch]; raises MissingExtraError without matplotlib."""
+    try:
+        import matplotlib as mpl
+        from matplotlib.figure import Figure
+    except ImportError:
+        raise MissingExtraError(
+            'a plot needs matplotlib, which is not installed; install it with pip install "harvest[plot]"'
+        ) from None
+    settings: dict[Any, Any] = {"svg.hashsalt": "harvest", "svg.fonttype": "none", "font.family": "DejaVu Sans"}
+    mpl.rcParams.update({**settings, "font.size": 9})
+    return Figure(figsize=(width, height), layout="constrained")
+
+
+def write_figure(path: Path, figure: Figure) -> None:
+    """Write a figure whole, in the format of the suffix; raises InputError for another suffix."""
+    suffix = path.suffix.lower()
+    if suffix not in SUFFIXES:
+        raise InputError(f"{path}: a plot ends in {', '.join(SUFFIXES)}")
+    metadata: dict[str, Any] = {".svg": {"Date": None}, ".pdf": {"CreationDate": None}, ".png": {}}[suffix]
+    content = io.BytesIO()
+    figure.savefig(content, format=suffix[1:], metadata=metadata, dpi=150)
+    write_whole(path, content.getvalue())
+
+
+def module_figure(title: str, curve: ModuleCurve, fit: BenchFit | HeatPumpFit | None = None) -> Figure:
+    """Voltage, power, efficiency and heat against current, figure of merit over temperature, residuals of a fit."""
+    figure = new_figure(8.0, 6.2 if fit is None else 9.0)
+    panels = figure.subplots(2 if fit is None else 3, 2)
+    (over_current, of_efficiency), (of_heat, of_merit) = panels[:2]
+    if fit is not None:
+        from harvest.study.bench_record import BenchFit
+
+        if isinstance(fit, BenchFit):
+            _draw_residuals(panels[2], fit)
+        else:
+            _draw_course(panels[2], fit)
+    over_current.plot(curve.current, curve.voltage, color=BLUE, label="voltage")
+    over_current.set(xlabel="current [A]", ylabel="voltage [V]")
+    of_power = over_current.twinx()
+    of_power.plot(curve.current, curve.power, color=VERMILION, linestyle="--", label="power")
+    of_power.set(ylabel="power [W]")
+    for point, mark, name in ((curve.matched, "o", "matched"), (curve.maximum_power, "D", "most power")):
+        of_power.plot(point.current, point.power, mark, color="black", markersize=5, fillstyle="none", label=name)
+    lines = [*over_current.get_lines(), *of_power.get_lines()]
+    over_current.legend(lines, [str(line.get_label()) for line in lines], loc="lower center", frameon=False)
+    of_efficiency.plot(curve.current, 100 * curve.efficiency, color=GREEN, linestyle="-.")
+    best = curve.best_efficiency
+    of_efficiency.plot(best.current, 100 * best.efficiency, "s", color="black", fillstyle="none", label="best")
+    of_efficiency.legend(frameon=False)
+    of_efficiency.set(xlabel="current [A]", ylabel="efficiency [%]")
+    of_heat.plot(curve.current, curve.heat_flow, color=BLUE, linestyle=":")
+    of_heat.set(xlabel="current [A]", ylabel="heat into the hot face [W]")
+    of_merit.plot(curve.temperatures - 273.15, curve.merit_curve, color=VERMILION)
+    of_merit.set(xlabel="temperature [degC]", ylabel="figure of merit Z T [-]", ylim=(0.0, None))
+    for axes in (over_current, of_efficiency, of_heat, of_merit):
+        axes.grid(color="0.85", linewidth=0.6)
+        axes.spines[["top"]].set_visible(False)
+    hot, cold = curve.hot_face_temperature - 273.15, curve.cold_face_temperature - 273.15
+    figure.suptitle(f"{title}: faces at {hot:.0f} and {cold:.0f} degC", fontsize=10)
+    return figure
+
+
+def _draw_residuals(panels: Any, fit: BenchFit) -> None:
+    """Residuals of voltages and of heats over their scatter, outliers crossed."""
+    for axes, wanted in zip(panels, ("voltage", "heat"), strict=True):
+        of_kind = [i for i, name in enumerate(fit.quantities) if wanted in name]
+        lines = [int(fit.lines[i]) for i in of_kind]
+        residuals = [float(fit.residuals[i]) for i in of_kind]
+        colours = [BLUE if fit.used[i] else VERMILION for i in of_kind]
+        for line, residual, colour, index in zip(lines, residuals, colours, of_kind, strict=True):
+            axes.plot(line, residual, "o" if fit.used[index] else "x", color=colour, markersize=4)
+        axes.axhline(0.0, color="black", linewidth=0.8)
+        axes.set(xlabel="line of the record", ylabel=f"{wanted} residual over scatter [-]")
+        axes.grid(color="0.85", linewidth=0.6)
+
+
+def _draw_course(panels: Any, fit: HeatPumpFit) -> None:
+    """Heats over time and the coefficient of performance with its standard error."""
+    heats, performance = panels
+    minutes = fit.time / 60.0
+    heats.plot(minutes, fit.pumped_heat, color=BLUE, label="pumped")
+    heats.plot(minutes, fit.delivered_heat, color=VERMILION, linestyle="--", label="delivered")
+    heats.plot(minutes, fit.electrical_power, color=GREEN, linestyle=":", label="electric")
+    heats.set(xlabel="time [min]", ylabel="heat flow, power [W]")
+    heats.legend(frameon=False)
+    performance.errorbar(
+        minutes, fit.coefficient_of_performance, fit.coefficient_of_performance_error, fmt="o", color=BLUE, markersize=3
+    )
+    performance.set(xlabel="time [min]", ylabel="coefficient of performance [-]")
+    for axes in (heats, performance):
+        axes.grid(color="0.85", linewidth=0.6)
