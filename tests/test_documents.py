@@ -9,7 +9,7 @@ from pathlib import Path
 import pytest
 
 from harvest.cli.commands import cli
-from harvest.model import assessment
+from harvest.model import checks
 from harvest.model.case import DECLARATIONS
 from harvest.model.estimate import estimate
 from harvest.model.reading import load_case
@@ -167,20 +167,20 @@ def test_checks_of_an_estimate_are_in_the_method() -> None:
 def test_limits_of_checks_are_those_of_the_code() -> None:
     section = _section("docs/method.md", "Checks of an estimate")
     for limit in (
-        f"| energy closure | {assessment.CLOSURE_LIMIT:g} of",
-        f"| grid | {100 * assessment.GRID_LIMIT:g} %",
-        f"| open-circuit voltage | {assessment.SHOCK_VOLTAGE:g} V",
-        f"with {assessment.BOILING_MARGIN:g} K of margin | fail; warn |\n| freezing",
-        f"with {assessment.FREEZING_MARGIN:g} K of margin | fail; warn |\n| water",
-        f"and {assessment.ACID_MARGIN:g} K more",
+        f"| energy closure | {checks.CLOSURE_LIMIT:g} of",
+        f"| grid | {100 * checks.GRID_LIMIT:g} %",
+        f"| open-circuit voltage | {checks.SHOCK_VOLTAGE:g} V",
+        f"with {checks.BOILING_MARGIN:g} K of margin | fail; warn |\n| freezing",
+        f"with {checks.FREEZING_MARGIN:g} K of margin | fail; warn |\n| water",
+        f"and {checks.ACID_MARGIN:g} K more",
         f"Re {LAMINAR_LIMIT:g} to {TURBULENT_LIMIT:g}; with offset strips none outside Re "
         f"{OFFSET_STRIP_REYNOLDS_RANGE[0]:g} to {OFFSET_STRIP_REYNOLDS_RANGE[1]:g}",
-        f"{assessment.FASTEST['liquid']:g} m/s of a liquid, {assessment.FASTEST['gas']:g} m/s of a gas",
-        f"| Mach number | {assessment.LARGEST_MACH:g} |",
-        f"{100 * assessment.LARGEST_DROP_SHARE:g} % of the inlet pressure",
-        f"| {1e3 * assessment.LARGEST_COUPLE_SEEBECK:g} mV/K |",
-        f"Z T of {assessment.LARGEST_MERIT:g} |",
-        f"| coverage | {100 * assessment.SMALLEST_COVERAGE:g} %",
+        f"{checks.FASTEST['liquid']:g} m/s of a liquid, {checks.FASTEST['gas']:g} m/s of a gas",
+        f"| Mach number | {checks.LARGEST_MACH:g} |",
+        f"{100 * checks.LARGEST_DROP_SHARE:g} % of the inlet pressure",
+        f"| {1e3 * checks.LARGEST_COUPLE_SEEBECK:g} mV/K |",
+        f"Z T of {checks.LARGEST_MERIT:g} |",
+        f"| coverage | {100 * checks.SMALLEST_COVERAGE:g} %",
     ):
         assert limit in section, limit
 

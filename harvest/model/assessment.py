@@ -1,4 +1,4 @@
-"""The checks of every estimate: closure, second law, grid, limits, hazards and plausibility."""
+"""The checks of every estimate: closure, second law, grid, loss of load and coolant, electricity, the case's limits."""
 
 from __future__ import annotations
 
@@ -7,55 +7,30 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from harvest.model.checks import FAIL, PASS, WARN, BatchCheck, graded
-from harvest.model.module import (
-    COOLER,
-    GENERATOR,
-    LARGEST_DISAGREEMENT,
-    cooler_heat_disagreement,
-    cooler_matched_powers,
+from harvest.model.checks import (
+    AT_LEAST,
+    CLOSURE_LIMIT,
+    FREEZING_MARGIN,
+    GRID_LIMIT,
+    PASS,
+    SHOCK_VOLTAGE,
+    SMALLEST_POWER,
+    WARN,
+    BatchCheck,
+    celsius,
+    for_all,
+    graded,
 )
-from harvest.model.pressure import handled_density
-from harvest.model.rated_side import rated_range
-from harvest.physics.arrays import BoolArray, FloatArray
-from harvest.physics.combustion import GAS_CONSTANT, sulphuric_acid_dew_point, sulphuric_acid_fraction, water_dew_point
-from harvest.physics.ducts import LAMINAR_LIMIT, OFFSET_STRIP_REYNOLDS_RANGE, TURBULENT_LIMIT
+from harvest.physics.arrays import FloatArray
 from harvest.physics.expansion import EXPANSION, differential_expansion
-from harvest.physics.films import Film, OffsetStripFilm
-from harvest.physics.natural_convection import FinnedSink
-from harvest.physics.rated import RatedFilm
 from harvest.physics.thermoelectrics import figure_of_merit, maximum_efficiency
 from harvest.quantities import format_quantity
 
 if TYPE_CHECKING:
-    from harvest.model.design import Stream
     from harvest.model.estimate import Solved
 
-CLOSURE_LIMIT = 1e-8
-GRID_LIMIT = 0.01
-AT_LEAST = "at least"
-SHOCK_VOLTAGE = 60.0
-LARGEST_COUPLE_SEEBECK = 0.5e-3
-LARGEST_MERIT = 2.0
-SMALLEST_COVERAGE = 0.5
-SMALLEST_DUCT_SHARE = 0.8
-LARGEST_ARITHMETIC_UNITS = 0.1
-LARGEST_CORRECTION = 0.05
-SOLDER_TEMPERATURE = 383.15
-SOLDER_MELTS = 411.15
-LARGEST_MACH = 0.3
-LARGEST_DROP_SHARE = 0.1
-BOILING_MARGIN = 10.0
-FREEZING_MARGIN = 3.0
-ACID_MARGIN = 15.0
-SMALLEST_POWER = 1e-9
-SPACING_SHARES = (0.7, 1.6)
-"""Fin spacing over the best one between which thin fins convect three quarters or more of the most."""
-FASTEST = {"liquid": 2.5, "gas": 40.0}
-
-
-def _kelvin(value: float) -> str:
-    return format_quantity(value, "temperature")
+from harvest.model.module_checks import checks_of_the_module, checks_of_the_module_data
+from harvest.model.stream_checks import checks_of_a_stream, checks_of_heat_sinks
 
 
 def assess(solved: Solved, scalars: dict[str, FloatArray], grid_effect: FloatArray) -> tuple[BatchCheck, ...]:
@@ -65,19 +40,19 @@ def assess(solved: Solved, scalars: dict[str, FloatArray], grid_effect: FloatArr
         *_of_temperatures(solved, scalars),
         *_of_lost_coolant(solved),
         *_of_electricity(solved, scalars),
-        *(check for stream in (solved.made.hot, solved.made.cold) for check in _of_a_stream(solved, scalars, stream)),
-        *_of_heat_sinks(solved),
+        *(
+            check
+            for stream in (solved.made.hot, solved.made.cold)
+            for check in checks_of_a_stream(solved, scalars, stream)
+        ),
+        *checks_of_heat_sinks(solved),
         *_of_limits(solved, scalars),
         *_of_standstill(solved),
         *_of_expansion(solved),
-        *_of_the_module(solved),
-        *_of_the_module_data(solved),
+        *checks_of_the_module(solved),
+        *checks_of_the_module_data(solved),
     ]
     return tuple(checks)
-
-
-def _fixed(solved: Solved, value: float) -> FloatArray:
-    return np.full(solved.made.batch.cases, value)
 
 
 def _of_the_solution(solved: Solved, scalars: dict[str, FloatArray], grid_effect: FloatArray) -> Iterator[BatchCheck]:
@@ -86,7 +61,7 @@ def _of_the_solution(solved: Solved, scalars: dict[str, FloatArray], grid_effect
         "energy closure",
         "dimensionless",
         closure,
-        _fixed(solved, CLOSURE_LIMIT),
+        for_all(solved, CLOSURE_LIMIT),
         graded(~(np.abs(closure) < CLOSURE_LIMIT)),
         lambda i: f"Heat in, heat out and electricity close to {abs(closure[i]):.1e} of the heat flow.",
     )
@@ -96,7 +71,7 @@ def _of_the_solution(solved: Solved, scalars: dict[str, FloatArray], grid_effect
         "second law",
         "conductance",
         entropy,
-        _fixed(solved, 0.0),
+        for_all(solved, 0.0),
         graded(~(entropy > -rounding)),
         lambda i: (
             f"The stack generates {format_quantity(entropy[i], 'conductance')} of entropy; it must not be negative."
@@ -108,7 +83,7 @@ def _of_the_solution(solved: Solved, scalars: dict[str, FloatArray], grid_effect
             "grid",
             "dimensionless",
             grid_effect,
-            _fixed(solved, GRID_LIMIT),
+            for_all(solved, GRID_LIMIT),
             graded(np.abs(grid_effect) > GRID_LIMIT, level=WARN),
             lambda i: f"Splitting every row in two changes the maximum power by {100 * grid_effect[i]:+.2f} %.",
         )
@@ -124,7 +99,7 @@ def _of_the_solution(solved: Solved, scalars: dict[str, FloatArray], grid_effect
         "efficiency ceiling",
         "dimensionless",
         share,
-        _fixed(solved, 1.0),
+        for_all(solved, 1.0),
         graded(share > 1.0 + 1e-9),
         lambda i: (
             f"The best row reaches {100 * share[i]:.0f} % of the closed-form ceiling of its junction temperatures."
@@ -136,7 +111,7 @@ def _of_the_solution(solved: Solved, scalars: dict[str, FloatArray], grid_effect
         "current direction",
         "dimensionless",
         count,
-        _fixed(solved, 0.0),
+        for_all(solved, 0.0),
         graded(count > 0, level=WARN),
         lambda i: (
             f"In {count[i]:.0f} rows the current runs against the module's own voltage: they work as coolers."
@@ -173,7 +148,7 @@ def _of_temperatures(solved: Solved, scalars: dict[str, FloatArray]) -> Iterator
             hottest,
             limit,
             graded(hottest > limit),
-            lambda i: f"The hottest module face is at {_kelvin(hottest[i])}; allowed is {_kelvin(limit[i])}.",
+            lambda i: f"The hottest module face is at {celsius(hottest[i])}; allowed is {celsius(limit[i])}.",
         )
         yield BatchCheck(
             "hot face without load",
@@ -182,7 +157,7 @@ def _of_temperatures(solved: Solved, scalars: dict[str, FloatArray]) -> Iterator
             limit,
             graded(opened > limit),
             lambda i: (
-                f"If the load is lost, the hot face rises by {opened[i] - hottest[i]:.0f} K to {_kelvin(opened[i])}, "
+                f"If the load is lost, the hot face rises by {opened[i] - hottest[i]:.0f} K to {celsius(opened[i])}, "
                 "because the current no longer carries heat away."
             ),
         )
@@ -195,7 +170,7 @@ def _of_temperatures(solved: Solved, scalars: dict[str, FloatArray]) -> Iterator
             coldest,
             of_cold,
             graded(coldest > of_cold),
-            lambda i: f"The warmest cold face is at {_kelvin(coldest[i])}; allowed is {_kelvin(of_cold[i])}.",
+            lambda i: f"The warmest cold face is at {celsius(coldest[i])}; allowed is {celsius(of_cold[i])}.",
         )
 
 
@@ -219,7 +194,7 @@ def _of_lost_coolant(solved: Solved) -> Iterator[BatchCheck]:
         face,
         limit,
         graded((face > limit) | np.isnan(face), level=WARN),
-        lambda i: f"If {what}, the hottest face settles at {_kelvin(face[i])}{judgement(i)}",
+        lambda i: f"If {what}, the hottest face settles at {celsius(face[i])}{judgement(i)}",
     )
     if cold.fluid is None or not np.isfinite(cold.table_value("boiling")).any():
         return
@@ -231,8 +206,8 @@ def _of_lost_coolant(solved: Solved) -> Iterator[BatchCheck]:
         boiling,
         graded((wall >= boiling) | np.isnan(wall), level=WARN),
         lambda i: (
-            f"If the cold stream stops, its wall settles at {_kelvin(wall[i])}; {cold.tables[0].label} boils at about "
-            f"{_kelvin(boiling[i])} at its inlet pressure"
+            f"If the cold stream stops, its wall settles at {celsius(wall[i])}; {cold.tables[0].label} boils at about "
+            f"{celsius(boiling[i])} at its inlet pressure"
             + ("; give the steam a way out and keep a closed loop relieved." if wall[i] >= boiling[i] else ".")
         ),
     )
@@ -255,8 +230,8 @@ def _standstill_check(side: str, label: str, surroundings: FloatArray, freezing:
         freezing,
         graded(wrong, level=WARN),
         lambda i: (
-            f"At standstill {label} takes the surroundings' {_kelvin(surroundings[i])}; it freezes at "
-            f"{_kelvin(freezing[i])}" + ("; drain it, warm it or take a glycol." if wrong[i] else ".")
+            f"At standstill {label} takes the surroundings' {celsius(surroundings[i])}; it freezes at "
+            f"{celsius(freezing[i])}" + ("; drain it, warm it or take a glycol." if wrong[i] else ".")
         ),
         bound=AT_LEAST,
     )
@@ -278,7 +253,7 @@ def _of_expansion(solved: Solved) -> Iterator[BatchCheck]:
         "thermal expansion",
         "length",
         growth,
-        _fixed(solved, np.nan),
+        for_all(solved, np.nan),
         np.full(batch.cases, PASS),
         lambda i: (
             f"Over {format_quantity(length[i], 'length')} plates that are {hot[i] - cold[i]:.0f} K warmer outgrow "
@@ -295,7 +270,7 @@ def _of_electricity(solved: Solved, scalars: dict[str, FloatArray]) -> Iterator[
         "open-circuit voltage",
         "voltage",
         highest,
-        _fixed(solved, SHOCK_VOLTAGE),
+        for_all(solved, SHOCK_VOLTAGE),
         graded(highest > SHOCK_VOLTAGE, level=WARN),
         lambda i: (
             f"Without load the string stands at {format_quantity(highest[i], 'voltage')}"
@@ -314,7 +289,7 @@ def _of_electricity(solved: Solved, scalars: dict[str, FloatArray]) -> Iterator[
             "converter window",
             "voltage",
             voltage,
-            _fixed(solved, window[0]),
+            for_all(solved, window[0]),
             graded(outside),
             lambda i: (
                 f"The terminal voltage is {format_quantity(voltage[i], 'voltage')}; the converter works from "
@@ -326,7 +301,7 @@ def _of_electricity(solved: Solved, scalars: dict[str, FloatArray]) -> Iterator[
             "converter without load",
             "voltage",
             highest,
-            _fixed(solved, window[1]),
+            for_all(solved, window[1]),
             graded(highest > window[1], level=WARN),
             lambda i: (
                 f"Without load {format_quantity(highest[i], 'voltage')} meet the converter's upper limit of "
@@ -339,7 +314,7 @@ def _of_electricity(solved: Solved, scalars: dict[str, FloatArray]) -> Iterator[
         "net power",
         "power",
         net,
-        _fixed(solved, 0.0),
+        for_all(solved, 0.0),
         graded(net <= 0, level=WARN),
         lambda i: (
             (
@@ -352,331 +327,6 @@ def _of_electricity(solved: Solved, scalars: dict[str, FloatArray]) -> Iterator[
         ),
         bound=AT_LEAST,
     )
-
-
-def _of_a_stream(solved: Solved, scalars: dict[str, FloatArray], stream: Stream) -> Iterator[BatchCheck]:
-    if stream.fluid is None or stream.film is None:
-        return
-    side, chosen = stream.name, solved.chosen
-    boundaries = chosen.state.hot_stream if side == "hot" else chosen.state.cold_stream
-    metal = chosen.hot_metal if side == "hot" else chosen.cold_metal
-    warmest, coldest = chosen.largest(metal), chosen.smallest(metal)
-    bulk_high, bulk_low = boundaries.max(axis=0), boundaries.min(axis=0)
-    lower, upper = stream.table_value("lower_limit"), stream.table_value("upper_limit")
-    label = stream.tables[0].label
-    yield BatchCheck(
-        f"{side} fluid range",
-        "temperature",
-        bulk_high,
-        upper,
-        graded((bulk_high > upper) | (bulk_low < lower)),
-        lambda i: (
-            f"The stream runs from {_kelvin(bulk_low[i])} to {_kelvin(bulk_high[i])}; {label} is served from "
-            f"{_kelvin(lower[i])} to {_kelvin(upper[i])}."
-        ),
-    )
-    boiling, freezing = stream.table_value("boiling"), stream.table_value("freezing")
-    if np.isfinite(boiling).any():
-        yield BatchCheck(
-            f"{side} boiling at the wall",
-            "temperature",
-            warmest,
-            boiling,
-            np.where(warmest >= boiling, FAIL, graded(warmest > boiling - BOILING_MARGIN, level=WARN)),
-            lambda i: (
-                f"The warmest wetted wall is at {_kelvin(warmest[i])}; {label} boils at about {_kelvin(boiling[i])} "
-                f"at its inlet pressure, {boiling[i] - warmest[i]:.0f} K of margin."
-            ),
-        )
-    if np.isfinite(freezing).any():
-        yield BatchCheck(
-            f"{side} freezing at the wall",
-            "temperature",
-            coldest,
-            freezing,
-            np.where(coldest <= freezing, FAIL, graded(coldest < freezing + FREEZING_MARGIN, level=WARN)),
-            lambda i: (
-                f"The coldest wetted wall is at {_kelvin(coldest[i])}; {label} freezes at {_kelvin(freezing[i])}."
-            ),
-            bound=AT_LEAST,
-        )
-    yield from _of_condensate(solved, stream, metal)
-    mean = 0.5 * (boundaries[:-1] + boundaries[1:])
-    yield from _of_the_description(solved, scalars, stream, mean)
-    yield from _of_the_drive(solved, scalars, stream)
-    gas = bool(np.isfinite(stream.table_value("molar_mass")).all())
-    if isinstance(stream.film, RatedFilm):
-        yield from _of_rated_blocks(solved, stream, stream.film, mean)
-    else:
-        yield from _of_passages(solved, stream, stream.film, mean, (bulk_low, bulk_high), gas)
-    drop = scalars[f"{side}_pressure_drop"]
-    part = drop / stream.pressure
-    yield BatchCheck(
-        f"{side} pressure drop share",
-        "dimensionless",
-        part,
-        _fixed(solved, LARGEST_DROP_SHARE),
-        np.where(part >= 1.0, FAIL, graded(part > LARGEST_DROP_SHARE, level=WARN)),
-        lambda i: (
-            f"The drop of {format_quantity(drop[i], 'pressure difference')} is {100 * part[i]:.2g} % of the inlet's "
-            "absolute pressure."
-        ),
-    )
-
-
-def _of_passages(
-    solved: Solved, stream: Stream, film: Film, mean: FloatArray, bulk: tuple[FloatArray, FloatArray], gas: bool
-) -> Iterator[BatchCheck]:
-    """Flow regime, velocity and Mach number in computed ducts; `mean` and lowest and highest `bulk` [K]."""
-    assert stream.fluid is not None
-    side, chosen, (bulk_low, bulk_high) = stream.name, solved.chosen, bulk
-    reynolds = film.reynolds(stream.fluid.viscosity(mean))
-    if isinstance(film, OffsetStripFilm):
-        low, high = OFFSET_STRIP_REYNOLDS_RANGE
-        odd: BoolArray = (reynolds < low) | (reynolds > high)
-        sentence = f"of {side} rows lie outside the offset-strip correlation, Re {low:.0f} to {high:.0f}."
-    else:
-        odd = (reynolds > LAMINAR_LIMIT) & (reynolds < TURBULENT_LIMIT)
-        sentence = (
-            f"of {side} rows lie in the transition between laminar and turbulent flow, where films are least sure."
-        )
-    share = (odd & (chosen.active > 0)).sum(axis=0) / chosen.active.sum(axis=0)
-    yield BatchCheck(
-        f"{side} flow regime",
-        "dimensionless",
-        share,
-        _fixed(solved, 0.0),
-        graded(share > 0, level=WARN),
-        lambda i: f"{100 * share[i]:.0f} % {sentence}",
-    )
-    fastest = FASTEST["gas" if gas else "liquid"]
-    density = stream.fluid.density(np.stack([bulk_low, bulk_high]))
-    velocity = (film.mass_flux / density).max(axis=0)
-    yield BatchCheck(
-        f"{side} velocity",
-        "speed",
-        velocity,
-        _fixed(solved, fastest),
-        graded(velocity > fastest, level=WARN),
-        lambda i: (
-            f"Up to {velocity[i]:.2f} m/s in the {side} ducts; common practice, no source, stays below {fastest:g} m/s."
-        ),
-    )
-    if gas:
-        capacity = stream.fluid.heat_capacity(bulk_high[None])[0]
-        specific = GAS_CONSTANT / stream.table_value("molar_mass")
-        sound = np.sqrt(capacity / (capacity - specific) * specific * bulk_high)
-        mach = velocity / sound
-        yield BatchCheck(
-            f"{side} Mach number",
-            "dimensionless",
-            mach,
-            _fixed(solved, LARGEST_MACH),
-            graded(mach > LARGEST_MACH, level=WARN),
-            lambda i: f"Mach {mach[i]:.3f}; above {LARGEST_MACH:g} the incompressible pressure drop no longer holds.",
-        )
-
-
-def _of_rated_blocks(solved: Solved, stream: Stream, film: RatedFilm, mean: FloatArray) -> Iterator[BatchCheck]:
-    """Flow through each rated block, and the flow at the rating that has the same Reynolds number."""
-    assert stream.fluid is not None
-    batch, side = solved.made.batch, stream.name
-    low, high = rated_range(batch, side)
-    alike = film.rated_flow_of_equal_reynolds(stream.fluid.viscosity(mean))
-    least, most = solved.chosen.smallest(alike), solved.chosen.largest(alike)
-    beyond = (least < low) | (most > high)
-    across = batch.number(f"{side}.duct.blocks_in_parallel")
-    yield BatchCheck(
-        f"{side} rated blocks",
-        "volume flow",
-        film.flow,
-        _fixed(solved, high),
-        graded(beyond, level=WARN),
-        lambda i: (
-            f"{format_quantity(film.flow[i], 'volume flow')} through each block, {across[i]:.0f} in parallel and "
-            f"{film.in_series[i]:.0f} in series in a duct, rated from {format_quantity(low, 'volume flow')} to "
-            f"{format_quantity(high, 'volume flow')}; by Reynolds number that is "
-            f"{format_quantity(least[i], 'volume flow')} to {format_quantity(most[i], 'volume flow')} at the rating"
-            + (", beyond the curve: its slope there is taken." if beyond[i] else ".")
-        ),
-    )
-
-
-def _of_the_drive(solved: Solved, scalars: dict[str, FloatArray], stream: Stream) -> Iterator[BatchCheck]:
-    """Where a pump or fan curve meets the resistance."""
-    batch, side = solved.made.batch, stream.name
-    curve = getattr(batch.base, side).drive_curve
-    if curve is None:
-        return
-    outlet = scalars[f"{side}_outlet_temperature"]
-    flow = stream.mass_flow / handled_density(batch, stream, outlet)
-    without = np.fmin(batch.number(f"{side}.circuit_flow"), curve.flows[-1])
-    drop = scalars[f"{side}_pressure_drop"]
-    yield BatchCheck(
-        f"{side} drive curve",
-        "volume flow",
-        flow,
-        without,
-        graded(flow < 0, PASS),
-        lambda i: (
-            f"The curve drives {format_quantity(flow[i], 'volume flow')} through the stack, which takes "
-            f"{format_quantity(drop[i], 'pressure difference')}"
-            + (
-                f"; without the stack the circuit has {format_quantity(without[i], 'volume flow')}."
-                if batch.given(f"{side}.circuit_flow")
-                else "; the rest of the circuit is not given and takes nothing."
-            )
-        ),
-    )
-
-
-def _of_heat_sinks(solved: Solved) -> Iterator[BatchCheck]:
-    """What heat sinks in still air ask of their place."""
-    made, chosen = solved.made, solved.chosen
-    if made.cold.sink is None:
-        return
-    batch, room = made.batch, made.cold.inlet_temperature
-    rise = chosen.largest(np.abs(chosen.cold_metal - room))
-    above = batch.number("stack.rows") * batch.number("stack.columns") > 1
-    yield BatchCheck(
-        "heat sink air",
-        "temperature difference",
-        rise,
-        _fixed(solved, np.nan),
-        graded(above, level=WARN),
-        lambda i: (
-            f"The warmest heat sink stands {format_quantity(rise[i], 'temperature difference')} above the room"
-            + (
-                "; each is taken in fresh room air: set them side by side, as one above another meets warmed air."
-                if above[i]
-                else " in fresh, still air with its fins vertical."
-            )
-        ),
-    )
-    if isinstance(made.cold.sink, FinnedSink):
-        yield _spacing_check(solved, made.cold.sink, rise)
-
-
-def _spacing_check(solved: Solved, sink: FinnedSink, rise: FloatArray) -> BatchCheck:
-    room = solved.made.cold.inlet_temperature
-    best = sink.optimum_spacing(room + rise, room)
-    share = sink.fin_spacing / best
-    low, high = SPACING_SHARES
-    odd = (share < low) | (share > high)
-    return BatchCheck(
-        "heat sink fin spacing",
-        "length",
-        sink.fin_spacing,
-        high * best,
-        graded(odd, level=WARN),
-        lambda i: (
-            f"Fins stand {format_quantity(sink.fin_spacing[i], 'length')} apart; at this rise thin fins of this height "
-            f"give most heat at {format_quantity(best[i], 'length')}."
-        ),
-    )
-
-
-def _of_the_description(
-    solved: Solved, scalars: dict[str, FloatArray], stream: Stream, mean: FloatArray
-) -> Iterator[BatchCheck]:
-    """What in a side's description limits the trust in its numbers."""
-    assert stream.fluid is not None and stream.film is not None
-    batch, side, chosen = solved.made.batch, stream.name, solved.chosen
-    if batch.base.stack.row_model == "arithmetic":
-        heat_capacity, viscosity, conductivity = stream.fluid.film_properties(mean)
-        problem = solved.made.problem
-        capacity = (problem.hot if side == "hot" else problem.cold).mass_flow * heat_capacity
-        units = chosen.largest(stream.film.conductance(heat_capacity, viscosity, conductivity) / capacity)
-        yield BatchCheck(
-            f"{side} row model",
-            "dimensionless",
-            units,
-            _fixed(solved, LARGEST_ARITHMETIC_UNITS),
-            graded(units > LARGEST_ARITHMETIC_UNITS, level=WARN),
-            lambda i: (
-                f"Up to {units[i]:.2g} film transfer units in one segment; the arithmetic row model holds to "
-                f'{LARGEST_ARITHMETIC_UNITS:g}: take row_model = "exponential" or more segments.'
-            ),
-        )
-    if getattr(batch.base, side).drive == "engine" and not batch.given(f"{side}.swept_volume_flow"):
-        power = scalars[f"{side}_drive_power"]
-        yield BatchCheck(
-            f"{side} engine power",
-            "power",
-            power,
-            _fixed(solved, np.nan),
-            np.full(batch.cases, WARN),
-            lambda i: (
-                f"{format_quantity(power[i], 'power', 3)} is an upper bound, taken from the exhaust's own volume flow; "
-                f"give {side}.swept_volume_flow."
-            ),
-        )
-    width = batch.number(f"{side}.duct.width") * batch.number(f"{side}.duct.passages", 1.0)
-    plate = batch.number("stack.columns") * batch.number("stack.column_pitch")
-    share = np.where(np.isnan(width), 1.0, width / plate)
-    if (share < SMALLEST_DUCT_SHARE).any():
-        yield BatchCheck(
-            f"{side} duct width",
-            "dimensionless",
-            share,
-            _fixed(solved, SMALLEST_DUCT_SHARE),
-            graded(share < SMALLEST_DUCT_SHARE, level=WARN),
-            lambda i: (
-                f"The passages cover {100 * share[i]:.0f} % of the plate, and the film is taken on all of it; give an "
-                f"area_ratio of about {share[i]:.2f} if the rest is not wetted."
-            ),
-            bound=AT_LEAST,
-        )
-
-
-def _of_condensate(solved: Solved, stream: Stream, metal: FloatArray) -> Iterator[BatchCheck]:
-    """Dew points of water and of sulphuric acid against the metal that the gas meets, row by row."""
-    water = stream.table_value("water_fraction")
-    if not (water > 0).any():
-        return
-    batch, side, segments = solved.made.batch, stream.name, solved.made.segments
-    coldest = solved.chosen.smallest(metal)
-
-    def wet_rows(i: int, limit: float) -> str:
-        wet = (metal[:, i] < limit) & (solved.chosen.active[:, i] > 0)
-        return f" in {-(-int(wet.sum()) // segments)} of {batch.number('stack.rows')[i]:.0f} rows"
-
-    dew = water_dew_point(water * stream.pressure)
-    yield BatchCheck(
-        f"{side} water dew point",
-        "temperature",
-        coldest,
-        dew,
-        graded(coldest < dew, level=WARN),
-        lambda i: (
-            f"The coldest gas-side wall is at {_kelvin(coldest[i])}; water condenses below {_kelvin(dew[i])}"
-            + (f"{wet_rows(i, dew[i])}; drain the condensate, which is acid." if coldest[i] < dew[i] else ".")
-        ),
-        bound=AT_LEAST,
-    )
-    sulphur = batch.number(f"{side}.fuel_sulphur", 0.0)
-    if (sulphur > 0).any():
-        fraction = sulphuric_acid_fraction(
-            getattr(batch.base, side).fuel,
-            stream.excess_air_ratio,
-            batch.number(f"{side}.intake_humidity", 0.0),
-            sulphur,
-            batch.number(f"{side}.sulphur_conversion", 0.0),
-        )
-        acid = sulphuric_acid_dew_point(water * stream.pressure, fraction * stream.pressure)
-        yield BatchCheck(
-            f"{side} acid dew point",
-            "temperature",
-            coldest,
-            acid + ACID_MARGIN,
-            graded(coldest < acid + ACID_MARGIN, level=WARN),
-            lambda i: (
-                f"The coldest gas-side wall is at {_kelvin(coldest[i])}; sulphuric acid condenses below about "
-                f"{_kelvin(acid[i])} (+-5 K){wet_rows(i, acid[i]) if coldest[i] < acid[i] else ''}; metal is "
-                f"kept {ACID_MARGIN:.0f} K above, common practice, no source."
-            ),
-            bound=AT_LEAST,
-        )
 
 
 def _of_limits(solved: Solved, scalars: dict[str, FloatArray]) -> Iterator[BatchCheck]:
@@ -703,148 +353,3 @@ def _limit_check(name: str, kind: str, value: FloatArray, limit: FloatArray, bou
         )
 
     return BatchCheck(name, kind, value, limit, graded(wrong), text, bound)
-
-
-def _of_the_module(solved: Solved) -> Iterator[BatchCheck]:
-    made, chosen = solved.made, solved.chosen
-    batch, module = made.batch, made.batch.base.module
-    couples = batch.number("module.couples") if module.legs is None else batch.number("module.legs.couples")
-    if np.isfinite(couples).any():
-        per_couple = chosen.largest(np.abs(chosen.seebeck)) / couples
-        yield BatchCheck(
-            "Seebeck of a couple",
-            "Seebeck coefficient",
-            per_couple,
-            _fixed(solved, LARGEST_COUPLE_SEEBECK),
-            graded(per_couple > LARGEST_COUPLE_SEEBECK, level=WARN),
-            lambda i: (
-                f"{1e3 * per_couple[i]:.3f} mV/K a couple"
-                + (
-                    "; common materials stay below 0.5 mV/K: check the Seebeck coefficient and the number of couples."
-                    if per_couple[i] > LARGEST_COUPLE_SEEBECK
-                    else ", within the reach of common materials."
-                )
-            ),
-        )
-    mean = 0.5 * (chosen.state.hot_junction + chosen.state.cold_junction)
-    merit = chosen.largest(figure_of_merit(chosen.seebeck, chosen.resistance, chosen.conductance) * mean)
-    yield BatchCheck(
-        "figure of merit",
-        "dimensionless",
-        merit,
-        _fixed(solved, LARGEST_MERIT),
-        graded(merit > LARGEST_MERIT, level=WARN),
-        lambda i: (
-            f"Z T of the module is {merit[i]:.3g}"
-            + ("; no module on the market comes near it." if merit[i] > LARGEST_MERIT else ".")
-        ),
-    )
-    lower, upper = made.module.lower, made.module.upper
-    if np.isfinite(upper) or lower > 0:
-        hottest = chosen.largest(np.maximum(chosen.state.hot_junction, chosen.state.cold_junction))
-        coldest = chosen.smallest(np.minimum(chosen.state.hot_junction, chosen.state.cold_junction))
-        yield BatchCheck(
-            "module data range",
-            "temperature",
-            hottest,
-            _fixed(solved, upper),
-            graded((hottest > upper) | (coldest < lower), level=WARN),
-            lambda i: (
-                f"Junctions run from {_kelvin(coldest[i])} to {_kelvin(hottest[i])}; the module's data hold from "
-                f"{_kelvin(lower)} to {_kelvin(upper)}."
-            ),
-        )
-    coverage = made.footprint_area / made.place_area
-    yield BatchCheck(
-        "coverage",
-        "dimensionless",
-        coverage,
-        _fixed(solved, SMALLEST_COVERAGE),
-        graded(coverage < SMALLEST_COVERAGE, level=WARN),
-        lambda i: (
-            f"Modules cover {100 * coverage[i]:.0f} % of the plates"
-            + (
-                "; heat must converge on them, and the wall's spreading decides."
-                if coverage[i] < SMALLEST_COVERAGE
-                else "."
-            )
-        ),
-        bound=AT_LEAST,
-    )
-    pressure = batch.number("stack.clamp_pressure")
-    force = pressure * made.footprint_area
-    layer = force * batch.number("stack.rows") * batch.number("stack.columns")
-    yield BatchCheck(
-        "clamping force",
-        "force",
-        force,
-        _fixed(solved, np.nan),
-        graded(force < 0, PASS),
-        lambda i: (
-            f"{format_quantity(pressure[i], 'pressure difference')} asks for {force[i] / 1e3:.2f} kN on a module and "
-            f"{layer[i] / 1e3:.1f} kN on a layer; plates and bolts must bear it evenly."
-        ),
-    )
-
-
-def _of_the_module_data(solved: Solved) -> Iterator[BatchCheck]:
-    """What the ratings say about themselves, and what a cooler suffers as a generator."""
-    made, chosen = solved.made, solved.chosen
-    batch, module = made.batch, made.module
-    if module.way == GENERATOR and len(batch.base.module.generator_rating or ()) > 1:
-        yield BatchCheck(
-            "module data, rated points",
-            "dimensionless",
-            _fixed(solved, module.residual),
-            _fixed(solved, LARGEST_DISAGREEMENT),
-            graded(_fixed(solved, module.residual) > LARGEST_DISAGREEMENT, level=WARN),
-            lambda _: f"The rated points lie within {100 * module.residual:.2g} % of the parameters taken from them.",
-        )
-    if module.way != COOLER:
-        return
-    apart = cooler_heat_disagreement(batch)
-    if np.isfinite(apart).any():
-        yield BatchCheck(
-            "module data, heat rating",
-            "dimensionless",
-            np.abs(apart),
-            _fixed(solved, LARGEST_DISAGREEMENT),
-            graded(np.abs(apart) > LARGEST_DISAGREEMENT, level=WARN),
-            lambda i: (
-                f"The stated heat rating differs by {100 * apart[i]:+.1f} % from the one that the other three imply, "
-                "and so do the parameters by the two extractions."
-            ),
-        )
-    hot, cold = chosen.state.hot_junction, chosen.state.cold_junction
-    corrected, uncorrected = (chosen.total(each) for each in cooler_matched_powers(batch, hot, cold))
-    flattery = np.where(corrected > 0, uncorrected / corrected - 1.0, 0.0)
-    yield BatchCheck(
-        "module data, rating temperature",
-        "dimensionless",
-        flattery,
-        _fixed(solved, LARGEST_CORRECTION),
-        graded(np.abs(flattery) > LARGEST_CORRECTION, level=WARN),
-        lambda i: (
-            f"Into a matched load at these temperatures the modules give {format_quantity(corrected[i], 'power')} with "
-            f"the parameters brought from the rating to the operating temperature, and "
-            f"{format_quantity(uncorrected[i], 'power')} ({100 * flattery[i]:+.0f} %) with those of the rating; "
-            f"{'the first are used.' if module.materials else 'the second are used, as the case asks.'}"
-        ),
-    )
-    hottest = np.maximum(chosen.largest(chosen.hot_face), solved.open_circuit.largest(solved.open_circuit.hot_face))
-    yield BatchCheck(
-        "module data, solder",
-        "temperature",
-        hottest,
-        _fixed(solved, SOLDER_TEMPERATURE),
-        graded(hottest > SOLDER_TEMPERATURE, level=WARN),
-        lambda i: (
-            f"A face of these coolers reaches {_kelvin(hottest[i])}, with or without load"
-            + (
-                f"; the bismuth-tin solder of many coolers melts at {_kelvin(SOLDER_MELTS)} and is kept below "
-                f"{_kelvin(SOLDER_TEMPERATURE)} (common practice, no source): ask what solder the part has."
-                if hottest[i] > SOLDER_TEMPERATURE
-                else "."
-            )
-        ),
-    )

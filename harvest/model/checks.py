@@ -1,14 +1,40 @@
-"""Checks of an estimate: each has a name, a value, a limit, a status and one sentence."""
+"""What a check is - a name, a value, a limit, a status and one sentence - and the limits that estimates are held to."""
 
 from __future__ import annotations
 
 from collections.abc import Callable
 from dataclasses import dataclass
+from typing import TYPE_CHECKING
 
 import numpy as np
 
 from harvest.physics.arrays import BoolArray, FloatArray, IntArray
+from harvest.quantities import format_quantity
 
+if TYPE_CHECKING:
+    from harvest.model.estimate import Solved
+
+CLOSURE_LIMIT = 1e-8
+GRID_LIMIT = 0.01
+AT_LEAST = "at least"
+SHOCK_VOLTAGE = 60.0
+LARGEST_COUPLE_SEEBECK = 0.5e-3
+LARGEST_MERIT = 2.0
+SMALLEST_COVERAGE = 0.5
+SMALLEST_DUCT_SHARE = 0.8
+LARGEST_ARITHMETIC_UNITS = 0.1
+LARGEST_CORRECTION = 0.05
+SOLDER_TEMPERATURE = 383.15
+SOLDER_MELTS = 411.15
+LARGEST_MACH = 0.3
+LARGEST_DROP_SHARE = 0.1
+BOILING_MARGIN = 10.0
+FREEZING_MARGIN = 3.0
+ACID_MARGIN = 15.0
+SMALLEST_POWER = 1e-9
+SPACING_SHARES = (0.7, 1.6)
+"""Fin spacing over the best one between which thin fins convect three quarters or more of the most."""
+FASTEST = {"liquid": 2.5, "gas": 40.0}
 PASS, WARN, FAIL = 0, 1, 2
 STATUS_NAMES = ("pass", "warn", "fail")
 
@@ -57,3 +83,13 @@ class BatchCheck:
 def graded(wrong: BoolArray, otherwise: int = PASS, level: int = FAIL) -> IntArray:
     """Return `level` where `wrong`, elsewhere `otherwise`."""
     return np.where(wrong, level, otherwise)
+
+
+def celsius(kelvin: float) -> str:
+    """Write a temperature [K] as a person reads it."""
+    return format_quantity(kelvin, "temperature")
+
+
+def for_all(solved: Solved, value: float) -> FloatArray:
+    """Return one number for every case of a solved batch, (cases,)."""
+    return np.full(solved.made.batch.cases, value)

@@ -9,10 +9,10 @@ from typing import Any
 import numpy as np
 
 from harvest.errors import InputError
-from harvest.model.assessment import ACID_MARGIN
 from harvest.model.batch import StreamBatch
 from harvest.model.case import GASES, Streams, case_hash
 from harvest.model.case_rules import FLOWS
+from harvest.model.checks import ACID_MARGIN
 from harvest.model.design import BETWEEN, Faults, stream_excess_air_ratio, stream_fluid, stream_mass_flow
 from harvest.physics.arrays import BoolArray, FloatArray, ObjectArray
 from harvest.physics.combustion import sulphuric_acid_dew_point, sulphuric_acid_fraction, water_dew_point
