@@ -333,15 +333,25 @@ def test_other_columns_are_left_and_said() -> None:
     assert record.remarks == ("columns not used: remark, clock",)
 
 
+@pytest.mark.parametrize("separator", [";", "\t"], ids=["semicolon", "tab"])
+def test_decimal_commas_are_read_where_commas_do_not_separate(separator: str) -> None:
+    header = HEADER.replace(", ", separator)
+    points = f"{header}\n" + separator.join(("150.5", "30.25", "6e0", "-3.5e-1", "2"))
+    read, by_point = (read_bench_record(text) for text in (points.replace(".", ","), points))
+    for name in ("hot_face_temperature", "cold_face_temperature", "open_circuit_voltage", "voltage", "current"):
+        assert getattr(read, name)[0] == getattr(by_point, name)[0], name
+
+
 def test_all_faults_at_once_with_their_lines() -> None:
     text = f"{HEADER}, load_resistance [ohm]\n150, 30, 6, x, 2\n# note\n30, 150, 6\n150, 30, 6, 3, nan\n150,,6\n"
     with pytest.raises(CaseError) as caught:
         read_bench_record(text)
     faults = caught.value.faults
-    assert len(faults) == 3
+    assert len(faults) == 4
     assert faults[0].startswith('record:2: voltage: "x" is not a finite number')
     assert faults[1].startswith('record:5: current: "nan"')
     assert faults[2] == "record:6: cold_face_temperature: empty; every reading needs it"
+    assert faults[3].startswith("record:4: the hot face is not hotter")
     with pytest.raises(CaseError) as caught:
         read_bench_record(f"{HEADER}, load_resistance [ohm]\n30, 150, 6\n150, 30, 6, 3\n150, 30, 6, , , 2\n")
     assert [fault.split(":")[1] for fault in caught.value.faults] == ["2", "3", "4"]
@@ -361,7 +371,9 @@ def test_all_faults_at_once_with_their_lines() -> None:
         (HEADER.replace("current [A]", "current") + "\n1,2\n", r"current: has no unit .* current \[A\]"),
         (HEADER.replace("[A]", "[V]") + "\n1,2\n", r"current: \[V\] is no unit of current"),
         (f"{HEADER}\n150, 30, 6, 3, 2, 7\n", "6 values for 5 columns; decimals are written with a point"),
-        (HEADER.replace(",", ";") + "\n150;30;6;3,5;2\n", 'voltage: "3,5" has a decimal comma; write 3.5'),
+        (f'{HEADER}\n150, 30, 6,"3,5", 2\n', 'voltage: "3,5" has a decimal comma; decimals are written'),
+        (f"{HEADER}\n" + "150,5, 30,2, 6, 3, 2\n" * 9, "^record:2: 7 values for 5 columns, and 8 more like it; decim"),
+        (HEADER.replace(",", ";") + "\n150;30;6;1.003,5;2\n", 'voltage: "1.003,5" is not a finite number'),
         (f"{HEADER}\n-300, 30, 6, 3, 2\n", "hot_face_temperature: not above 0 K"),
         (f'{HEADER}\n"150, 30, 6, 3, 2\n', "unreadable quotes"),
         (f"{HEADER}, heat_flow [W]\n150, 30, , , , 5\n", "a heat without current"),
@@ -409,10 +421,10 @@ def test_what_the_record_cannot_tell_is_said() -> None:
     nothing = np.full(24, np.nan)
     no_heat = fit_bench_record(replace(record, heat_flow=nothing))
     assert no_heat.names[:2] == ("seebeck", "resistance") and "conductance" not in no_heat.names
-    assert any(sentence.startswith("conductance: no heat was measured") for sentence in no_heat.unknown)
+    assert any(sentence.startswith("conductance unknown: no heat was measured") for sentence in no_heat.unknown)
     open_circuit = fit_bench_record(replace(record, heat_flow=nothing, voltage=nothing, current=nothing))
     assert open_circuit.names[0] == "seebeck" and "resistance" not in open_circuit.names
-    assert any(sentence.startswith("resistance: no current was measured") for sentence in open_circuit.unknown)
+    assert any(sentence.startswith("resistance unknown: no current was measured") for sentence in open_circuit.unknown)
     narrow = replace(
         record,
         hot_face_temperature=np.linspace(430.0, 440.0, 24),

@@ -13,6 +13,7 @@ from harvest.cli.commands import cli
 from harvest.errors import InputError
 from harvest.model.module_curve import module_curve
 from harvest.physics.thermoelectrics import maximum_efficiency
+from harvest.study.bench_record import BenchFit
 from harvest.study.modules import BesideRecord, load_module, thermal_mass
 
 EXAMPLES = Path(__file__).parents[1] / "examples"
@@ -148,7 +149,13 @@ def test_plots_are_the_same_bytes_and_another_suffix_is_refused(tmp_path: Path) 
         (("demo-bismuth-telluride-40", "--hot-face", "20 degC"), "not above"),
         (("demo-bismuth-telluride-40", "--hot-face", "150"), "hot-face"),
         (("demo-bismuth-telluride-40", "--coolant", "water"), "bench record"),
-        ((str(EXAMPLES / "heat-pump-record.csv"), "--hot-mass", "0.35 kg water"), "cold mass"),
+        ((str(EXAMPLES / "heat-pump-record.csv"), "--hot-mass", "0.35 kg water"), "give --hot-mass, --cold-mass and"),
+        ((str(EXAMPLES / "heat-pump-record.csv"),), "transient record: give --hot-mass, --cold-mass and --ambient"),
+        ((str(EXAMPLES / "heat-pump-record.csv"), "--hot-mass", "0.35 kg xenon"), "known here (water, air)"),
+        ((str(EXAMPLES / "bench-record.csv"), "--set", "module.resistance=1 ohm"), "--set goes with a case"),
+        ((str(EXAMPLES / "bench-record.csv"), "--figure-of-merit", "0.8"), "tells the conductance itself"),
+        (("demo-bismuth-telluride-40", "--hot-face", "50 degC"), "50 degC (323.15 K); give a hotter one"),
+        (("nope",), "bundled are demo-bismuth-telluride-40, "),
         ((str(EXAMPLES / "heat-pump-record.csv"), "--hot-mass", "much water"), "thermal mass"),
     ],
 )
@@ -166,3 +173,97 @@ def test_thermal_masses_are_read_with_fluid_or_heat_capacity() -> None:
         thermal_mass("water")
     with pytest.raises(InputError, match="bench record"):
         load_module("demo-bismuth-telluride-40", beside=BesideRecord(footprint="40 mm"))
+
+
+@pytest.fixture
+def without_heat(tmp_path: Path) -> Path:
+    """Readings of a module of 0.05 V/K and 2 ohm with a little scatter, no heat measured, one voltage wrong."""
+    rows = ["hot_face_temperature [degC];cold_face_temperature [degC];open_circuit_voltage [V];voltage [V];current [A]"]
+    for i in range(12):
+        difference, current = 60.0 + 4.0 * (i % 4), 0.2 + 0.1 * (i % 6)
+        open_circuit = 0.05 * difference * (1.0 + 0.002 * (-1) ** i)
+        voltage = (0.05 * difference - 2.0 * current) * (1.0 - 0.002 * (-1) ** (i // 2)) * (1.5 if i == 7 else 1.0)
+        cells = (25.0 + difference, 25.0, open_circuit, voltage, current)
+        rows.append(";".join(f"{cell:.4f}".replace(".", ",") for cell in cells))
+    path = tmp_path / "no-heat.csv"
+    path.write_text("\n".join(rows) + "\n", encoding="utf-8")
+    return path
+
+
+def test_a_record_without_heat_shows_what_it_tells(without_heat: Path, tmp_path: Path) -> None:
+    result = run(str(without_heat))
+    assert result.exit_code == 0, result.output
+    text = " ".join(result.output.split())
+    for words in ("seebeck", "95 % from", "Scatter of the readings", "outlier", "conductance unknown: no heat"):
+        assert words in text, words
+    assert "does not tell conductance; conductance unknown: no heat" in text
+    document = json.loads(run(str(without_heat), "--json").output)
+    assert document["curve"] is None and set(document["interval"]) == {"seebeck", "resistance"}
+    for name, value in (("seebeck", 0.05), ("resistance", 2.0)):
+        assert document["interval"][name]["value"] == pytest.approx(value, rel=0.02)
+    assert len(document["record"]["outliers"]) == 1
+    for option, name in (("--write", "new.toml"), ("--plot", "new.svg")):
+        refused = run(str(without_heat), option, str(tmp_path / name))
+        assert refused.exit_code == 2 and "--figure-of-merit" in refused.output
+        assert len(refused.output.strip().splitlines()) == 1 and not (tmp_path / name).exists()
+    with pytest.raises(InputError, match="does not tell conductance"):
+        load_module(str(without_heat))
+
+
+def test_an_assumed_figure_of_merit_gives_the_conductance_and_says_so(without_heat: Path, tmp_path: Path) -> None:
+    saved = tmp_path / "assumed.toml"
+    result = run(str(without_heat), "--figure-of-merit", "0.8", "--write", str(saved), "--json")
+    assert result.exit_code == 0, result.output
+    assert "conductance assumed, not measured" in " ".join(
+        run(str(without_heat), "--figure-of-merit", "0.8").output.split()
+    )
+    document = json.loads(result.output)
+    assert "conductance assumed" in document["source"] and "conductance" not in document["interval"]
+    parameters = {name: each["value"] for name, each in document["interval"].items()}
+    temperature = document["record"]["reference_temperature"]
+    expected = parameters["seebeck"] ** 2 * temperature / (parameters["resistance"] * 0.8)
+    assert document["conductance"] == pytest.approx(expected, rel=1e-9)
+    again = json.loads(run(str(saved), "--json").output)
+    assert again["conductance"] == pytest.approx(expected, rel=1e-9) and "assumed" in again["source"]
+    for wrong in ("0", "-1", "nan", "11"):
+        refused = run(str(without_heat), "--figure-of-merit", wrong)
+        assert refused.exit_code == 2 and "above 0 to 10" in refused.output
+
+
+def test_standard_input_is_a_record_or_a_case(constant: str) -> None:
+    by_file = json.loads(run(constant, "--json").output)
+    case = (EXAMPLES / "cooler-from-the-drawer.toml").read_text("utf-8")
+    for text in (CONSTANT, 'use = "demo-bismuth-telluride-40"\n', case):
+        result = CliRunner().invoke(cli, ["module", "-", "--json"], input=text)
+        assert result.exit_code == 0, result.output
+        if text == CONSTANT:
+            assert json.loads(result.output)["matched"] == by_file["matched"]
+    wrong = CliRunner().invoke(cli, ["module", "-"], input=CONSTANT.replace("2 ohm", "2 V"))
+    assert wrong.exit_code == 2 and wrong.output.startswith("harvest: stdin: module.resistance")
+
+
+def test_performance_stands_only_where_heat_is_pumped() -> None:
+    lines = run(*TRANSIENT).output.splitlines()
+    start = next(i for i, line in enumerate(lines) if "pumped W" in line)
+    rows = [line.split() for line in lines[start + 1 :][:10] if line.strip()[:1].isdigit()]
+    assert rows and all((float(row[1]) > 0.0 and float(row[3]) > 0.0) == (row[4] != "-") for row in rows)
+
+
+def test_a_bench_record_in_place_of_a_module_record_is_explained() -> None:
+    text = f'use = "{EXAMPLES / "bench-record.csv"}"\n'
+    wrong = CliRunner().invoke(cli, ["module", "-"], input=text)
+    assert wrong.exit_code == 2 and "--write" in wrong.output
+
+
+def test_an_outlier_does_not_flatten_the_residuals() -> None:
+    pytest.importorskip("matplotlib")
+    from harvest.report.plots import module_figure
+    from harvest.study.modules import curve_of
+
+    loaded = load_module(str(EXAMPLES / "bench-record.csv"))
+    assert isinstance(loaded.fit, BenchFit) and loaded.fit.outliers
+    used = np.abs(loaded.fit.residuals[loaded.fit.used]).max()
+    figure = module_figure("", curve_of(loaded, 423.15, 323.15), loaded.fit)
+    panels = [axes for axes in figure.axes if "residual" in axes.get_ylabel()]
+    assert len(panels) == 2 and all(axes.get_ylim()[1] < 2.0 * used for axes in panels)
+    assert sum(len(axes.texts) for axes in panels) == len(loaded.fit.outliers)

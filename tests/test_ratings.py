@@ -430,7 +430,7 @@ BAD: list[tuple[str, str, str, str]] = [
         '"301 K"',
         "maximum_temperature_difference: 301 K is not below the hot_side_temperature of 300 K",
     ),
-    (COOLER, '"70 K"', '"160 K"', "maximum_temperature_difference: 160 K below 300 K asks for Z T = 3.59"),
+    (COOLER, '"70 K"', '"160 K"', "maximum_temperature_difference: 160 K below 300 K asks for Z T = 4.90 there"),
     (COOLER, '"75 W"', '"750 W"', "maximum_heat: 750.0 W does not belong to the other three ratings, which imply 74.5"),
     (COOLER, '"7.6 A"', "7.6", "maximum_current: 7.6 has no unit"),
     (COOLER, '"7.6 A"', '"-7.6 A"', "maximum_current: "),
@@ -450,6 +450,8 @@ BAD: list[tuple[str, str, str, str]] = [
     (GENERATOR, "efficiency = 0.045", 'heat_flow = "40 W"', "[1].heat_flow: 40.00 W is not above the 42.56 W"),
     (GENERATOR, "efficiency = 0.045", 'heat_flow = "50 W"', "[1].heat_flow: asks for Z T = "),
     (GENERATOR, '"250 degC"', '"30 degC"', "[1].hot_face_temperature: 30.0 degC is not above the cold face"),
+    (GENERATOR, '"250 degC"', '"30 degC"', "is not above the cold face at 30.0 degC; correct one"),
+    (GENERATOR, '"250 degC"', '"20 degC"', "is not above the cold face at 30.0 degC; swap them or correct one"),
     (GENERATOR, 'matched_voltage = "4 V"', 'internal_resistance = "1.6 V"', "[1].internal_resistance: "),
 ]
 

@@ -476,7 +476,7 @@ def test_the_command_reports_and_writes_json() -> None:
         ({"hot_fouling": "1e-4"}, "hot-fouling"),
         ({"cold_fouling": "-1e-4 m^2 K/W"}, "cold-fouling: must not be negative"),
         ({"horizon": "0 h"}, "horizon: must be above zero"),
-        ({"part_load": ("0.5",)}, "part-load"),
+        ({"part_load": ("0.5",)}, "part-load: '0.5' is not FLOW:TEMPERATURE"),
         ({"part_load": ("0.5:3",)}, "part-load: '0.5:3' is not two shares"),
         ({"hot_plate": "cheese"}, "hot-plate: 'cheese' is not known; known are stainless steel"),
         ({"coldest_ambient": "-20 K"}, "coldest-ambient"),

@@ -17,6 +17,7 @@ from harvest.version import VERSION
 
 if TYPE_CHECKING:
     from harvest.model.case import Case, Streams
+    from harvest.study.modules import LoadedModule
 
 INTERRUPTED = 130
 
@@ -235,6 +236,12 @@ def fluid(name: str, temperatures: tuple[str, ...], pressure: str, as_json: bool
 @click.option("--cold-mass", default=None, help="Body on the cold side of a transient record.")
 @click.option("--ambient", default=None, help="Temperature around the bodies of a transient record.")
 @click.option("--footprint", default=None, help='Side of a module known by a bench record only, such as "40 mm".')
+@click.option(
+    "--figure-of-merit",
+    default=None,
+    type=float,
+    help="Z T assumed at the mean temperature of a bench record without heat, for its conductance.",
+)
 @click.option("--plot", default=None, type=click.Path(dir_okay=False), help="Draw the curves (.svg, .png, .pdf).")
 @click.option("--write", default=None, type=click.Path(dir_okay=False), help="Save a module record; a new file.")
 @click.option("--json", "as_json", is_flag=True, help="Write one JSON document, not the report.")
@@ -248,19 +255,28 @@ def module(
     cold_mass: str | None,
     ambient: str | None,
     footprint: str | None,
+    figure_of_merit: float | None,
     plot: str | None,
     write: str | None,
     as_json: bool,
 ) -> None:
     """Parameters of a module, where they come from, and its curves between two faces.
 
-    CASE-OR-MODULE is a case file, a module record, the name of a bundled one, or a bench record (CSV).
+    CASE-OR-MODULE is a case file, a module record, the name of a bundled one, a bench record (CSV), or - for a case or
+    module record from standard input.
     """
     from harvest.model.fluid import quantity_of
     from harvest.physics.fluids import FluidSpec
-    from harvest.report.documents import json_text, module_document
-    from harvest.report.module_sheet import module_report
-    from harvest.study.modules import BesideRecord, curve_of, load_module, thermal_mass
+    from harvest.report.documents import fit_document, json_text, module_document
+    from harvest.report.module_sheet import fit_report, module_report
+    from harvest.study.modules import (
+        BesideRecord,
+        PartlyKnownModule,
+        curve_of,
+        load_module_or_fit,
+        read_module,
+        thermal_mass,
+    )
 
     faces = [
         quantity_of(name, text, "temperature") for name, text in (("hot-face", hot_face), ("cold-face", cold_face))
@@ -271,8 +287,20 @@ def module(
         thermal_mass(cold_mass) if cold_mass else None,
         quantity_of("ambient", ambient, "temperature") if ambient else None,
         footprint,
+        figure_of_merit,
     )
-    loaded = load_module(module, overrides=overrides, beside=beside)
+    if module == "-":
+        loaded: LoadedModule | PartlyKnownModule = read_module(
+            _standard_input(), label="stdin", overrides=overrides, beside=beside
+        )
+    else:
+        loaded = load_module_or_fit(module, overrides=overrides, beside=beside)
+    if isinstance(loaded, PartlyKnownModule):
+        if plot is not None or write is not None:
+            raise InputError(loaded.unknown)
+        document = json_text(fit_document(loaded.fit, loaded.unknown)) if as_json else None
+        click.echo(document or fit_report(loaded.title, loaded.fit, loaded.unknown))
+        return
     curve = curve_of(loaded, *faces)
     if plot is not None:
         from harvest.report.plots import module_figure, write_figure

@@ -589,9 +589,8 @@ class StreamSide:
     circuit_flow: float | None = quantity(
         "volume flow",
         "Flow that the drive_curve gives without the stack: the rest of the circuit then takes the whole pressure "
-        "rise, which grows with the square of flow.",
+        "rise, which grows with the square of flow. Not given, the stack is the only resistance, which flatters.",
         default=None,
-        reason="the stack is the circuit's only resistance, which flatters the flow",
         above=0.0,
         maximum=1e6,
         applies=_MACHINE,

@@ -343,6 +343,20 @@ def prices_are_in_one_currency(values: Values) -> Faults:
         )
 
 
+def legs_fit_the_footprint(values: Values) -> Faults:
+    """Require legs that stand side by side on the module's face."""
+    if values["module.legs"] is None:
+        return
+    along, across = values["module.footprint"]
+    couples, area, face = values["module.legs.couples"], values["module.legs.area"], along * across
+    if 2 * couples * area > face * (1.0 + 1e-9):
+        yield (
+            "module.legs.area",
+            f"{2 * couples} legs of {_mm2(area)} need {_mm2(2 * couples * area)}, and the footprint has {_mm2(face)}; "
+            "decrease it or module.legs.couples",
+        )
+
+
 def module_range_is_ordered(values: Values) -> Faults:
     """Require the parameters' lowest temperature below their highest."""
     lower, upper = values["module.minimum_temperature"], values["module.maximum_temperature"]
@@ -438,6 +452,7 @@ RULES: tuple[Callable[[Values], Faults], ...] = (
     own_converters_suit_the_load,
     prices_are_in_one_currency,
     module_range_is_ordered,
+    legs_fit_the_footprint,
     module_is_described_once,
     cooler_ratings_agree,
     generator_ratings_agree,
@@ -455,3 +470,7 @@ def broken_rules(values: Values) -> Faults:
 
 def _mm(length: float) -> str:
     return f"{significant(length * 1e3, 4)} mm"
+
+
+def _mm2(area: float) -> str:
+    return f"{significant(area * 1e6, 4)} mm^2"

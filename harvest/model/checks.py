@@ -20,6 +20,8 @@ AT_LEAST = "at least"
 SHOCK_VOLTAGE = 60.0
 LARGEST_COUPLE_SEEBECK = 0.5e-3
 LARGEST_MERIT = 2.0
+FILL_FACTORS = (0.10, 0.80)
+"""Legs' share of the footprint between which modules are commonly built; common practice, no source."""
 SMALLEST_COVERAGE = 0.5
 SMALLEST_DUCT_SHARE = 0.8
 LARGEST_ARITHMETIC_UNITS = 0.1
@@ -88,6 +90,14 @@ def graded(wrong: BoolArray, otherwise: int = PASS, level: int = FAIL) -> IntArr
 def celsius(kelvin: float) -> str:
     """Write a temperature [K] as a person reads it."""
     return format_quantity(kelvin, "temperature")
+
+
+def solder_caution() -> str:
+    """Words for a cooler's face above `SOLDER_TEMPERATURE`."""
+    return (
+        f"the bismuth-tin solder of many coolers melts at {celsius(SOLDER_MELTS)} and is kept below "
+        f"{celsius(SOLDER_TEMPERATURE)} (common practice, no source): ask what solder the part has."
+    )
 
 
 def for_all(solved: Solved, value: float) -> FloatArray:

@@ -12,7 +12,7 @@ from harvest.errors import RangeError
 from harvest.model.batch import Batch, StreamBatch
 from harvest.model.case import DECLARATIONS, HEAT_SINK, RATED, limits_text
 from harvest.model.loads import MAXIMUM_POWER
-from harvest.model.module import DescribedModule, cooler_faults, described_module, footprint_area
+from harvest.model.module import DescribedModule, cooler_faults, described_module, fill_factor, footprint_area
 from harvest.model.property_store import stored_table
 from harvest.model.rated_side import arrangement_faults, rated_film
 from harvest.model.rating_rules import Contradiction
@@ -347,6 +347,10 @@ def _arrangement_faults(batch: Batch, faults: Faults) -> None:
     )
     faults.add(
         layers % batch.number("electrical.layers_in_series") != 0, "electrical.layers_in_series: must divide layers"
+    )
+    faults.add(
+        fill_factor(batch) > 1.0 + 1e-9,
+        "module.legs.area: the legs of all couples are larger than the footprint; decrease it or module.legs.couples",
     )
     for side in ("hot", "cold"):
         taken = batch.number(f"{side}.duct.width") * batch.number(f"{side}.duct.passages", 1.0)

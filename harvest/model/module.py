@@ -13,6 +13,7 @@ from harvest.model.materials import MaterialRecord, load_material
 from harvest.model.rating_rules import (
     Contradiction,
     cooler_contradictions,
+    cooler_merit,
     rating_deviations,
     rating_numbers,
 )
@@ -44,6 +45,39 @@ COOLER = "cooler ratings"
 GENERATOR = "generator ratings"
 LARGEST_DISAGREEMENT = 0.05
 """Relative disagreement of a module's data that is worth a warning."""
+SLENDERNESS = (0.3, 5.0)
+"""Length of a leg over its width between which legs are commonly built; common practice, no source."""
+SHORT_LEG = 1e-3
+"""Length of a leg [m] below which its contacts count."""
+COMMON_MERIT = 1.3
+"""Z T above which a cooler's ratings are worth a warning; common practice, no source."""
+
+
+@dataclass(frozen=True)
+class CoolerComparison:
+    """One cooler as a generator between two faces, whatever its case chooses, SI.
+
+    Matched-load power with the parameters `corrected` to the operating temperature and `uncorrected`, and the ratio of
+    the second to the first; `by_voltage` and `by_heat` the parameters as rated by the two extractions (`by_heat` None
+    and `stated_heat` NaN where no heat is stated); `implied_heat` the heat rating that the other three imply.
+    """
+
+    corrected_power: float
+    uncorrected_power: float
+    power_ratio: float
+    by_voltage: RatedParameters
+    by_heat: RatedParameters | None
+    implied_heat: float
+    stated_heat: float
+
+
+@dataclass(frozen=True)
+class RatedParameters:
+    """A module's parameters as rated: Seebeck coefficient [V/K], resistance [ohm], conductance [W/K]."""
+
+    seebeck: float
+    resistance: float
+    conductance: float
 
 
 @dataclass(frozen=True)
@@ -86,6 +120,12 @@ def footprint_area(batch: Batch) -> FloatArray:
     """Area of a module's face [m^2], (cases,)."""
     along, across = batch.base.module.footprint
     return np.full(batch.cases, along * across)
+
+
+def fill_factor(batch: Batch) -> FloatArray:
+    """Legs' share of the module's footprint [-], (cases,); NaN where the module is not described by its legs."""
+    couples, area = batch.number("module.legs.couples"), batch.number("module.legs.area")
+    return 2.0 * couples * area / footprint_area(batch)
 
 
 def _described(
@@ -160,7 +200,33 @@ def _of_legs(batch: Batch) -> DescribedModule:
         substrate,
         max(each.lower for each in materials),
         min(each.upper for each in materials),
+        _leg_warnings(batch),
     )
+
+
+def _leg_warnings(batch: Batch) -> tuple[str, ...]:
+    """What is odd in the geometry of the first case's legs."""
+    length, width = float(batch.number("module.legs.length")[0]), float(batch.number("module.legs.area")[0]) ** 0.5
+    warnings = []
+    slenderness, (low, high) = length / width, SLENDERNESS
+    if not low <= slenderness <= high:
+        warnings.append(
+            f"A leg's length is {slenderness:.2g} of its width; {low:g} to {high:g} is common practice (no source): "
+            "check its length and area."
+        )
+    thickness = float(batch.number("module.thickness")[0])
+    taken = length + 2.0 * float(batch.number("module.legs.substrate_thickness", 0.0)[0])
+    if taken > (1.0 + LARGEST_DISAGREEMENT) * thickness:
+        warnings.append(
+            f"Legs and two substrates are {format_quantity(taken, 'length')} thick together, and the module only "
+            f"{format_quantity(thickness, 'length')}: check length, substrate_thickness and thickness."
+        )
+    if length < SHORT_LEG and not batch.number("module.legs.contact_resistivity", 0.0)[0]:
+        warnings.append(
+            f"The contacts of legs of {format_quantity(length, 'length')} are taken without resistance, which flatters "
+            "short legs: give contact_resistivity."
+        )
+    return tuple(warnings)
 
 
 # ---- Cooler ratings
@@ -193,6 +259,33 @@ def cooler_matched_powers(batch: Batch, hot_face: FloatArray, cold_face: FloatAr
         matched_power(corrected[0], corrected[1], hot_face, cold_face),
         matched_power(uncorrected.seebeck_coefficient, uncorrected.resistance, hot_face, cold_face),
     )
+
+
+def cooler_comparison(
+    batch: Batch, hot_face_temperature: float, cold_face_temperature: float
+) -> CoolerComparison | None:
+    """Compare what the ratings of the first case's cooler give between two faces [K]; None for another module."""
+    if batch.base.module.cooler_rating is None:
+        return None
+    current, voltage, difference, heat, hot_side = _cooler_numbers(batch)
+    powers = cooler_matched_powers(
+        batch, np.full(batch.cases, hot_face_temperature), np.full(batch.cases, cold_face_temperature)
+    )
+    corrected, uncorrected = (float(each[0]) for each in powers)
+    by_heat = cooler_parameters_by_heat(current, heat, difference, hot_side)
+    return CoolerComparison(
+        corrected_power=corrected,
+        uncorrected_power=uncorrected,
+        power_ratio=uncorrected / corrected,
+        by_voltage=_first_case(cooler_parameters_by_voltage(current, voltage, difference, hot_side)),
+        by_heat=_first_case(by_heat) if np.isfinite(heat[0]) else None,
+        implied_heat=float(cooler_maximum_heat(current, voltage, difference, hot_side)[0]),
+        stated_heat=float(heat[0]),
+    )
+
+
+def _first_case(parameters: ModuleParameters) -> RatedParameters:
+    return RatedParameters(*(float(each[0]) for each in parameters))
 
 
 def _cooler_numbers(batch: Batch) -> tuple[FloatArray, ...]:
@@ -240,6 +333,12 @@ def _of_cooler_ratings(batch: Batch) -> DescribedModule:
         warnings.append(
             f"The stated heat rating differs by {100 * apart:+.1f} % from the one that the other three imply, "
             "and so do the parameters by the two extractions."
+        )
+    merit = float(cooler_merit(*(_cooler_numbers(batch)[each] for each in (0, 1, 2, 4)))[0])
+    if merit > COMMON_MERIT:
+        warnings.append(
+            f"The ratings ask for Z T = {merit:.2f} at their hot side temperature, and common bismuth telluride stays "
+            "near 1 (common practice, no source): check maximum_temperature_difference and that it has one stage."
         )
     if rating.temperature_dependence == "none":
         warnings.append(

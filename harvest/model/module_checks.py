@@ -9,18 +9,19 @@ import numpy as np
 
 from harvest.model.checks import (
     AT_LEAST,
+    FILL_FACTORS,
     LARGEST_CORRECTION,
     LARGEST_COUPLE_SEEBECK,
     LARGEST_MERIT,
     PASS,
     SMALLEST_COVERAGE,
-    SOLDER_MELTS,
     SOLDER_TEMPERATURE,
     WARN,
     BatchCheck,
     celsius,
     for_all,
     graded,
+    solder_caution,
 )
 from harvest.model.module import (
     COOLER,
@@ -28,6 +29,7 @@ from harvest.model.module import (
     LARGEST_DISAGREEMENT,
     cooler_heat_disagreement,
     cooler_matched_powers,
+    fill_factor,
 )
 from harvest.physics.thermoelectrics import figure_of_merit
 from harvest.quantities import format_quantity
@@ -37,7 +39,7 @@ if TYPE_CHECKING:
 
 
 def checks_of_the_module(solved: Solved) -> Iterator[BatchCheck]:
-    """Plausibility and range of the module's parameters, coverage of the plates, clamping."""
+    """Plausibility and range of the module's parameters, fill factor, coverage of the plates, clamping."""
     made, chosen = solved.made, solved.chosen
     batch, module = made.batch, made.batch.base.module
     couples = batch.number("module.couples") if module.legs is None else batch.number("module.legs.couples")
@@ -86,6 +88,8 @@ def checks_of_the_module(solved: Solved) -> Iterator[BatchCheck]:
                 f"{celsius(lower)} to {celsius(upper)}."
             ),
         )
+    if module.legs is not None:
+        yield _fill_check(solved)
     coverage = made.footprint_area / made.place_area
     yield BatchCheck(
         "coverage",
@@ -116,6 +120,23 @@ def checks_of_the_module(solved: Solved) -> Iterator[BatchCheck]:
             f"{format_quantity(pressure[i], 'pressure difference')} asks for {force[i] / 1e3:.2f} kN on a module and "
             f"{layer[i] / 1e3:.1f} kN on a layer; plates and bolts must bear it evenly."
         ),
+    )
+
+
+def _fill_check(solved: Solved) -> BatchCheck:
+    filled = fill_factor(solved.made.batch)
+    low, high = FILL_FACTORS
+    sparse, dense = filled < low, filled > high
+
+    def text(i: int) -> str:
+        said = f"Legs fill {100 * filled[i]:.0f} % of the module's footprint"
+        if not sparse[i] and not dense[i]:
+            return f"{said}."
+        usual = f"{100 * low:.0f} to {100 * high:.0f} % is common practice (no source)"
+        return f"{said}; {usual}: check couples, area of a leg and footprint."
+
+    return BatchCheck(
+        "fill factor", "dimensionless", filled, for_all(solved, high), graded(sparse | dense, level=WARN), text
     )
 
 
@@ -172,11 +193,6 @@ def checks_of_the_module_data(solved: Solved) -> Iterator[BatchCheck]:
         graded(hottest > SOLDER_TEMPERATURE, level=WARN),
         lambda i: (
             f"A face of these coolers reaches {celsius(hottest[i])}, with or without load"
-            + (
-                f"; the bismuth-tin solder of many coolers melts at {celsius(SOLDER_MELTS)} and is kept below "
-                f"{celsius(SOLDER_TEMPERATURE)} (common practice, no source): ask what solder the part has."
-                if hottest[i] > SOLDER_TEMPERATURE
-                else "."
-            )
+            + (f"; {solder_caution()}" if hottest[i] > SOLDER_TEMPERATURE else ".")
         ),
     )

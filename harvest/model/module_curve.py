@@ -9,7 +9,15 @@ import numpy as np
 from harvest.errors import InputError, NoAnswerError
 from harvest.model.batch import Batch
 from harvest.model.case import Case
-from harvest.model.module import DescribedModule, described_module
+from harvest.model.checks import LARGEST_MERIT, SOLDER_TEMPERATURE, celsius, solder_caution
+from harvest.model.module import (
+    COOLER,
+    CoolerComparison,
+    DescribedModule,
+    cooler_comparison,
+    described_module,
+    fill_factor,
+)
 from harvest.physics.arrays import FloatArray
 from harvest.physics.thermoelectrics import figure_of_merit, hot_junction_heat, maximum_efficiency
 from harvest.quantities import format_quantity
@@ -37,7 +45,8 @@ class ModuleCurve:
     """A module between two fixed faces. Curves are arrays over `current`, from open to short circuit; SI.
 
     `seebeck`, `resistance`, `conductance` and `figure_of_merit` (Z T) are those at `mean_temperature` [K] without
-    current; `temperatures` and `merit_curve` give Z T over the module's range.
+    current; `temperatures` and `merit_curve` give Z T over the module's range. `fill_factor` [-] is the legs' share of
+    the footprint, NaN where there are no legs; `cooler` is None where there are no cooler ratings.
     """
 
     hot_face_temperature: float
@@ -48,6 +57,8 @@ class ModuleCurve:
     conductance: float
     figure_of_merit: float
     maximum_efficiency: float
+    fill_factor: float
+    cooler: CoolerComparison | None
     way: str
     source: str
     warnings: tuple[str, ...]
@@ -153,6 +164,19 @@ def _beyond(module: DescribedModule, hot: float, cold: float) -> tuple[str, ...]
     return (f"The parameters hold from {lower} to {upper}, and the faces lie partly outside.",)
 
 
+def _at_these_faces(case: Case, module: DescribedModule, hot: float, merit: float) -> tuple[str, ...]:
+    """Say what the hot face [K] or a Z T [-] at these faces asks of the module that it cannot bear or be."""
+    found = []
+    allowed = case.module.maximum_hot_face_temperature
+    if allowed is not None and hot > allowed:
+        found.append(f"The hot face at {celsius(hot)} is above the {celsius(allowed)} that the module bears for long.")
+    if module.way == COOLER and hot > SOLDER_TEMPERATURE:
+        found.append(f"A face of this cooler is at {celsius(hot)}; {solder_caution()}")
+    if merit > LARGEST_MERIT:
+        found.append(f"Z T of the module is {merit:.3g}; no module on the market comes near it.")
+    return tuple(found)
+
+
 def module_curve(
     case: Case, hot_face_temperature: float = DEFAULT_HOT_FACE, cold_face_temperature: float = DEFAULT_COLD_FACE
 ) -> ModuleCurve:
@@ -161,10 +185,13 @@ def module_curve(
     Raises InputError where the hot face is not the hotter one, NoAnswerError where there is no steady state.
     """
     if not hot_face_temperature > cold_face_temperature > 0:
-        raise InputError(
-            f"hot face {hot_face_temperature:.6g} K is not above the cold face {cold_face_temperature:.6g} K; swap them"
+        hot_text, cold_text = (
+            f"{each - 273.15:.6g} degC ({each:.6g} K)" for each in (hot_face_temperature, cold_face_temperature)
         )
-    module = described_module(Batch(case))
+        advice = "swap them" if hot_face_temperature < cold_face_temperature else "give a hotter one"
+        raise InputError(f"hot face at {hot_text} is not above the cold face at {cold_text}; {advice}")
+    batch = Batch(case)
+    module = described_module(batch)
     faces = _Faces(module, hot_face_temperature, cold_face_temperature)
     with np.errstate(divide="ignore", invalid="ignore"):
         short = faces.short_circuit()
@@ -189,9 +216,15 @@ def module_curve(
             conductance=conductance,
             figure_of_merit=merit,
             maximum_efficiency=float(ceiling),
+            fill_factor=float(fill_factor(batch)[0]),
+            cooler=cooler_comparison(batch, hot_face_temperature, cold_face_temperature),
             way=module.way,
             source="; ".join(filter(None, (module.provenance, case.module.source))),
-            warnings=(*module.warnings, *_beyond(module, hot_face_temperature, cold_face_temperature)),
+            warnings=(
+                *module.warnings,
+                *_beyond(module, hot_face_temperature, cold_face_temperature),
+                *_at_these_faces(case, module, hot_face_temperature, merit),
+            ),
             current=current,
             voltage=voltage,
             power=power,

@@ -52,6 +52,11 @@ def rating_numbers(points: Sequence[GeneratorRating]) -> dict[str, FloatArray]:
     }
 
 
+def cooler_merit(current: FloatArray, voltage: FloatArray, difference: FloatArray, hot_side: FloatArray) -> FloatArray:
+    """Z T [-] at the hot side temperature that ratings of coolers [A, V, K, K] ask for, (cases,)."""
+    return figure_of_merit(*cooler_parameters_by_voltage(current, voltage, difference, hot_side)) * hot_side
+
+
 def cooler_contradictions(
     current: FloatArray, voltage: FloatArray, difference: FloatArray, heat: FloatArray, hot_side: FloatArray
 ) -> Iterator[Contradiction]:
@@ -64,14 +69,13 @@ def cooler_contradictions(
             "the cold side would have no temperature left"
         ),
     )
-    merit = figure_of_merit(*cooler_parameters_by_voltage(current, voltage, difference, hot_side))
-    merit = merit * (hot_side - 0.5 * difference)
+    merit = cooler_merit(current, voltage, difference, hot_side)
     yield Contradiction(
         merit > LARGEST_MERIT,
         "maximum_temperature_difference",
         lambda i: (
-            f"{difference[i]:.6g} K below {hot_side[i]:.6g} K asks for Z T = {merit[i]:.2f}, and no single stage comes "
-            f"near {LARGEST_MERIT:g}; give the ratings of a single-stage part"
+            f"{difference[i]:.6g} K below {hot_side[i]:.6g} K asks for Z T = {merit[i]:.2f} there, and no single stage "
+            f"comes near {LARGEST_MERIT:g}; give the ratings of a single-stage part"
         ),
     )
     implied = cooler_maximum_heat(current, voltage, difference, hot_side)
@@ -93,7 +97,7 @@ def generator_contradictions(numbers: Mapping[str, FloatArray], merit: float | N
         "hot_face_temperature",
         lambda i: (
             f"{format_quantity(hot[i], 'temperature')} is not above the cold face at "
-            f"{format_quantity(cold[i], 'temperature')}; swap them or correct one"
+            f"{format_quantity(cold[i], 'temperature')}; {'swap them or ' if hot[i] < cold[i] else ''}correct one"
         ),
     )
     yield from _electrical_contradictions(numbers)

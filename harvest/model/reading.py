@@ -70,6 +70,7 @@ FLUID_COLUMNS = {
 CONSTANT_FLUID_TEMPERATURE = 300.0
 MOST_CURVE_POINTS = 1000
 MOST_SUGGESTIONS = 50
+LEG_MATERIALS = ("n_material", "p_material")
 LARGEST_EXPONENT = 4.0
 NOT_JUDGED: dict[type, type] = {Streams: Case, StreamSide: Side}
 """Sections that are read in part, with the section whose other fields may stand there without being judged."""
@@ -297,6 +298,7 @@ class _Reading:
     def __init__(self, label: str, folder: Path, origins: dict[str, Origin]) -> None:
         self.label = label
         self.folder = folder
+        self.record_folders: dict[str, Path] = {}  # where paths start that stand in a record, by field
         self.origins = origins
         self.values = Values()
         self.assumed: list[str] = []
@@ -470,7 +472,7 @@ class _Reading:
         if form == "text":
             return _text(raw)
         if form == "file":
-            return _file(_text(raw), kind, self.folder)
+            return _file(_text(raw), kind, self.record_folders.get(path, self.folder))
         if form == "boolean":
             if not isinstance(raw, bool):
                 raise QuantityError(f"{shown(raw)} is not true or false; write it without quotes")
@@ -520,7 +522,13 @@ class _Reading:
 
     def with_record(self, module: Mapping[str, Any]) -> Mapping[str, Any]:
         """Merge the module's fields over those of its record; raises InputError."""
-        path = Path(_file(_text(module["use"]), "modules", self.folder))
+        use = _text(module["use"])
+        if use.lower().endswith(".csv"):
+            raise InputError(
+                f"{shown(use)} is a bench record and no module record; make one of it by "
+                "harvest module FILE.csv --write FILE.toml, and use that"
+            )
+        path = Path(_file(use, "modules", self.folder))
         if not path.is_absolute():
             path = _bundled(str(path), "modules")
         state = path.stat()
@@ -531,6 +539,10 @@ class _Reading:
             others = {*MODULE_WAYS, *(path.rpartition(".")[2] for path in CURVES)} - {*own}
             record = {name: value for name, value in record.items() if name not in others}
         merged = {**record, **module}
+        own_legs = module.get("legs")
+        for material in LEG_MATERIALS:
+            if not (isinstance(own_legs, Mapping) and material in own_legs):
+                self.record_folders[f"module.legs.{material}"] = path.parent
         for way in own:
             if isinstance(inside := module[way], Mapping) and isinstance(below := record.get(way), Mapping):
                 merged[way] = {**below, **inside}
@@ -544,12 +556,8 @@ def _record(path: Path, modified: int, size: int) -> tuple[dict[str, Any], dict[
     record = toml_document(text, path.name)
     if "use" in record:
         raise InputError(f"{path.name}: use: a record describes a module itself; remove it")
-    legs = record.get("legs", {})
-    if not isinstance(legs, dict):
+    if not isinstance(record.get("legs", {}), dict):
         raise InputError(f"{path.name}: legs: is a section; write [legs] and its fields below it")
-    for material in ("n_material", "p_material"):
-        if isinstance(legs.get(material), str):  # a path in a record starts from the record
-            legs[material] = _file(legs[material], "materials", path.parent)
     return record, key_lines(text)
 
 

@@ -136,6 +136,21 @@ MODULE_KINDS = {
     "conductance": "conductance",
     "figure_of_merit": "dimensionless",
     "maximum_efficiency": "dimensionless",
+    "fill_factor": "dimensionless",
+    "cooler.corrected_power": "power",
+    "cooler.uncorrected_power": "power",
+    "cooler.power_ratio": "dimensionless",
+    "cooler.implied_heat": "power",
+    "cooler.stated_heat": "power",
+    **{
+        f"cooler.{extraction}.{name}": kind
+        for extraction in ("by_voltage", "by_heat")
+        for name, kind in (
+            ("seebeck", "Seebeck coefficient"),
+            ("resistance", "resistance"),
+            ("conductance", "conductance"),
+        )
+    },
     "curve.current": "current",
     "curve.voltage": "voltage",
     "curve.power": "power",
@@ -153,11 +168,28 @@ def module_document(curve: ModuleCurve, fit: BenchFit | HeatPumpFit | None) -> d
     document["curve"] = {name: document.pop(name) for name in arrays}
     document["interval"] = None
     if fit is not None:
-        names = zip(fit.names, fit.values, fit.lower, fit.upper, fit.standard_errors, strict=True)
-        document["interval"] = {
-            name: {"value": plain(value), "lower": plain(low), "upper": plain(high), "standard_error": plain(error)}
-            for name, value, low, high, error in names
-        }
-        document["record"] = plain(fit)
+        document |= {"interval": _intervals(fit), "record": plain(fit)}
     document["units"] = {name: unit_of(kind) for name, kind in MODULE_KINDS.items()}
     return document
+
+
+def fit_document(fit: BenchFit | HeatPumpFit, unknown: str) -> dict[str, Any]:
+    """What a bench record tells that does not tell every parameter: no curve, and why in `unknown`."""
+    return {
+        "way": "bench record",
+        "source": fit.provenance,
+        "unknown": unknown,
+        "curve": None,
+        "interval": _intervals(fit),
+        "record": plain(fit),
+        "units": {name: unit_of(MODULE_KINDS[name]) for name in ("seebeck", "resistance", "conductance")},
+    }
+
+
+def _intervals(fit: BenchFit | HeatPumpFit) -> dict[str, Any]:
+    """Fitted parameters with their intervals, by name."""
+    names = zip(fit.names, fit.values, fit.lower, fit.upper, fit.standard_errors, strict=True)
+    return {
+        name: {"value": plain(value), "lower": plain(low), "upper": plain(high), "standard_error": plain(error)}
+        for name, value, low, high, error in names
+    }

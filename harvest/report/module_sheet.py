@@ -5,6 +5,7 @@ from __future__ import annotations
 import math
 from typing import TYPE_CHECKING
 
+from harvest.model.module import CoolerComparison
 from harvest.model.module_curve import ModuleCurve, OperatingPoint
 from harvest.quantities import format_quantity
 from harvest.report.layout import heading, pairs, table, wrapped
@@ -54,7 +55,8 @@ def _steady(fit: BenchFit) -> list[str]:
 
 def _transient(fit: HeatPumpFit) -> list[str]:
     """What a transient record tells: heats and coefficient of performance over time, and the parameters."""
-    known = [i for i in range(len(fit.time)) if math.isfinite(fit.coefficient_of_performance[i])]
+    known = [i for i in range(len(fit.time)) if math.isfinite(fit.balance_error[i])]
+    pumps = fit.pumps
     shown = known[:: max(1, len(known) // SHOWN)]
     rows = [
         (
@@ -62,8 +64,8 @@ def _transient(fit: HeatPumpFit) -> list[str]:
             f"{fit.pumped_heat[i]:.2f}",
             f"{fit.delivered_heat[i]:.2f}",
             f"{fit.electrical_power[i]:.2f}",
-            f"{fit.coefficient_of_performance[i]:.3f}",
-            f"{fit.coefficient_of_performance_error[i]:.2g}",
+            f"{fit.coefficient_of_performance[i]:.3f}" if pumps[i] else "-",
+            f"{fit.coefficient_of_performance_error[i]:.2g}" if pumps[i] else "-",
             f"{fit.balance_error[i]:+.2f}",
         )
         for i in shown
@@ -72,6 +74,7 @@ def _transient(fit: HeatPumpFit) -> list[str]:
     return [
         heading("Driven as a heat pump"),
         *table(("s", "pumped W", "delivered W", "electric W", "COP", "+-", "balance W"), rows),
+        wrapped("  ", "A coefficient of performance (COP) stands only where electricity pumps heat; - elsewhere."),
         wrapped("  ", f"Over the record, heat and electricity close to {100 * fit.energy_balance_error:+.1f} %."),
         wrapped("  ", f"{ratio}: {fit.temperature_change_ratio_meaning}."),
         heading("Fitted, SI"),
@@ -86,6 +89,35 @@ def _fitted(fit: BenchFit | HeatPumpFit) -> list[str]:
 
     lines = _steady(fit) if isinstance(fit, BenchFit) else _transient(fit)
     return [*lines, *(wrapped("  - ", text) for text in (*fit.unknown, *fit.remarks))]
+
+
+def _cooler(found: CoolerComparison) -> list[str]:
+    """What the correction to these faces changes, and how the two extractions of a cooler's ratings compare."""
+    extractions = [("current, voltage, difference", found.by_voltage), ("current, heat, difference", found.by_heat)]
+    rows = [
+        (name, f"{each.seebeck:.5g}", f"{each.resistance:.5g}", f"{each.conductance:.5g}")
+        for name, each in extractions
+        if each is not None
+    ]
+    stated = "none stated"
+    if math.isfinite(found.stated_heat):
+        stated = f"{format_quantity(found.stated_heat, 'power', 4)} stated"
+    return [
+        heading("What the ratings say"),
+        *pairs(
+            [
+                ("matched load", f"{format_quantity(found.corrected_power, 'power', 4)} corrected to these faces"),
+                (
+                    "",
+                    f"{format_quantity(found.uncorrected_power, 'power', 4)} uncorrected, as rated: "
+                    f"{found.power_ratio:.3f} of the corrected",
+                ),
+                ("heat rating", f"{format_quantity(found.implied_heat, 'power', 4)} implied by the others, {stated}"),
+            ]
+        ),
+        "",
+        *table(("parameters as rated, from", "a V/K", "R ohm", "K W/K"), rows),
+    ]
 
 
 def module_report(title: str, curve: ModuleCurve, fit: BenchFit | HeatPumpFit | None = None) -> str:
@@ -120,6 +152,11 @@ def module_report(title: str, curve: ModuleCurve, fit: BenchFit | HeatPumpFit | 
                 ("resistance", format_quantity(curve.resistance, "resistance")),
                 ("conductance", format_quantity(curve.conductance, "conductance")),
                 ("figure of merit Z T", f"{curve.figure_of_merit:.3f}"),
+                *(
+                    [("fill factor", f"{100 * curve.fill_factor:.1f} % of the footprint is legs")]
+                    if math.isfinite(curve.fill_factor)
+                    else []
+                ),
             ]
         ),
         *(_fitted(fit) if fit is not None else []),
@@ -135,9 +172,16 @@ def module_report(title: str, curve: ModuleCurve, fit: BenchFit | HeatPumpFit | 
         ),
         "",
         *table(("A", "V", "W", "heat W", "%"), rows),
+        *(_cooler(curve.cooler) if curve.cooler is not None else []),
         heading("Figure of merit over temperature"),
         *table(("degC", "Z T"), merits),
     ]
     if curve.warnings:
         lines += [heading("Warnings"), *(wrapped("  - ", text) for text in curve.warnings)]
     return "\n".join(lines)
+
+
+def fit_report(title: str, fit: BenchFit | HeatPumpFit, unknown: str) -> str:
+    """The report of a bench record that does not tell every parameter, with the sentence on what is `unknown`."""
+    lines = [title, "=" * len(title), "", wrapped("", f"Parameters {fit.provenance}."), *_fitted(fit)]
+    return "\n".join([*lines, heading("No curves"), wrapped("  ", f"{unknown}.")])

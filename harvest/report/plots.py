@@ -85,14 +85,22 @@ def module_figure(title: str, curve: ModuleCurve, fit: BenchFit | HeatPumpFit | 
 
 
 def _draw_residuals(panels: Any, fit: BenchFit) -> None:
-    """Residuals of voltages and of heats over their scatter, outliers crossed."""
+    """Residuals of voltages and of heats over their scatter, outliers crossed, at the edge where they are beyond."""
     for axes, wanted in zip(panels, ("voltage", "heat"), strict=True):
         of_kind = [i for i, name in enumerate(fit.quantities) if wanted in name]
         lines = [int(fit.lines[i]) for i in of_kind]
         residuals = [float(fit.residuals[i]) for i in of_kind]
         colours = [BLUE if fit.used[i] else VERMILION for i in of_kind]
+        # outliers far away stand at the edge with their number, so that they do not flatten the others
+        edge = 1.4 * max([abs(float(fit.residuals[i])) for i in of_kind if fit.used[i]], default=0.0) or 1.0
+        axes.set_ylim(-1.1 * edge, 1.1 * edge)
         for line, residual, colour, index in zip(lines, residuals, colours, of_kind, strict=True):
-            axes.plot(line, residual, "o" if fit.used[index] else "x", color=colour, markersize=4)
+            shown = min(max(residual, -edge), edge)
+            axes.plot(line, shown, "o" if fit.used[index] else "x", color=colour, markersize=4)
+            if shown != residual:
+                axes.annotate(
+                    f"{residual:+.0f}", (line, shown), (4, 0), textcoords="offset points", va="center", color=colour
+                )
         axes.axhline(0.0, color="black", linewidth=0.8)
         axes.set(xlabel="line of the record", ylabel=f"{wanted} residual over scatter [-]")
         axes.grid(color="0.85", linewidth=0.6)
@@ -107,9 +115,9 @@ def _draw_course(panels: Any, fit: HeatPumpFit) -> None:
     heats.plot(minutes, fit.electrical_power, color=GREEN, linestyle=":", label="electric")
     heats.set(xlabel="time [min]", ylabel="heat flow, power [W]")
     heats.legend(frameon=False)
-    performance.errorbar(
-        minutes, fit.coefficient_of_performance, fit.coefficient_of_performance_error, fmt="o", color=BLUE, markersize=3
-    )
-    performance.set(xlabel="time [min]", ylabel="coefficient of performance [-]")
+    pumps = fit.pumps
+    ratio, error = fit.coefficient_of_performance[pumps], fit.coefficient_of_performance_error[pumps]
+    performance.errorbar(minutes[pumps], ratio, error, fmt="o", color=BLUE, markersize=3)
+    performance.set(xlabel="time [min]", ylabel="coefficient of performance [-]", ylim=(0.0, None))
     for axes in (heats, performance):
         axes.grid(color="0.85", linewidth=0.6)

@@ -30,6 +30,10 @@ USED_ASSUMPTIONS = ("ambient_pressure", "pressure", "intake_humidity", "fuel_sul
 """Fields whose defaults a screening stands on."""
 
 
+COMMON_MODULE_LIMIT = 503.15
+"""Hot face that modules of bismuth telluride commonly bear [K]; common practice, no source."""
+
+
 def screen_document(answer: Screening) -> dict[str, Any]:
     """A screening with the unit and the source of each number."""
     document: dict[str, Any] = plain(answer)
@@ -61,7 +65,7 @@ def screen_report(case: Streams, answer: Screening) -> str:
         wrapped("  ", f"power per plate area: {SOURCES['joint_optimum_flux_high']}", rest="    "),
         wrapped("  ", f"lowest outlet: {SOURCES['lowest_outlet_temperature']}", rest="    "),
         heading("Cautions"),
-        *(wrapped("  - ", text) for text in _cautions(case)),
+        *(wrapped("  - ", text) for text in _cautions(case, answer)),
         "",
         f"harvest {VERSION}, case {answer.case_hash[:12]}",
     ]
@@ -132,6 +136,7 @@ def _band(answer: Screening) -> list[str]:
         return [f"  {best} from the best placed module, gross; how many there are, no stream tells"]
     counts = [f"{each:,.0f}" for each in (answer.module_count_low, answer.module_count_high)]
     areas = [f"{significant(each, 2)} m^2" for each in (answer.plate_area_low, answer.plate_area_high)]
+    shares = [_percent(each) for each in (answer.module_share_low, answer.module_share_high)]
     rows = [
         (f"{'net power':30}", *both("net_power", "power")),
         (f"{'heat taken':30}", *both("heat", "power")),
@@ -139,6 +144,8 @@ def _band(answer: Screening) -> list[str]:
         (f"{'plate area with modules':30}", *areas),
         (f"{'heat flux through modules':30}", *both("module_flux", "heat flux")),
         (f"{'the best placed module, gross':30}", *both("best_module_power", "power")),
+        (f"{'its hot face':30}", *both("best_module_hot_face", "temperature", 4)),
+        (f"{'modules take of the difference':30}", *shares),
     ]
     return table(("", "small, poor films", "largest power, good films"), rows)
 
@@ -189,8 +196,16 @@ def _assumed(case: Streams) -> list[str]:
     ]
 
 
-def _cautions(case: Streams) -> list[str]:
+def _cautions(case: Streams, answer: Screening) -> list[str]:
     lines = ["A screening knows no ducts, stack or module; an estimate goes before any money is spent."]
+    hottest = max(answer.best_module_hot_face_low, answer.best_module_hot_face_high)
+    if hottest > COMMON_MODULE_LIMIT:
+        lines.append(
+            f"Temperature: nothing here limits the modules; the first ones would see up to "
+            f"{format_quantity(hottest, 'temperature', 3)}, and common bismuth telluride bears about "
+            f"{format_quantity(COMMON_MODULE_LIMIT, 'temperature', 3)} ({PRACTICE}): keep them cooler, at part of "
+            "this power, or take another material."
+        )
     if case.hot.fluid == "exhaust gas":
         lines.append(
             "Exhaust: below its dew points it leaves acid condensate, and leaks carry carbon monoxide; the heat of "

@@ -106,6 +106,7 @@ def _part_loads(found: PartLoads) -> list[str]:
     rows = [
         (
             f"{100 * found.flow_share[i]:.0f} %",
+            f"{100 * found.temperature_share[i]:.0f} %",
             _t(found.hot_inlet_temperature[i]),
             _t(found.hot_outlet_temperature[i]),
             _q(found.net_power[i], "power"),
@@ -119,7 +120,7 @@ def _part_loads(found: PartLoads) -> list[str]:
         for i in loads
         if found.problem[i] == ""
     ]
-    header = ("flow", "in", "out", "net", "first wall", "last wall", "water dew", "rows", "acid dew", "rows")
+    header = ("flow", "warmth", "in", "out", "net", "first wall", "last wall", "water dew", "rows", "acid dew", "rows")
     lines += table(header, rows)
     lines += [
         wrapped("  ", f"{100 * found.flow_share[i]:.0f} % has no answer: {found.problem[i]}")
@@ -129,6 +130,11 @@ def _part_loads(found: PartLoads) -> list[str]:
     return [
         *lines,
         wrapped("  ", "Walls as the hot stream wets them, first and last row; rows: how many lie below the dew point."),
+        wrapped(
+            "  ",
+            "warmth: the hot inlet's excess over the surroundings, an input, no result; unless asked with --part-load "
+            "it is invented: of an engine's shape for a gas, held for a liquid.",
+        ),
     ]
 
 

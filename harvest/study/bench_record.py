@@ -155,10 +155,13 @@ def read_bench_record(
     """
     table = read_measurement_table(source, COLUMNS, NEEDED, MOST_READINGS)
     hot, cold = table.column("hot_face_temperature"), table.column("cold_face_temperature")
+    swapped = table.faults(hot <= cold, "the hot face is not hotter than the cold face; are the two columns swapped?")
+    if table.cell_faults:
+        raise_faults([*table.cell_faults, *swapped])
     voltage, current, load = table.column("voltage"), table.column("current"), table.column("load_resistance")
     open_circuit, heat_flow = table.column("open_circuit_voltage"), table.column("heat_flow")
     coolant_heat, remarks, faults = _coolant_heat(table, coolant, coolant_pressure)
-    faults += table.faults(hot <= cold, "the hot face is not hotter than the cold face; are the two columns swapped?")
+    faults += swapped
     faults += table.faults(load < 0.0, "load_resistance: below 0 ohm")
     loaded: BoolArray = np.isfinite(current) | np.isfinite(load)
     faults += table.faults(
@@ -491,15 +494,17 @@ def _told(record: BenchRecord, seen: _Observations) -> tuple[tuple[int, ...], li
     loaded = (seen.current != 0.0) | np.isfinite(seen.load)
     parameters = [0] if (seen.quantity < 2).any() or loaded.any() else []
     if not parameters:
-        unknown.append("seebeck: no voltage and no current was measured")
+        unknown.append("seebeck unknown: no voltage and no current was measured")
     if loaded.any():
         parameters.append(1)
     else:
-        unknown.append("resistance: no current was measured; add readings under load")
+        unknown.append("resistance unknown: no current was measured; add readings under load")
     if heats.size:
         parameters.append(2)
     else:
-        unknown.append("conductance: no heat was measured; add heat_flow, or the coolant's flow and temperatures")
+        unknown.append(
+            "conductance unknown: no heat was measured; add heat_flow, or the coolant's flow and temperatures"
+        )
     if heats.size == 1:
         place = "before the hot face" if heats[0] == 2 else "after the cold face"
         unknown.append(f"heat lost {place}: the conductance includes it; a heat measured on both sides would show it")

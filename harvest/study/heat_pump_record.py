@@ -19,7 +19,7 @@ import numpy as np
 
 from harvest.errors import InputError, NoAnswerError, RangeError
 from harvest.model.property_store import stored_table
-from harvest.physics.arrays import FloatArray, IntArray
+from harvest.physics.arrays import BoolArray, FloatArray, IntArray
 from harvest.physics.fluids import FluidBatch, FluidSpec
 from harvest.study.measurement_table import raise_faults, read_measurement_table
 
@@ -94,7 +94,8 @@ class HeatPumpFit:
     what the masses store and give by their heat capacity; `delivered_heat` and `pumped_heat` [W], the same with the
     fitted exchange with the surroundings, so what the module gives and takes; `electrical_power` [W];
     `coefficient_of_performance` = pumped heat over power and `heating_coefficient_of_performance` = delivered heat over
-    power, with standard errors; `balance_error` [W] = delivered - pumped - power.
+    power, with standard errors, negative where nothing is pumped: they mean a performance only where `pumps`;
+    `balance_error` [W] = delivered - pumped - power.
     `energy_balance_error`: its integral over the integral of the power [-].
     `temperature_change_ratio`: fall of the cold mass over rise of the hot one from the start to the largest difference
     between them [-]; its meaning stands beside it.
@@ -132,6 +133,11 @@ class HeatPumpFit:
     remarks: tuple[str, ...]
     provenance: str
 
+    @property
+    def pumps(self) -> BoolArray:
+        """Where heat is pumped out of the cold mass by electricity (readings,): a performance exists there only."""
+        return np.isfinite(self.coefficient_of_performance) & (self.pumped_heat > 0.0) & (self.electrical_power > 0.0)
+
     def value(self, name: str) -> float:
         """Value of a parameter, SI."""
         return float(self.values[self.names.index(name)])
@@ -144,6 +150,7 @@ def read_heat_pump_record(source: str | Path) -> HeatPumpRecord:
     Raises CaseError with all faults, one line each.
     """
     table = read_measurement_table(source, COLUMNS, tuple(COLUMNS), MOST_READINGS)
+    raise_faults(table.cell_faults)
     time = table.column("time")
     late = np.concatenate(([True], np.diff(time) > 0.0))
     faults = table.faults(~late, "time: does not rise from the line before")

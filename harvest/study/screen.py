@@ -116,6 +116,16 @@ class Screening:
         "power", "Power of the one reference module where both streams enter, poor films.", BAND
     )
     best_module_power_high: float = _answer("power", "The same with good films.", BAND)
+    best_module_hot_face_low: float = _answer(
+        "temperature", "Hot face of that module, films equal on both sides, poor films; no limit acts on it.", BAND
+    )
+    best_module_hot_face_high: float = _answer("temperature", "The same with good films.", BAND)
+    module_share_low: float = _answer(
+        "dimensionless",
+        "Part of the temperature difference that modules take, poor films; the rest is the films'.",
+        BAND,
+    )
+    module_share_high: float = _answer("dimensionless", "The same with good films.", BAND)
     heat_low: float = _answer("power", "Heat taken at the low end of the realistic band.", BAND)
     heat_high: float = _answer("power", "Heat taken at the high end, where the power is largest.", BAND)
     net_power_low: float = _answer("power", "Net power at the low end of the realistic band.", BAND)
@@ -297,6 +307,8 @@ def _band(
             * share
             * difference
             * maximum_efficiency(merit, hot.inlet - beside, cold.inlet + beside),
+            f"best_module_hot_face_{end}": hot.inlet - beside,
+            f"module_share_{end}": share * np.ones(batch.cases),
             f"heat_{end}": heat,
             f"net_power_{end}": converted * left * counterflow_array_power(heat, *rates, *inlets, merit, share),
             f"module_count_{end}": count,

@@ -12,7 +12,7 @@ import numpy as np
 
 from harvest.errors import CaseError, InputError, NoAnswerError
 from harvest.model.batch import Batch
-from harvest.model.case import RATED, Case, case_hash
+from harvest.model.case import GASES, RATED, Case, case_hash
 from harvest.model.design import Design, Stream, design, maximum_power_load
 from harvest.model.driven_flow import driven_batch
 from harvest.model.estimate import estimate, estimate_batch
@@ -48,7 +48,9 @@ FOULING_TIME = 1000 * 3600.0
 """Time constant in which fouling nears its final value [s]; common practice, no source."""
 HORIZON = 16_000 * 3600.0
 PART_LOADS = ((0.75, 0.90), (0.50, 0.80), (0.25, 0.65))
-"""Shares of the hot flow and of its temperature above the surroundings; invented, of an engine's shape."""
+"""Shares of a hot gas's flow and of its temperature above the surroundings; invented, of an engine's shape."""
+STEADY_PART_LOADS = ((0.75, 1.0), (0.50, 1.0), (0.25, 1.0))
+"""The same of a liquid, whose temperature a thermostat or the process holds."""
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -56,14 +58,15 @@ class WhatIfOptions:
     """What `what_if` is asked, SI. None of a fouling: it nears the case's own value, or TEMA's.
 
     `hot_fouling_rate`, `cold_fouling_rate` [m^2 K/(W s)] of steady growth; `fouling_time` and `horizon` [s];
-    `part_loads` pairs of flow and temperature shares; `coldest_ambient` [K]; plates are names of `EXPANSION`.
+    `part_loads` pairs of flow and temperature shares, none for the usual ones of a gas or a liquid;
+    `coldest_ambient` [K]; plates are names of `EXPANSION`.
     """
 
     hot_fouling_rate: float | None = None
     cold_fouling_rate: float | None = None
     fouling_time: float = FOULING_TIME
     horizon: float = HORIZON
-    part_loads: tuple[tuple[float, float], ...] = PART_LOADS
+    part_loads: tuple[tuple[float, float], ...] = ()
     coldest_ambient: float | None = None
     hot_plate: str = "stainless steel"
     cold_plate: str = "aluminium"
@@ -395,6 +398,11 @@ def time_to_loss(time: FloatArray, net_power: FloatArray, loss: float) -> float:
     return float(time[after - 1] + part * (time[after] - time[after - 1]))
 
 
+def usual_part_loads(case: Case) -> tuple[tuple[float, float], ...]:
+    """Return the shares of flow and temperature that are taken where none are asked for."""
+    return PART_LOADS if case.hot.fluid in GASES else STEADY_PART_LOADS
+
+
 def part_loads(case: Case, shares: tuple[tuple[float, float], ...]) -> PartLoads:
     """The stack at shares of the hot flow and of the hot inlet's excess over the surroundings, in one batch."""
     made = _made(Batch(case))
@@ -510,7 +518,7 @@ def what_if(case: Case, options: WhatIfOptions | None = None) -> WhatIf:
         opened=opened,
         shorted=shorted,
         fouling=fouling_growth(case, asked),
-        part_loads=part_loads(case, asked.part_loads),
+        part_loads=part_loads(case, asked.part_loads or usual_part_loads(case)),
         standstill=standstill(case, ambient),
         expansion=expansion(case, answer, asked.hot_plate, asked.cold_plate),
         case_hash=case_hash(case),
@@ -559,7 +567,7 @@ def what_if_options(
         cold_fouling_rate=rate("cold-fouling", cold_fouling),
         fouling_time=above_zero("fouling-time", fouling_time, FOULING_TIME),
         horizon=above_zero("horizon", horizon, HORIZON),
-        part_loads=tuple(_shares(each) for each in part_load) or PART_LOADS,
+        part_loads=tuple(_shares(each) for each in part_load),
         coldest_ambient=ambient,
         hot_plate=hot_plate,
         cold_plate=cold_plate,
@@ -569,7 +577,9 @@ def what_if_options(
 def _shares(given: str) -> tuple[float, float]:
     """Flow and temperature share of a text such as "0.5:0.8"."""
     flow, mark, temperature = given.partition(":")
+    if not mark:
+        raise InputError(f'part-load: {given!r} is not FLOW:TEMPERATURE, two shares such as "0.5:0.8"')
     pair = (quantity_of("part-load", flow, "dimensionless"), quantity_of("part-load", temperature, "dimensionless"))
-    if not mark or not all(0 < each <= 2 for each in pair):
+    if not all(0 < each <= 2 for each in pair):
         raise InputError(f'part-load: {given!r} is not two shares above 0 and up to 2, such as "0.5:0.8"')
     return pair
