@@ -414,6 +414,13 @@ def generator_ratings_agree(values: Values) -> Faults:
         )
 
 
+def prices_are_given(values: Values) -> Faults:
+    """Require prices where a sizing looks for the least cost."""
+    objective = values["size.objective"]
+    if objective is not None and objective.startswith("cost") and values["cost.module"] is None:
+        yield "size.objective", f'"{objective}" needs prices; give [cost] with module and more'
+
+
 SIDE_RULES: tuple[Callable[[str, Values], Faults], ...] = (
     flow_is_given_once,
     glycol_fraction_is_given_once,
@@ -437,6 +444,7 @@ RULES: tuple[Callable[[Values], Faults], ...] = (
     window_is_ordered,
     own_converters_suit_the_load,
     prices_are_in_one_currency,
+    prices_are_given,
     module_range_is_ordered,
     module_is_described_once,
     cooler_ratings_agree,
