@@ -244,6 +244,26 @@ def test_a_limit_that_binds_is_told_with_what_it_costs() -> None:
         size(load_case(JACKET, [*axes, "limits.hot_pressure_drop=1 Pa"]))
 
 
+def test_measures_and_mass_are_limits_too() -> None:
+    axes = ["size.rows={from=1,to=30}", "size.columns=[2,4]", "size.layers=[2,4,6]"]
+    free = size(load_case(JACKET, axes)).best
+    for limit, result, value in (
+        ("maximum_length", "stack_length", "0.62 m"),
+        ("maximum_width", "stack_width", "10 cm"),
+        ("maximum_height", "stack_height", "5 cm"),
+        ("maximum_module_mass", "module_mass", "4 kg"),
+    ):
+        case = load_case(JACKET, [*axes, f"limits.{limit}={value}"])
+        found = size(case)
+        allowed = getattr(case.limits, limit)
+        assert getattr(found.best, result) <= allowed < getattr(free, result)
+        assert limit in [each.limit for each in found.binding_limits]  # a narrow stack meets its pressure drop too
+        assert found.choices_beyond_limits[limit] > 0
+        assert next(each.status for each in found.best.checks if each.name == limit.replace("_", " ")) == "pass"
+    with pytest.raises(CaseError, match=r"module\.mass: is missing; limits\.maximum_module_mass"):
+        size(replace(plain_case(1.0, ""), {"limits.maximum_module_mass": 3.0}))
+
+
 def test_a_best_at_a_bound_is_told() -> None:
     found = size(load_case(JACKET, ["size.rows={from=1,to=5}"]))
     assert [(each.field, each.end) for each in found.at_bounds] == [("stack.rows", "highest")]

@@ -977,6 +977,10 @@ class Limits:
     maximum_cold_outlet_temperature: float | None = _limit(
         "temperature", "Highest allowed outlet temperature of the cold stream."
     )
+    maximum_length: float | None = _limit("length", "Longest plates allowed along the flow.")
+    maximum_width: float | None = _limit("length", "Widest plates allowed across the flow.")
+    maximum_height: float | None = _limit("length", "Highest stack allowed; needs the module's thickness.")
+    maximum_module_mass: float | None = _limit("mass", "Largest mass of the modules allowed; needs the module's mass.")
 
 
 OBJECTIVES = {

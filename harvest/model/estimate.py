@@ -306,6 +306,24 @@ def _powers(made: Design, chosen: Solution, hot_drop: PressureDrop, cold_drop: P
     }
 
 
+def _measures(made: Design) -> dict[str, FloatArray]:
+    """Size and mass of the stack, (cases,)."""
+    batch = made.batch
+    layers = batch.number("stack.layers")
+    height = sum(
+        (stream.ducts * 1.0) * (_gap(batch, stream) + 2.0 * batch.number(f"{stream.name}.duct.wall_thickness", 0.0))
+        + stream.half_ducts
+        * (0.5 * _gap(batch, stream) + 2.0 * batch.number(f"{stream.name}.duct.wall_thickness", 0.0))
+        for stream in (made.hot, made.cold)
+    ) + layers * batch.number("module.thickness")
+    return {
+        "stack_length": batch.number("stack.rows") * batch.number("stack.row_pitch"),
+        "stack_width": batch.number("stack.columns") * batch.number("stack.column_pitch"),
+        "stack_height": height,
+        "module_mass": made.module_count * batch.number("module.mass"),
+    }
+
+
 def _scalars(solved: Solved) -> dict[str, FloatArray]:
     """Scalar results by name, (cases,)."""
     made, chosen, batch = solved.made, solved.chosen, solved.made.batch
@@ -347,13 +365,6 @@ def _scalars(solved: Solved) -> dict[str, FloatArray]:
     heat_in = np.where(chosen.hot_heat >= 0, chosen.hot_heat, -chosen.cold_heat)
     module_heat_in = np.where(module_heat >= 0, module_heat, generated - module_heat)
     something = solved.maximum_power > LEAST_SHARE * chosen.heat_scale
-    layers = batch.number("stack.layers")
-    height = sum(
-        (stream.ducts * 1.0) * (_gap(batch, stream) + 2.0 * batch.number(f"{stream.name}.duct.wall_thickness", 0.0))
-        + stream.half_ducts
-        * (0.5 * _gap(batch, stream) + 2.0 * batch.number(f"{stream.name}.duct.wall_thickness", 0.0))
-        for stream in (made.hot, made.cold)
-    ) + layers * batch.number("module.thickness")
     return {
         **powers,
         "matched_load_power": solved.matched_power,
@@ -387,10 +398,7 @@ def _scalars(solved: Solved) -> dict[str, FloatArray]:
         "hot_duct_count": made.hot.ducts,
         "cold_duct_count": made.cold.ducts,
         "cold_end_duct_count": made.cold.half_ducts,
-        "stack_length": batch.number("stack.rows") * batch.number("stack.row_pitch"),
-        "stack_width": batch.number("stack.columns") * batch.number("stack.column_pitch"),
-        "stack_height": height,
-        "module_mass": made.module_count * batch.number("module.mass"),
+        **_measures(made),
         "hottest_face_temperature": chosen.largest(chosen.hot_face),
         "open_circuit_face_temperature": solved.open_circuit.largest(solved.open_circuit.hot_face),
         "coolant_lost_face_temperature": solved.coolant_lost.hot_face,
@@ -532,6 +540,10 @@ SEARCHED = (
     "cold_pressure_drop",
     "hottest_face_temperature",
     "warmest_cold_face_temperature",
+    "stack_length",
+    "stack_width",
+    "stack_height",
+    "module_mass",
 )
 
 
@@ -573,6 +585,7 @@ def search_batch(batch: Batch) -> Outcomes:
             "cold_pressure_drop": cold_drop.total,
             "hottest_face_temperature": chosen.largest(chosen.hot_face),
             "warmest_cold_face_temperature": chosen.largest(chosen.cold_face),
+            **_measures(made),
         }
         lost = ~np.isfinite(scalars["net_power"]) & made.faults.valid
         made.faults.add(lost, "the result is not a finite number")

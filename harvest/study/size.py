@@ -40,6 +40,10 @@ LIMITS = {
     "back_pressure": ("hot_pressure_drop", 1.0),
     "minimum_hot_outlet_temperature": ("hot_outlet_temperature", -1.0),
     "maximum_cold_outlet_temperature": ("cold_outlet_temperature", 1.0),
+    "maximum_length": ("stack_length", 1.0),
+    "maximum_width": ("stack_width", 1.0),
+    "maximum_height": ("stack_height", 1.0),
+    "maximum_module_mass": ("module_mass", 1.0),
 }
 """Limits of the case with the result they bound, from above (1) or below (-1)."""
 
