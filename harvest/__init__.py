@@ -23,6 +23,7 @@ if TYPE_CHECKING:
     from harvest.study.bench_record import fit_bench_record, read_bench_record
     from harvest.study.modules import load_module
     from harvest.study.screen import Screening, screen
+    from harvest.study.size import Sizing, size
     from harvest.study.what_if import WhatIf, WhatIfOptions, what_if
 
 __version__ = version.VERSION
@@ -51,6 +52,8 @@ _HOMES = {
     "WhatIf": "harvest.study.what_if",
     "WhatIfOptions": "harvest.study.what_if",
     "what_if": "harvest.study.what_if",
+    "Sizing": "harvest.study.size",
+    "size": "harvest.study.size",
     "screen": "harvest.study.screen",
     "Screening": "harvest.study.screen",
 }
@@ -67,6 +70,7 @@ __all__ = [
     "NoAnswerError",
     "RangeError",
     "Screening",
+    "Sizing",
     "WhatIf",
     "WhatIfOptions",
     "__version__",
@@ -81,6 +85,7 @@ __all__ = [
     "read_bench_record",
     "replace",
     "screen",
+    "size",
     "what_if",
 ]
 

@@ -342,6 +342,42 @@ def whatif(case: str, overrides: tuple[str, ...], as_json: bool, **texts: Any) -
 
 
 @cli.command()
+@_case_arguments
+@click.option("--plot", default=None, type=click.Path(dir_okay=False), help="Draw the curve (.svg, .png, .pdf).")
+@click.option("--write", default=None, type=click.Path(dir_okay=False), help="Save the best as a case; a new file.")
+def size(case: str, overrides: tuple[str, ...], as_json: bool, plot: str | None, write: str | None) -> None:
+    """How many modules, and how arranged: the best of every choice that [size] in CASE allows."""
+    from harvest.report.files import case_text, refuse_existing, write_new
+
+    loaded = _read(case, overrides)
+    if write is not None:
+        refuse_existing(Path(write))
+    if plot is not None:
+        from harvest.report.plots import can_plot, size_figure, write_figure
+
+        can_plot(Path(plot))
+    from harvest.study.size import size as size_case
+
+    found = size_case(loaded, _progress if sys.stderr.isatty() else None)
+    if plot is not None:
+        write_figure(Path(plot), size_figure(loaded.title, found))
+    if write is not None:
+        write_new(Path(write), case_text(found.best_case))
+    if as_json:
+        from harvest.report.documents import json_text, size_document
+
+        click.echo(json_text(size_document(found)))
+    else:
+        from harvest.report.size_sheet import size_report
+
+        click.echo(size_report(loaded, found))
+
+
+def _progress(done: int, all_of_them: int) -> None:
+    click.echo(f"\r{done:,} of {all_of_them:,} choices", nl=done == all_of_them, err=True)
+
+
+@cli.command()
 @click.argument("kind", required=False)
 @click.option("-o", "--output", type=click.Path(dir_okay=False), help="File to write; it must not exist yet.")
 def start(kind: str | None, output: str | None) -> None:

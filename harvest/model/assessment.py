@@ -337,6 +337,10 @@ def _of_limits(solved: Solved, scalars: dict[str, FloatArray]) -> Iterator[Batch
         ("back_pressure", "hot_pressure_drop", "pressure difference", "at most"),
         ("minimum_hot_outlet_temperature", "hot_outlet_temperature", "temperature", AT_LEAST),
         ("maximum_cold_outlet_temperature", "cold_outlet_temperature", "temperature", "at most"),
+        ("maximum_length", "stack_length", "length", "at most"),
+        ("maximum_width", "stack_width", "length", "at most"),
+        ("maximum_height", "stack_height", "length", "at most"),
+        ("maximum_module_mass", "module_mass", "mass", "at most"),
     )
     for field, result, kind, bound in limits:
         limit = batch.number(f"limits.{field}")

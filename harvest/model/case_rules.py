@@ -428,6 +428,20 @@ def generator_ratings_agree(values: Values) -> Faults:
         )
 
 
+def limits_can_be_judged(values: Values) -> Faults:
+    """Require what a limit of height or mass needs of the module."""
+    for limit, needed in (("maximum_height", "thickness"), ("maximum_module_mass", "mass")):
+        if values[f"limits.{limit}"] is not None and values[f"module.{needed}"] is None:
+            yield f"module.{needed}", f"is missing; limits.{limit} cannot be judged without it"
+
+
+def prices_are_given(values: Values) -> Faults:
+    """Require prices where a sizing looks for the least cost."""
+    objective = values["size.objective"]
+    if objective is not None and objective.startswith("cost") and values["cost.module"] is None:
+        yield "size.objective", f'"{objective}" needs prices; give [cost] with module and more'
+
+
 SIDE_RULES: tuple[Callable[[str, Values], Faults], ...] = (
     flow_is_given_once,
     glycol_fraction_is_given_once,
@@ -451,6 +465,8 @@ RULES: tuple[Callable[[Values], Faults], ...] = (
     window_is_ordered,
     own_converters_suit_the_load,
     prices_are_in_one_currency,
+    prices_are_given,
+    limits_can_be_judged,
     module_range_is_ordered,
     legs_fit_the_footprint,
     module_is_described_once,

@@ -240,14 +240,7 @@ def _solve(made: Design) -> Solved:
         _flag_range(made, stream, boundaries)
     open_circuit = unfold(made, problem, opened)
     best_power = terminal_power(problem, best)
-    row_length = batch.number("stack.row_pitch") / made.segments
-    drops = [
-        pressure_drop(batch, stream, boundaries, outlet, chosen.active, row_length)
-        for stream, boundaries, outlet in (
-            (made.hot, state.hot_stream, chosen.hot_outlet),
-            (made.cold, state.cold_stream, chosen.cold_outlet),
-        )
-    ]
+    drops = _pressure_drops(made, chosen)
     return Solved(
         made,
         chosen,
@@ -259,6 +252,18 @@ def _solve(made: Design) -> Solved:
         drops[0],
         drops[1],
     )
+
+
+def _pressure_drops(made: Design, chosen: Solution) -> list[PressureDrop]:
+    """Pressure drops of the hot and the cold side."""
+    row_length = made.batch.number("stack.row_pitch") / made.segments
+    return [
+        pressure_drop(made.batch, stream, boundaries, outlet, chosen.active, row_length)
+        for stream, boundaries, outlet in (
+            (made.hot, chosen.state.hot_stream, chosen.hot_outlet),
+            (made.cold, chosen.state.cold_stream, chosen.cold_outlet),
+        )
+    ]
 
 
 def _flag_range(made: Design, stream: Stream, boundaries: FloatArray) -> None:
@@ -278,17 +283,54 @@ def _flag_range(made: Design, stream: Stream, boundaries: FloatArray) -> None:
     made.faults.add(beyond & made.faults.valid, sentence)
 
 
+def _powers(made: Design, chosen: Solution, hot_drop: PressureDrop, cold_drop: PressureDrop) -> dict[str, FloatArray]:
+    """Power from the terminals to the net, (cases,)."""
+    batch = made.batch
+    opened_up = made.load.mode == OPEN_CIRCUIT
+    generated = np.zeros(batch.cases) if opened_up else terminal_power(made.problem, chosen.state)
+    efficiency = batch.number("electrical.converter_efficiency", 1.0)
+    hot_drive = side_drive_power(batch, made.hot, hot_drop.total, chosen.hot_outlet)
+    cold_drive = side_drive_power(batch, made.cold, cold_drop.total, chosen.cold_outlet)
+    # what the stack draws instead of giving has to come through the converter too
+    converted = np.where(generated >= 0, efficiency * generated, generated / efficiency)
+    return {
+        "generated_power": generated,
+        "converted_power": converted,
+        "hot_drive_power": hot_drive,
+        "cold_drive_power": cold_drive,
+        "net_power": converted
+        - batch.number("electrical.converter_standby_power", 0.0)
+        - batch.number("electrical.auxiliary_power", 0.0)
+        - hot_drive
+        - cold_drive,
+    }
+
+
+def _measures(made: Design) -> dict[str, FloatArray]:
+    """Size and mass of the stack, (cases,)."""
+    batch = made.batch
+    layers = batch.number("stack.layers")
+    height = sum(
+        (stream.ducts * 1.0) * (_gap(batch, stream) + 2.0 * batch.number(f"{stream.name}.duct.wall_thickness", 0.0))
+        + stream.half_ducts
+        * (0.5 * _gap(batch, stream) + 2.0 * batch.number(f"{stream.name}.duct.wall_thickness", 0.0))
+        for stream in (made.hot, made.cold)
+    ) + layers * batch.number("module.thickness")
+    return {
+        "stack_length": batch.number("stack.rows") * batch.number("stack.row_pitch"),
+        "stack_width": batch.number("stack.columns") * batch.number("stack.column_pitch"),
+        "stack_height": height,
+        "module_mass": made.module_count * batch.number("module.mass"),
+    }
+
+
 def _scalars(solved: Solved) -> dict[str, FloatArray]:
     """Scalar results by name, (cases,)."""
     made, chosen, batch = solved.made, solved.chosen, solved.made.batch
     problem, circuit, state = made.problem, made.problem.circuit, solved.chosen.state
     opened_up = made.load.mode == OPEN_CIRCUIT
-    generated = np.zeros(batch.cases) if opened_up else terminal_power(problem, state)
-    efficiency = batch.number("electrical.converter_efficiency", 1.0)
-    hot_drive = side_drive_power(batch, made.hot, solved.hot_drop.total, chosen.hot_outlet)
-    cold_drive = side_drive_power(batch, made.cold, solved.cold_drop.total, chosen.cold_outlet)
-    # what the stack draws instead of giving has to come through the converter too
-    converted = np.where(generated >= 0, efficiency * generated, generated / efficiency)
+    powers = _powers(made, chosen, solved.hot_drop, solved.cold_drop)
+    generated = powers["generated_power"]
     current = np.zeros(batch.cases) if opened_up else circuit.parallel * state.current.sum(axis=0)
     voltage = state.string_voltage[0]
     weight = circuit.series * chosen.active
@@ -323,23 +365,8 @@ def _scalars(solved: Solved) -> dict[str, FloatArray]:
     heat_in = np.where(chosen.hot_heat >= 0, chosen.hot_heat, -chosen.cold_heat)
     module_heat_in = np.where(module_heat >= 0, module_heat, generated - module_heat)
     something = solved.maximum_power > LEAST_SHARE * chosen.heat_scale
-    layers = batch.number("stack.layers")
-    height = sum(
-        (stream.ducts * 1.0) * (_gap(batch, stream) + 2.0 * batch.number(f"{stream.name}.duct.wall_thickness", 0.0))
-        + stream.half_ducts
-        * (0.5 * _gap(batch, stream) + 2.0 * batch.number(f"{stream.name}.duct.wall_thickness", 0.0))
-        for stream in (made.hot, made.cold)
-    ) + layers * batch.number("module.thickness")
     return {
-        "generated_power": generated,
-        "converted_power": converted,
-        "hot_drive_power": hot_drive,
-        "cold_drive_power": cold_drive,
-        "net_power": converted
-        - batch.number("electrical.converter_standby_power", 0.0)
-        - batch.number("electrical.auxiliary_power", 0.0)
-        - hot_drive
-        - cold_drive,
+        **powers,
         "matched_load_power": solved.matched_power,
         "maximum_power": solved.maximum_power,
         "current": current,
@@ -371,10 +398,7 @@ def _scalars(solved: Solved) -> dict[str, FloatArray]:
         "hot_duct_count": made.hot.ducts,
         "cold_duct_count": made.cold.ducts,
         "cold_end_duct_count": made.cold.half_ducts,
-        "stack_length": batch.number("stack.rows") * batch.number("stack.row_pitch"),
-        "stack_width": batch.number("stack.columns") * batch.number("stack.column_pitch"),
-        "stack_height": height,
-        "module_mass": made.module_count * batch.number("module.mass"),
+        **_measures(made),
         "hottest_face_temperature": chosen.largest(chosen.hot_face),
         "open_circuit_face_temperature": solved.open_circuit.largest(solved.open_circuit.hot_face),
         "coolant_lost_face_temperature": solved.coolant_lost.hot_face,
@@ -493,6 +517,80 @@ def estimate_batch(batch: Batch, *, grid: bool = False) -> Estimates:
         np.zeros(batch.cases, dtype=bool),
         _sources(made),
     )
+
+
+@dataclass(frozen=True)
+class Outcomes:
+    """What a search asks of many cases: `scalars` by result name, (cases,), NaN where `problem` says why not."""
+
+    scalars: dict[str, FloatArray]
+    problem: ObjectArray
+
+
+SEARCHED = (
+    "generated_power",
+    "converted_power",
+    "hot_drive_power",
+    "cold_drive_power",
+    "net_power",
+    "voltage",
+    "hot_outlet_temperature",
+    "cold_outlet_temperature",
+    "hot_pressure_drop",
+    "cold_pressure_drop",
+    "hottest_face_temperature",
+    "warmest_cold_face_temperature",
+    "stack_length",
+    "stack_width",
+    "stack_height",
+    "module_mass",
+)
+
+
+def search_batch(batch: Batch) -> Outcomes:
+    """Answer a batch at its own load only, without checks: the numbers in `SEARCHED`, as an estimate has them.
+
+    A case without an answer is NaN throughout and says why in `problem`. Raises InputError for faults of all.
+    """
+    with np.errstate(all="ignore"):
+        driven = driven_batch(batch)
+        made = design(driven)
+        wanting = made.faults.valid
+        if not wanting.all():
+            scalars = {name: np.full(batch.cases, np.nan) for name in SEARCHED}
+            problem = made.faults.text.copy()
+            if wanting.any():
+                which = np.flatnonzero(wanting)
+                found = search_batch(driven.take(which))
+                problem[which] = found.problem
+                for name, values in found.scalars.items():
+                    scalars[name][which] = values
+            return Outcomes(scalars, problem)
+        state = solve_stack(made.problem, maximum_power_load(driven))
+        if made.load.mode != MAXIMUM_POWER:  # the same road to other loads as in an estimate
+            state = solve_stack(made.problem, Load(MATCHED), state)
+        if made.load.mode not in (MAXIMUM_POWER, MATCHED):
+            state = solve_stack(made.problem, made.load, state)
+        made.faults.add(~state.converged, "no solution found at its load; the operating point may not exist")
+        chosen = unfold(made, made.problem, state)
+        for stream, boundaries in ((made.hot, state.hot_stream), (made.cold, state.cold_stream)):
+            _flag_range(made, stream, boundaries)
+        hot_drop, cold_drop = _pressure_drops(made, chosen)
+        scalars = {
+            **_powers(made, chosen, hot_drop, cold_drop),
+            "voltage": state.string_voltage[0],
+            "hot_outlet_temperature": chosen.hot_outlet,
+            "cold_outlet_temperature": chosen.cold_outlet,
+            "hot_pressure_drop": hot_drop.total,
+            "cold_pressure_drop": cold_drop.total,
+            "hottest_face_temperature": chosen.largest(chosen.hot_face),
+            "warmest_cold_face_temperature": chosen.largest(chosen.cold_face),
+            **_measures(made),
+        }
+        lost = ~np.isfinite(scalars["net_power"]) & made.faults.valid
+        made.faults.add(lost, "the result is not a finite number")
+    valid = made.faults.valid
+    return Outcomes({name: np.where(valid, value, np.nan) for name, value in scalars.items()}, made.faults.text)
 
 
 def _among(answers: Estimates, which: IntArray, problem: ObjectArray, batch: Batch) -> Estimates:

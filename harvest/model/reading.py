@@ -9,7 +9,7 @@ import itertools
 import math
 import numbers
 import re
-from collections.abc import Mapping, Sequence
+from collections.abc import Callable, Mapping, Sequence
 from pathlib import Path
 from typing import Any, NamedTuple, TypeVar
 
@@ -212,7 +212,7 @@ def _put(document: dict[str, Any], path: str, value: Any) -> None:
     """Set a value in a document; what is an alternative to it goes."""
     if _PLACE.sub("", path) not in DECLARATIONS and not path.startswith(("size.", "sweep.")):
         raise InputError(f"{one_line(path)}: unknown field; {nearest_field(path[:60])}")
-    *parents, name = path.split(".", 1) if path.startswith("sweep.") else path.split(".")
+    *parents, name = path.split(".", 1) if path.startswith(("size.", "sweep.")) else path.split(".")
     table = document
     for parent in parents:
         if _PLACE.search(parent):
@@ -392,6 +392,8 @@ class _Reading:
                     self.fault("module.use", str(error))
                     self.give_up(path, declaration)
                     return
+            if path == "size":
+                inside = _with_fields_apart(inside)
             self.values[path] = path
             self.section(declaration.section, f"{path}.", inside)
         else:
@@ -495,6 +497,8 @@ class _Reading:
             return _flow_curve(declaration, raw)
         if form == "fluid table":
             return _fluid_rows(raw, self.folder)
+        if form == "axis":
+            return self.axis(path, declaration, raw)
         return self.axes(path, raw)
 
     def number(self, path: str, declaration: Declaration, raw: Any) -> float:
@@ -507,7 +511,9 @@ class _Reading:
         return value
 
     def axes(self, path: str, raw: Any) -> dict[str, Any]:
-        """Check what a sizing or a sweep varies and keep it as given; a sweep names whole fields."""
+        """Check what a sizing or a sweep varies; a sweep is kept as given."""
+        if path == "size.fields":
+            return self.size_fields(raw)
         if not isinstance(raw, Mapping) or not raw:
             raise QuantityError(f"is a section; write [{path}] and what is varied below it")
         for name, axis in raw.items() if path == "sweep" else ():
@@ -519,6 +525,73 @@ class _Reading:
             ):
                 self.fault(f"{path}.{name}", "is neither a list nor { from = .., to = .., points = .. }")
         return dict(raw)
+
+    def size_fields(self, raw: Any) -> dict[str, tuple[float, ...]]:
+        """Values of each further field of a sizing, by its whole name."""
+        if not isinstance(raw, Mapping):
+            raise QuantityError('is written by whole names in quotes, such as "hot.duct.gap" = ["2 mm", "3 mm"]')
+        found = {}
+        for name, axis in raw.items():
+            known = DECLARATIONS.get(name)
+            if name in ("stack.rows", "stack.columns", "stack.layers"):
+                self.fault(f"size.{name}", f"is written as {name.removeprefix('stack.')} in [size]")
+                continue
+            fixed = known is None or known.descriptive or name.startswith("limits.")
+            if fixed or known is None or known.form not in ("quantity", "integer"):
+                self.fault(
+                    f"size.{name}",
+                    f"is no number that shapes a design; {nearest_field(name[:60])}"
+                    if known is None
+                    else "is no number that shapes a design, so a sizing cannot vary it",
+                )
+                continue
+            try:
+                found[name] = self.axis(name, known, axis)
+            except QuantityError as error:
+                self.fault(f"size.{name}", str(error))
+        return found
+
+    def axis(self, path: str, declaration: Declaration, raw: Any) -> tuple[Any, ...]:
+        """Rising values of a list, or from one to another by steps or points; raises QuantityError."""
+
+        def one(given: Any) -> float:
+            whole = declaration.form in ("integer", "axis")
+            return _integer(declaration, given) if whole else self.number(path, declaration, given)
+
+        if isinstance(raw, list | tuple) and raw:
+            values = [one(each) for each in raw[: MOST_CURVE_POINTS * 10]]
+        elif isinstance(raw, Mapping):
+            values = self.spaced(declaration, raw, one)
+        else:
+            raise QuantityError("is neither a list nor { from = .., to = .., step = .. }")
+        return tuple(sorted(set(values)))
+
+    def spaced(self, declaration: Declaration, raw: Mapping[str, Any], one: Callable[[Any], float]) -> list[float]:
+        """Values from one to another, both included where the steps meet the end."""
+        whole = declaration.form in ("integer", "axis")
+        if not {"from", "to"} <= set(raw) <= {"from", "to", "step", "points"} or {"step", "points"} <= set(raw):
+            raise QuantityError("needs from and to, and step or points")
+        lowest, highest = one(raw["from"]), one(raw["to"])
+        if lowest > highest:
+            raise QuantityError(f"goes from {shown(raw['from'])} down to {shown(raw['to'])}; give the lower one first")
+        if "points" in raw and not whole:
+            points = raw["points"]
+            if isinstance(points, bool) or not isinstance(points, int) or not 2 <= points <= MOST_CURVE_POINTS:
+                raise QuantityError(f"points: give a whole number from 2 to {MOST_CURVE_POINTS}")
+            width = (highest - lowest) / (points - 1)
+            return [lowest + width * place for place in range(points - 1)] + [highest]
+        if whole:
+            step: float = raw.get("step", 1)
+            if isinstance(step, bool) or not isinstance(step, int) or step < 1 or "points" in raw:
+                raise QuantityError("step: give a whole number of at least 1")
+        elif "step" in raw:
+            kind = {"temperature": "temperature difference", "pressure": "pressure difference"}
+            step = parse_quantity(raw["step"], kind.get(declaration.kind, declaration.kind))
+        else:
+            raise QuantityError("needs step or points")
+        if not step > 0 or (highest - lowest) / step > MOST_CURVE_POINTS * 10:
+            raise QuantityError(f"step: must be above zero and make at most {MOST_CURVE_POINTS * 10} values")
+        return [lowest + step * place for place in range(int((highest - lowest) / step * (1 + 1e-12)) + 1)]
 
     def with_record(self, module: Mapping[str, Any]) -> Mapping[str, Any]:
         """Merge the module's fields over those of its record; raises InputError."""
@@ -547,6 +620,14 @@ class _Reading:
             if isinstance(inside := module[way], Mapping) and isinstance(below := record.get(way), Mapping):
                 merged[way] = {**below, **inside}
         return merged
+
+
+def _with_fields_apart(size: Mapping[str, Any]) -> Mapping[str, Any]:
+    """Put the whole names of fields in a sizing together under `fields`."""
+    apart = {name: axis for name, axis in size.items() if "." in str(name)}
+    if not apart or "fields" in size:
+        return size
+    return {**{name: each for name, each in size.items() if name not in apart}, "fields": apart}
 
 
 @functools.lru_cache(32)

@@ -19,6 +19,7 @@ if TYPE_CHECKING:
     from harvest.model.module_curve import ModuleCurve
     from harvest.study.bench_record import BenchFit
     from harvest.study.heat_pump_record import HeatPumpFit
+    from harvest.study.size import Sizing
     from harvest.study.what_if import WhatIf
 
 
@@ -120,6 +121,28 @@ def what_if_document(found: WhatIf) -> dict[str, Any]:
     """What can go wrong, with the estimate it stands on and the units of its numbers; `hours` are hours."""
     units = {**{name: unit_of(kind) for name, kind in WHAT_IF_KINDS.items()}, "hours": "h"}
     return {**plain(found), "estimate": estimate_document(found.estimate), "units": units, "version": VERSION}
+
+
+SIZE_KINDS = {
+    "curve.generated_power": "power",
+    "curve.drive_power": "power",
+    "curve.net_power": "power",
+    "curve.marginal_power": "power",
+    "front.net_power": "power",
+    "most_net_power": "power",
+    "last_module_power": "power",
+    "least_net_watts_per_module": "power",
+    "net_power_gain": "power",
+}
+
+
+def size_document(found: Sizing) -> dict[str, Any]:
+    """A sizing: the best with its arrangement, the curve, what was tried and what binds; costs are in `currency`."""
+    document: dict[str, Any] = plain(found)
+    arrangement = document.pop("arrangement")
+    best = {**estimate_document(found.best), **{name: arrangement[name] for name in arrangement if name != "net_power"}}
+    units = {name: unit_of(kind) for name, kind in SIZE_KINDS.items()}
+    return {**document, "best": best, "units": units, "version": VERSION}
 
 
 def fluid_document(sheet: FluidSheet) -> dict[str, Any]:

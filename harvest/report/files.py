@@ -3,12 +3,14 @@
 from __future__ import annotations
 
 import contextlib
+import copy
 import os
 import tempfile
 from pathlib import Path
 from typing import Any
 
 from harvest.errors import InputError
+from harvest.model.case import DECLARATIONS, Case
 
 
 def write_whole(path: Path, content: str | bytes) -> None:
@@ -35,6 +37,32 @@ def record_text(record: dict[str, Any]) -> str:
     import tomli_w
 
     return tomli_w.dumps(record)
+
+
+def case_text(case: Case) -> str:
+    """A case as TOML text that reads back as the same case from any folder."""
+    import tomli_w
+
+    document = copy.deepcopy(case.given)
+    for path, declaration in DECLARATIONS.items():
+        *parents, name = path.split(".")
+        table: Any = document
+        for parent in parents:
+            table = table.get(parent) if isinstance(table, dict) else None
+        value = table.get(name) if isinstance(table, dict) else None
+        if declaration.form not in ("file", "fluid table") or not isinstance(value, str):
+            continue
+        if (case.folder / value).is_file():
+            table[name] = str((case.folder / value).resolve())
+    return tomli_w.dumps(document)
+
+
+def refuse_existing(path: Path) -> None:
+    """Raise InputError where a file exists that must not be written over, or its folder does not."""
+    if path.exists():
+        raise InputError(f"{path}: exists already; remove it or choose another name")
+    if not path.parent.is_dir():
+        raise InputError(f"{path}: cannot be written (there is no folder {path.parent})")
 
 
 def write_new(path: Path, content: str) -> None:

@@ -15,6 +15,7 @@ if TYPE_CHECKING:
 
     from harvest.study.bench_record import BenchFit
     from harvest.study.heat_pump_record import HeatPumpFit
+    from harvest.study.size import Sizing
 
 SUFFIXES = (".svg", ".png", ".pdf")
 # the Okabe-Ito colours, each with a line style of its own
@@ -35,15 +36,53 @@ def new_figure(width: float, height: float) -> Figure:
     return Figure(figsize=(width, height), layout="constrained")
 
 
-def write_figure(path: Path, figure: Figure) -> None:
-    """Write a figure whole, in the format of the suffix; raises InputError for another suffix."""
+def plot_suffix(path: Path) -> str:
+    """Format of a plot's file; raises InputError for another suffix."""
     suffix = path.suffix.lower()
     if suffix not in SUFFIXES:
         raise InputError(f"{path}: a plot ends in {', '.join(SUFFIXES)}")
+    return suffix
+
+
+def can_plot(path: Path) -> None:
+    """Raise, before anything long begins, what would keep a plot from being written."""
+    plot_suffix(path)
+    new_figure(1.0, 1.0)
+
+
+def write_figure(path: Path, figure: Figure) -> None:
+    """Write a figure whole, in the format of the suffix; raises InputError for another suffix."""
+    suffix = plot_suffix(path)
     metadata: dict[str, Any] = {".svg": {"Date": None}, ".pdf": {"CreationDate": None}, ".png": {}}[suffix]
     content = io.BytesIO()
     figure.savefig(content, format=suffix[1:], metadata=metadata, dpi=150)
     write_whole(path, content.getvalue())
+
+
+def size_figure(title: str, found: Sizing) -> Figure:
+    """Generated, drive and net power of the best arrangement against the number of modules; the front of cost."""
+    front = found.front
+    figure = new_figure(8.0, 4.0 if front is None else 7.0)
+    panels = figure.subplots(1 if front is None else 2, 1, squeeze=False)[:, 0]
+    curve = found.curve
+    for values, colour, style, name in (
+        (curve.generated_power, VERMILION, "--", "generated"),
+        (curve.drive_power, GREEN, ":", "pumps and fans"),
+        (curve.net_power, BLUE, "-", "net"),
+    ):
+        panels[0].plot(curve.module_count, values, color=colour, linestyle=style, label=name)
+    best = found.arrangement
+    panels[0].plot(best.module_count, best.net_power, "o", color="black", fillstyle="none", label="best")
+    panels[0].set(xlabel="modules", ylabel="power [W]")
+    if front is not None:
+        panels[1].step(front.cost, front.net_power, color=BLUE, where="post", label="front")
+        panels[1].plot(best.cost, best.net_power, "o", color="black", fillstyle="none", label="best")
+        panels[1].set(xlabel=f"cost of building [{found.currency or 'currency'}]", ylabel="net power [W]")
+    for axes in panels:
+        axes.grid(color="0.85", linewidth=0.6)
+        axes.legend(frameon=False)
+    figure.suptitle(f"{title}: best arrangement at each number of modules", fontsize=10)
+    return figure
 
 
 def module_figure(title: str, curve: ModuleCurve, fit: BenchFit | HeatPumpFit | None = None) -> Figure:

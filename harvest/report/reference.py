@@ -20,6 +20,7 @@ WRITTEN = {
     "integers": "whole numbers in a list",
     "boolean": "`true` or `false`",
     "fluid table": "table or path",
+    "axis": "list, or `{ from = .., to = .., step = .. }`",
     "axes": "table",
 }
 CASE_INTRODUCTION = """\

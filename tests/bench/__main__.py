@@ -20,11 +20,12 @@ import numpy as np
 
 from harvest.model import estimate as estimating
 from harvest.model.batch import Batch
-from harvest.model.design import Design, design
+from harvest.model.design import Design, design, maximum_power_load
 from harvest.model.loads import MATCHED, MAXIMUM_POWER
-from harvest.model.reading import read_case
+from harvest.model.reading import load_case, read_case
 from harvest.model.stack import Load, solve_stack
 from harvest.model.stack.solver import CHUNK_CELLS
+from harvest.study.size import size
 from tests.bench.baseline import DEMO_DESIGNS, solve_plainly
 from tests.bench.random_designs import random_batch
 from tests.independent.stack import Load as ScriptLoad
@@ -136,6 +137,35 @@ def script() -> None:
                 )
 
 
+def sizing() -> None:
+    """Cost of a search per row against the solver's in a batch, and the memory of a long search."""
+    rows, columns, layers = "rows={from=1,to=60}", "columns=[2, 4, 6, 8, 10, 12, 14]", "layers={from=2,to=24,step=2}"
+    case = load_case(EXAMPLE, [f"size.{axis}" for axis in (rows, columns, layers)])
+    count = 60 * 7 * 12
+    batch = Batch(case, CASES, {"stack.rows": np.full(CASES, 30.0)})
+    made = design(batch)
+    load = maximum_power_load(batch)
+    # yardsticks beside each other: the solver alone, and estimates of a batch
+    solver_alone = best(lambda: solve_stack(made.problem, load), 3) / (30 * CASES)
+    estimates = best(lambda: estimating.estimate_batch(batch), 2) / (30 * CASES)
+    seconds = best(lambda: size(case), 3) / (count * 30.5)
+    print(
+        f"sizing, {count:,} choices of up to 60 rows: {1e9 * seconds:.0f} ns a row; the solver in a batch "
+        f"{1e9 * solver_alone:.0f} ns, estimates {1e9 * estimates:.0f} ns; over the solver "
+        f"{seconds / solver_alone:.2f} (gate 2)"
+    )
+    program = (
+        "import resource, sys\nfrom harvest import load_case, size\n"
+        "case = load_case(sys.argv[1], ['size.rows={from=1,to=100}', 'size.columns={from=2,to=100,step=2}', "
+        "'size.layers={from=2,to=80,step=2}'])\nfound = size(case)\n"
+        "print(found.choices_tried, resource.getrusage(resource.RUSAGE_SELF).ru_maxrss)"
+    )
+    begun = time.perf_counter()
+    done = subprocess.run([sys.executable, "-c", program, str(EXAMPLE)], capture_output=True, text=True, check=True)
+    tried, peak = map(int, done.stdout.split())
+    print(f"  {tried:,} choices: {time.perf_counter() - begun:.0f} s, {peak / 1024:.0f} MiB at most (gate 1024)")
+
+
 def start_up() -> None:
     """Commands against the imports that they cannot do without."""
     python = sys.executable
@@ -165,6 +195,6 @@ def start_up() -> None:
 
 
 if __name__ == "__main__":
-    for part in (solver, checks, start_up, script):
+    for part in (solver, checks, sizing, start_up, script):
         if len(sys.argv) == 1 or part.__name__ in sys.argv[1:]:
             part()

@@ -1,0 +1,591 @@
+"""How many modules, and how arranged: every choice in the given bounds is solved, none is left to a local search."""
+
+from __future__ import annotations
+
+import dataclasses
+import re
+from collections.abc import Callable, Iterator
+from dataclasses import dataclass, field
+from typing import Any
+
+import numpy as np
+
+from harvest.errors import InputError, NoAnswerError
+from harvest.model.batch import Batch
+from harvest.model.case import DECLARATIONS, MOST_MODULES, Case
+from harvest.model.costs import building_cost, cost_per_kilowatt_hour
+from harvest.model.design import BETWEEN
+from harvest.model.estimate import Outcomes, estimate, search_batch
+from harvest.model.reading import replace
+from harvest.model.results import Estimate
+from harvest.physics.arrays import BoolArray, FloatArray, IntArray
+
+SEARCH_CELLS = 200_000
+"""Rows times cases that are prepared and solved at a time, so that memory does not grow with the choices."""
+MOST_CHOICES = 2_000_000
+REFINED_POINTS = 5
+REFINEMENTS = 6
+"""Points along each field with a unit around the best, and how often their distance is halved."""
+MOST_REFINED = 4
+"""Fields that are refined together; REFINED_POINTS to this power are solved each time."""
+MOST_WITHOUT_ESTIMATE = 20
+"""Best choices in turn that may lack a full estimate before the search gives up."""
+
+COUNTS = ("stack.rows", "stack.columns", "stack.layers")
+LIMITS = {
+    "hot_face_temperature": ("hottest_face_temperature", 1.0),
+    "cold_face_temperature": ("warmest_cold_face_temperature", 1.0),
+    "hot_pressure_drop": ("hot_pressure_drop", 1.0),
+    "cold_pressure_drop": ("cold_pressure_drop", 1.0),
+    "back_pressure": ("hot_pressure_drop", 1.0),
+    "minimum_hot_outlet_temperature": ("hot_outlet_temperature", -1.0),
+    "maximum_cold_outlet_temperature": ("cold_outlet_temperature", 1.0),
+    "maximum_length": ("stack_length", 1.0),
+    "maximum_width": ("stack_width", 1.0),
+    "maximum_height": ("stack_height", 1.0),
+    "maximum_module_mass": ("module_mass", 1.0),
+}
+"""Limits of the case with the result they bound, from above (1) or below (-1)."""
+
+Progress = Callable[[int, int], None]
+
+
+@dataclass(frozen=True)
+class Arrangement:
+    """One choice with what it gives; `fields` are the SI values of the further fields that were varied."""
+
+    module_count: int
+    rows_count: int
+    columns_count: int
+    layers_count: int
+    net_power: float
+    cost: float
+    fields: dict[str, float]
+
+
+@dataclass(frozen=True)
+class SizeCurve:
+    """The arrangement with the most net power at each number of modules, ascending; arrays (counts,).
+
+    `marginal_power` [W] is what a module adds between this count and the one before on the upper hull of the curve.
+    """
+
+    module_count: IntArray
+    rows_count: IntArray
+    columns_count: IntArray
+    layers_count: IntArray
+    generated_power: FloatArray
+    drive_power: FloatArray
+    net_power: FloatArray
+    marginal_power: FloatArray
+
+
+@dataclass(frozen=True)
+class CostFront:
+    """Choices of which none is both cheaper and stronger; arrays, rising in cost."""
+
+    cost: FloatArray
+    net_power: FloatArray
+    module_count: IntArray
+    rows_count: IntArray
+    columns_count: IntArray
+    layers_count: IntArray
+
+
+@dataclass(frozen=True)
+class BindingLimit:
+    """A limit that keeps the best from being better, with the best that leaving it out would bring."""
+
+    limit: str
+    without: Arrangement
+    net_power_gain: float
+
+
+@dataclass(frozen=True)
+class AtBound:
+    """An axis at whose end the best lies, so that a wider search may find a better one."""
+
+    field: str
+    end: str
+    value: float
+
+
+@dataclass(frozen=True)
+class Sizing:
+    """The best design of all choices, and how the choice stands among the others."""
+
+    objective: str
+    best: Estimate
+    arrangement: Arrangement
+    best_case: Case = field(compare=False)
+    curve: SizeCurve = field(default_factory=lambda: _no_curve())
+    most_net_power: float = np.nan
+    fewest_within_1_percent: int | None = None
+    fewest_within_5_percent: int | None = None
+    last_module_power: float = np.nan
+    least_net_watts_per_module: float | None = None
+    worthwhile: Arrangement | None = None
+    choices_tried: int = 0
+    choices_refined: int = 0
+    choices_invalid: dict[str, int] = field(default_factory=dict)
+    choices_beyond_limits: dict[str, int] = field(default_factory=dict)
+    binding_limits: tuple[BindingLimit, ...] = ()
+    limits_together: BindingLimit | None = None
+    at_bounds: tuple[AtBound, ...] = ()
+    net_power_without_window: float | None = None
+    front: CostFront | None = None
+    cost_per_net_watt: float = np.nan
+    cost_per_kilowatt_hour: float = np.nan
+    payback_years: float = np.nan
+    currency: str = ""
+
+
+class _Axes:
+    """What is varied: values by path, rows first so that neighbours in the order have alike numbers of rows."""
+
+    def __init__(self, case: Case) -> None:
+        size = case.size
+        if size is None:
+            raise InputError("size: the section [size] is missing; write it with rows = { from = 1, to = 40 } and more")
+        given = (size.rows, size.columns, size.layers)
+        stated = (case.stack.rows, case.stack.columns, case.stack.layers)
+        self.values: dict[str, FloatArray] = {
+            path: np.array(axis or (one,), dtype=float) for path, axis, one in zip(COUNTS, given, stated, strict=True)
+        }
+        self.values.update({path: np.array(axis) for path, axis in (size.fields or {}).items()})
+        self.shape = tuple(len(axis) for axis in self.values.values())
+        self.choices = int(np.prod(self.shape, dtype=float))
+        if self.choices > MOST_CHOICES:
+            raise InputError(f"size: {self.choices:,} choices; at most {MOST_CHOICES:,} are tried, so use longer steps")
+        if len(self.continuous) > MOST_REFINED:
+            raise InputError(
+                f"size: {len(self.continuous)} fields with a unit are varied; at most {MOST_REFINED} can be refined"
+            )
+
+    @property
+    def continuous(self) -> tuple[str, ...]:
+        """Fields with a unit and more than one value, which can be refined."""
+        return tuple(
+            path for path, axis in self.values.items() if len(axis) > 1 and DECLARATIONS[path].form == "quantity"
+        )
+
+    def chunks(self, segments: int) -> Iterator[IntArray]:
+        """Places of the choices, a bearable number at a time."""
+        rows, inner = self.values["stack.rows"], self.choices // self.shape[0]
+        first = 0
+        while first < self.choices:
+            after = first + max(1, int(SEARCH_CELLS / (rows[first // inner] * segments)))
+            most = rows[min(after, self.choices) // inner if after < self.choices else -1]
+            after = min(first + max(1, int(SEARCH_CELLS / (most * segments))), self.choices)
+            yield np.arange(first, after)
+            first = after
+
+    def at(self, places: IntArray) -> dict[str, FloatArray]:
+        """Values of choices by path, (places,)."""
+        indices = np.unravel_index(places, self.shape)
+        return {path: axis[index] for (path, axis), index in zip(self.values.items(), indices, strict=True)}
+
+
+class _Tally:
+    """What is kept of every choice: a few numbers, however many rows were solved."""
+
+    def __init__(self, case: Case) -> None:
+        self.case = case
+        self.parts: list[dict[str, FloatArray]] = []
+        self.limits = {
+            name: (result, sign) for name, (result, sign) in LIMITS.items() if np.isfinite(_limit(case, name))
+        }
+        self.reasons: dict[str, tuple[str, int]] = {}
+        self.choices = 0
+
+    def add(self, values: dict[str, FloatArray], *, counted: bool = True) -> None:
+        """Solve choices and keep their numbers; with `counted` their faults are counted too."""
+        cases = len(values["stack.rows"])
+        counts = values["stack.rows"] * values["stack.columns"] * values["stack.layers"]
+        bearable = counts <= MOST_MODULES
+        if not bearable.all():
+            if counted:
+                self.note("stack.rows: too many modules to be solved", int((~bearable).sum()))
+                self.choices += int((~bearable).sum())
+            if bearable.any():
+                self.add({path: each[bearable] for path, each in values.items()}, counted=counted)
+            return
+        rows = values["stack.rows"]
+        if self.case.electrical.row_blocks is not None and np.ptp(rows) > 0:  # blocks are of one structure in a batch
+            for each in np.unique(rows):
+                self.add({path: value[rows == each] for path, value in values.items()}, counted=counted)
+            return
+        blocks = row_blocks(self.case, int(rows[0]))
+        base = dataclasses.replace(self.case, electrical=dataclasses.replace(self.case.electrical, row_blocks=blocks))
+        batch = Batch(base, cases, values)
+        found = search_batch(batch)
+        if counted:
+            self.choices += cases
+            for problem in found.problem[found.problem != ""]:
+                self.note(problem.split(BETWEEN)[0], 1)
+        self.keep(batch, values, found)
+
+    def keep(self, batch: Batch, values: dict[str, FloatArray], found: Outcomes) -> None:
+        """Keep the choices that have an answer."""
+        valid = found.problem == ""
+        scalars = found.scalars
+        cost = building_cost(batch, scalars)
+        part = {
+            **values,
+            "module_count": values["stack.rows"] * values["stack.columns"] * values["stack.layers"],
+            "generated_power": scalars["generated_power"],
+            "drive_power": scalars["hot_drive_power"] + scalars["cold_drive_power"],
+            "net_power": scalars["net_power"],
+            "cost": cost,
+            "cost_per_kilowatt_hour": cost_per_kilowatt_hour(batch, cost, scalars["net_power"]),
+            **{name: scalars[result] for name, (result, _) in self.limits.items()},
+        }
+        self.parts.append({name: np.asarray(each)[valid] for name, each in part.items()})
+
+    def note(self, reason: str, count: int) -> None:
+        """Count a reason; reasons that differ in numbers only are one."""
+        key = re.sub(r"-?\d[\d.e+-]*", "#", reason)
+        text, before = self.reasons.get(key, (reason, 0))
+        self.reasons[key] = (text, before + count)
+
+    def all(self) -> _Found:
+        """Every choice with an answer so far."""
+        names = self.parts[0] if self.parts else {}
+        numbers = {name: np.concatenate([part[name] for part in self.parts]) for name in names}
+        beyond = {
+            name: sign * numbers[name] > sign * _limit(self.case, name) for name, (_, sign) in self.limits.items()
+        }
+        return _Found(self.case, numbers, beyond)
+
+
+def _limit(case: Case, name: str) -> float:
+    """A limit in SI; NaN where the case has none. Faces obey the module's limit too."""
+    given = getattr(case.limits, name)
+    limit = np.nan if given is None else float(given)
+    if name == "hot_face_temperature":
+        of_module = case.module.maximum_hot_face_temperature
+        return float(np.fmin(limit, np.nan if of_module is None else of_module))
+    return limit
+
+
+@dataclass(frozen=True)
+class _Found:
+    """Choices with an answer: numbers by name and which limits they break, (found,)."""
+
+    case: Case
+    numbers: dict[str, FloatArray]
+    beyond: dict[str, BoolArray]
+
+    def allowed(self, without: tuple[str, ...] = ()) -> BoolArray:
+        """Choices within the limits, some of them left out."""
+        inside = np.ones(len(self.numbers["net_power"]), dtype=bool)
+        for name, wrong in self.beyond.items():
+            if name not in without:
+                inside &= ~wrong
+        return inside
+
+    def order(self, among: BoolArray) -> IntArray:
+        """Places of choices that meet the objective, the best first; of equals the one with fewer modules."""
+        size = self.case.size
+        assert size is not None
+        net, count, cost = (self.numbers[name] for name in ("net_power", "module_count", "cost"))
+        if size.objective == "fewest modules":
+            reached = among & (net >= float(size.target_net_power or 0.0))
+            keys: tuple[FloatArray, ...] = (-net, count)
+        elif size.objective == "net power":
+            reached, keys = among, (count, -net)
+        else:
+            reached = among & (net > 0)
+            with np.errstate(all="ignore"):
+                each = cost / net if size.objective == "cost per net watt" else self.numbers["cost_per_kilowatt_hour"]
+            keys = (count, each)
+        places = np.flatnonzero(reached)
+        return places[np.lexsort(tuple(key[places] for key in keys))]
+
+    def arrangement(self, place: int) -> Arrangement:
+        """One choice as it is reported."""
+        numbers = {name: float(each[place]) for name, each in self.numbers.items()}
+        fields = {path: numbers[path] for path in (self.case.size.fields or {} if self.case.size else {})}
+        rows, columns, layers = (int(numbers[path]) for path in COUNTS)
+        return Arrangement(
+            int(numbers["module_count"]), rows, columns, layers, numbers["net_power"], numbers["cost"], fields
+        )
+
+
+def _no_curve() -> SizeCurve:
+    whole, real = np.empty(0, dtype=np.int64), np.empty(0)
+    return SizeCurve(whole, whole, whole, whole, real, real, real, real)
+
+
+def _whole(found: _Found, name: str, places: IntArray) -> IntArray:
+    return found.numbers[name][places].astype(np.int64)
+
+
+def _curve(found: _Found, among: BoolArray) -> SizeCurve:
+    """Strongest choice at each number of modules."""
+    places = np.flatnonzero(among)
+    net, count = found.numbers["net_power"][places], found.numbers["module_count"][places]
+    order = np.lexsort((-net, count))
+    counts, first = np.unique(count[order], return_index=True)
+    chosen = places[order[first]]
+    net = found.numbers["net_power"][chosen]
+    rows, columns, layers = (_whole(found, path, chosen) for path in COUNTS)
+    return SizeCurve(
+        counts.astype(np.int64),
+        rows,
+        columns,
+        layers,
+        found.numbers["generated_power"][chosen],
+        found.numbers["drive_power"][chosen],
+        net,
+        marginal_power(counts, net),
+    )
+
+
+def marginal_power(counts: FloatArray, net_power: FloatArray) -> FloatArray:
+    """Slope of the upper concave hull of net power [W] over module counts, from no module on, (counts,).
+
+    The hull leaves out counts that arrange badly, such as large primes, so that its slope never rises.
+    """
+    corners = [(0.0, 0.0)]
+    for point in zip(counts, net_power, strict=True):
+        while len(corners) > 1:
+            (x1, y1), (x2, y2) = corners[-2:]
+            if (y2 - y1) * (point[0] - x2) > (point[1] - y2) * (x2 - x1):
+                break
+            corners.pop()
+        corners.append((float(point[0]), float(point[1])))
+    x, y = np.array(corners).T
+    slopes = np.diff(y) / np.diff(x)
+    return np.asarray(slopes[np.searchsorted(x, counts, side="left") - 1])
+
+
+def _front(found: _Found, among: BoolArray) -> CostFront | None:
+    """Choices that nothing beats in both cost and net power; None without prices."""
+    if found.case.cost is None:
+        return None
+    places = np.flatnonzero(among)
+    cost, net = found.numbers["cost"][places], found.numbers["net_power"][places]
+    order = np.lexsort((-net, cost))
+    before = np.concatenate([[-np.inf], np.maximum.accumulate(net[order])[:-1]])
+    chosen = places[order[net[order] > before]]
+    return CostFront(
+        found.numbers["cost"][chosen],
+        found.numbers["net_power"][chosen],
+        _whole(found, "module_count", chosen),
+        *(_whole(found, path, chosen) for path in COUNTS),
+    )
+
+
+def _refine(tally: _Tally, axes: _Axes) -> int:
+    """Halve the distance of fields with a unit around the best, then try all counts at the refined values."""
+    fields = axes.continuous
+    if not fields:
+        return 0
+    tried = 0
+    step = {path: float(np.diff(axes.values[path]).max()) for path in fields}
+    for turn in range(REFINEMENTS):
+        found = tally.all()
+        order = found.order(found.allowed())
+        if not len(order):
+            return tried
+        best = {path: float(found.numbers[path][order[0]]) for path in axes.values}
+        around = []
+        for path in fields:
+            ends = axes.values[path][[0, -1]]
+            points = best[path] + step[path] * np.linspace(-1.0, 1.0, REFINED_POINTS)
+            around.append(np.unique(np.clip(points, *ends)))
+            step[path] = 0.5 * step[path]
+        mesh = [each.ravel() for each in np.meshgrid(*around, indexing="ij")]
+        refined = {path: np.full(len(mesh[0]), value) for path, value in best.items()}
+        refined.update(dict(zip(fields, mesh, strict=True)))
+        tally.add(refined, counted=False)
+        tried += len(mesh[0])
+        if turn == REFINEMENTS // 2 or turn == REFINEMENTS - 1:
+            tried += _counts_again(tally, axes, fields)
+    return tried
+
+
+def _counts_again(tally: _Tally, axes: _Axes, fields: tuple[str, ...]) -> int:
+    """Try everything that has no unit at the best values of the fields that have one."""
+    found = tally.all()
+    place = found.order(found.allowed())[0]
+    whole = _Axes.__new__(_Axes)
+    whole.values = {
+        path: found.numbers[path][[place]] if path in fields else axis for path, axis in axes.values.items()
+    }
+    whole.shape = tuple(len(axis) for axis in whole.values.values())
+    whole.choices = int(np.prod(whole.shape, dtype=float))
+    for places in whole.chunks(tally.case.stack.segments):
+        tally.add(whole.at(places), counted=False)
+    return whole.choices
+
+
+def _at_bounds(axes: _Axes, arrangement: dict[str, float]) -> tuple[AtBound, ...]:
+    """Axes at whose end the best lies; below one of a whole number there is nothing."""
+    found = []
+    for path, axis in axes.values.items():
+        value = arrangement[path]
+        if len(axis) < 2:
+            continue
+        if value >= axis[-1]:
+            found.append(AtBound(path, "highest", value))
+        elif value <= axis[0] and not (DECLARATIONS[path].form == "integer" and value <= 1):
+            found.append(AtBound(path, "lowest", value))
+    return tuple(found)
+
+
+def _binding(found: _Found, order: IntArray) -> tuple[tuple[BindingLimit, ...], BindingLimit | None]:
+    """Limits without which another choice would be best; and all together, where no single one does it."""
+    best = found.arrangement(int(order[0]))
+
+    def without(name: str, left_out: tuple[str, ...]) -> BindingLimit | None:
+        place = int(found.order(found.allowed(left_out))[0])
+        if found.allowed()[place]:
+            return None
+        other = found.arrangement(place)
+        return BindingLimit(name, other, other.net_power - best.net_power)
+
+    single = tuple(each for name in found.beyond if (each := without(name, (name,))) is not None)
+    return single, None if single else without("all limits together", tuple(found.beyond))
+
+
+def size(case: Case, progress: Progress | None = None) -> Sizing:
+    """Solve every choice in [size] and find the best that keeps to [limits].
+
+    Parameters: `case` with a section [size]; `progress`, called with choices done and choices in all. Raises InputError
+    for what concerns all choices, NoAnswerError where no choice has an answer within the limits.
+    """
+    axes, tally = _Axes(case), _Tally(case)
+    for places in axes.chunks(case.stack.segments):
+        tally.add(axes.at(places))
+        if progress is not None:
+            progress(int(places[-1]) + 1, axes.choices)
+    found = tally.all()
+    if not found.numbers or not len(found.numbers["net_power"]):
+        raise NoAnswerError("\n".join(["no choice has an answer", *_said(tally)]))
+    beyond = {name: int(wrong.sum()) for name, wrong in found.beyond.items() if wrong.any()}
+    refined = _refine(tally, axes)
+    found = tally.all()
+    order = found.order(found.allowed())
+    if not len(order):
+        raise NoAnswerError("\n".join(_none_meets(found, beyond, tally)))
+    for place in order[:MOST_WITHOUT_ESTIMATE]:
+        chosen = {path: float(found.numbers[path][place]) for path in axes.values}
+        best_case = designed(case, chosen)
+        best = estimate(best_case)
+        if best.valid:
+            break
+        tally.note(best.problem.split(BETWEEN)[0], 1)
+        found.numbers["net_power"][place] = -np.inf
+    else:
+        raise NoAnswerError(f"the best choices have no estimate: {best.problem}")
+    order = order[np.flatnonzero(order == place)[0] :]
+    allowed = found.allowed() & np.isfinite(found.numbers["net_power"])
+    curve = _curve(found, allowed)
+    most = float(curve.net_power.max())
+    arrangement = found.arrangement(int(order[0]))
+    single, together = _binding(found, order)
+    worth = case.size.least_net_watts_per_module if case.size is not None else None
+    return Sizing(
+        objective=case.size.objective if case.size is not None else "",
+        best=best,
+        arrangement=arrangement,
+        best_case=best_case,
+        curve=curve,
+        most_net_power=most,
+        fewest_within_1_percent=_fewest(curve, 0.99 * most),
+        fewest_within_5_percent=_fewest(curve, 0.95 * most),
+        last_module_power=float(curve.marginal_power[np.searchsorted(curve.module_count, arrangement.module_count)]),
+        least_net_watts_per_module=worth,
+        worthwhile=_worthwhile(found, allowed, worth),
+        choices_tried=tally.choices,
+        choices_refined=refined,
+        choices_invalid=dict(tally.reasons.values()),
+        choices_beyond_limits=beyond,
+        binding_limits=single,
+        limits_together=together,
+        at_bounds=_at_bounds(axes, chosen),
+        net_power_without_window=_without_window(best_case, best),
+        front=_front(found, allowed),
+        **_worth_of(case, arrangement),
+    )
+
+
+def _without_window(case: Case, best: Estimate) -> float | None:
+    """Net power of the best if the converter's window did not hold its voltage [W]; None where it does not."""
+    window = case.electrical.converter_window
+    if window is None or best.voltage not in window:
+        return None
+    electrical = dataclasses.replace(case.electrical, converter_window=None)
+    found = search_batch(Batch(dataclasses.replace(case, electrical=electrical)))
+    return float(found.scalars["net_power"][0])
+
+
+def _worth_of(case: Case, best: Arrangement) -> dict[str, Any]:
+    """Costs of the best against what it gives; payback where electricity has a price in the same currency."""
+    if case.cost is None:
+        return {}
+    net = np.array([best.net_power])
+    each = float(cost_per_kilowatt_hour(Batch(case), np.array([best.cost]), net)[0])
+    price = case.site.electricity_value
+    one_currency = price is not None and price.currency == case.cost.currency
+    yearly = price.amount * best.net_power * case.site.yearly_operation if price is not None and one_currency else 0.0
+    return {
+        "cost_per_net_watt": best.cost / best.net_power if best.net_power > 0 else np.inf,
+        "cost_per_kilowatt_hour": each,
+        "payback_years": best.cost / yearly if yearly > 0 else np.nan,
+        "currency": case.cost.currency,
+    }
+
+
+def _said(tally: _Tally) -> list[str]:
+    return [f"{count:,} choices: {text}" for text, count in tally.reasons.values()]
+
+
+def _none_meets(found: _Found, beyond: dict[str, int], tally: _Tally) -> list[str]:
+    """Why no choice is left."""
+    lines = [f"no choice keeps to the limits: {len(found.numbers['net_power']):,} have an answer"]
+    if found.allowed().any():
+        lines = [f"no choice meets the objective; the most net power within the limits is {_most(found):.6g} W"]
+    return [*lines, *(f"{count:,} choices: beyond limits.{name}" for name, count in beyond.items()), *_said(tally)]
+
+
+def _most(found: _Found) -> float:
+    return float(found.numbers["net_power"][found.allowed()].max())
+
+
+def _fewest(curve: SizeCurve, net_power: float) -> int | None:
+    """Fewest modules that give a net power [W]; None where the most there is is a loss."""
+    enough = np.flatnonzero(curve.net_power >= net_power)
+    return int(curve.module_count[enough[0]]) if net_power > 0 and len(enough) else None
+
+
+def _worthwhile(found: _Found, among: BoolArray, worth: float | None) -> Arrangement | None:
+    """Choice up to which every further module adds at least its worth [W]; None if not even the first do."""
+    if worth is None:
+        return None
+    surplus = np.where(among, found.numbers["net_power"] - worth * found.numbers["module_count"], -np.inf)
+    place = int(np.argmax(surplus))
+    return found.arrangement(place) if surplus[place] > 0 else None
+
+
+def row_blocks(case: Case, rows: int) -> tuple[int, ...] | None:
+    """Blocks of a stack with other rows: as even as can be, none longer than the longest given, short ones first."""
+    given = case.electrical.row_blocks
+    if given is None or rows == case.stack.rows:
+        return given
+    count = -(-rows // max(given))
+    length, longer = divmod(rows, count)
+    return (length,) * (count - longer) + (length + 1,) * longer
+
+
+def designed(case: Case, values: dict[str, float]) -> Case:
+    """Case of one choice, without [size], as it would be read from a file."""
+    whole: dict[str, Any] = {
+        path: int(value) if DECLARATIONS[path].form == "integer" else value for path, value in values.items()
+    }
+    if case.electrical.row_blocks is not None:
+        whole["electrical.row_blocks"] = row_blocks(case, whole["stack.rows"])
+    bare = dataclasses.replace(case, given={name: each for name, each in case.given.items() if name != "size"})
+    return replace(bare, whole)
