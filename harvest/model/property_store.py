@@ -8,7 +8,6 @@ import hashlib
 import json
 import os
 import sys
-import tempfile
 from dataclasses import asdict
 from dataclasses import fields as fields_of
 from pathlib import Path
@@ -106,6 +105,8 @@ def _write(path: Path, stated: dict[str, Any], table: FluidTable) -> None:
     values = {field.name: getattr(table, field.name) for field in fields_of(table)}
     values["coefficients"] = table.coefficients.tolist()
     content = json.dumps({"stated": stated, "digest": _digest(values), "table": values})
+    import tempfile
+
     with contextlib.suppress(OSError):
         path.parent.mkdir(parents=True, exist_ok=True)
         handle, temporary = tempfile.mkstemp(dir=path.parent, prefix=".new-", suffix=".json")

@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import numpy as np
-from numpy.polynomial import chebyshev
 
 from harvest.physics.arrays import FloatArray
 
@@ -43,15 +42,15 @@ def derivative(coefficients: FloatArray, lower: float, upper: float) -> FloatArr
     """Coefficients of the derivative, as many as given (the last is zero), (terms,)."""
     slope = np.zeros_like(coefficients)
     if len(coefficients) > 1:
-        slope[:-1] = chebyshev.chebder(coefficients) * (2.0 / (upper - lower))
+        slope[:-1] = np.polynomial.chebyshev.chebder(coefficients) * (2.0 / (upper - lower))
     return slope
 
 
 def integral(coefficients: FloatArray, lower: float, upper: float) -> FloatArray:
     """Coefficients (terms + 1,) of the integral that is zero in the middle of the interval."""
-    return np.asarray(chebyshev.chebint(coefficients, scl=0.5 * (upper - lower)))
+    return np.asarray(np.polynomial.chebyshev.chebint(coefficients, scl=0.5 * (upper - lower)))
 
 
 def expansion_value(coefficients: FloatArray, x: FloatArray) -> FloatArray:
     """Value of one expansion (terms,) at `x`, -1 to 1, any shape."""
-    return np.asarray(chebyshev.chebval(x, coefficients))
+    return np.asarray(np.polynomial.chebyshev.chebval(x, coefficients))
