@@ -15,16 +15,8 @@ from hypothesis import strategies as st
 
 import harvest
 from harvest.errors import CaseError, InputError
-from harvest.model.case import (
-    DECLARATIONS,
-    Case,
-    Curve,
-    assumptions,
-    case_hash,
-    explain,
-    fields,
-    value_at,
-)
+from harvest.model.case import DECLARATIONS, Case, assumptions, case_hash, explain, fields, value_at
+from harvest.model.case_fields import Curve
 from harvest.model.case_rules import broken_rules
 from harvest.model.case_text import key_lines
 from harvest.model.reading import case_from, load_case, read_case, replace

@@ -12,7 +12,7 @@ from typing import Any
 import pytest
 from click.testing import CliRunner, Result
 
-from harvest.cli.commands import cli
+from harvest.cli import cli
 from harvest.model.results import ROW_RESULTS, SCALARS, UNITS
 
 REPOSITORY = Path(__file__).parents[1]
@@ -381,7 +381,7 @@ def test_usage_errors_are_exit_2() -> None:
 # ---------------------------------------------------------------- the process
 
 LOADED = (
-    "import sys\nfrom harvest.cli.commands import cli\n"
+    "import sys\nfrom harvest.cli import cli\n"
     "try:\n    cli(sys.argv[1:], prog_name='harvest')\nexcept SystemExit as end:\n    code = end.code\n"
     "heavy = [name for name in ('CoolProp', 'scipy', 'matplotlib', 'pint', 'jinja2') if name in sys.modules]\n"
     "print('LOADED', code or 0, *heavy, file=sys.stderr)"

@@ -8,7 +8,7 @@ from pathlib import Path
 
 import pytest
 
-from harvest.cli.commands import cli
+from harvest.cli import cli
 from harvest.model import checks
 from harvest.model.case import DECLARATIONS
 from harvest.model.estimate import estimate

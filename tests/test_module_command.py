@@ -9,7 +9,7 @@ import numpy as np
 import pytest
 from click.testing import CliRunner, Result
 
-from harvest.cli.commands import cli
+from harvest.cli import cli
 from harvest.errors import InputError
 from harvest.model.module_curve import module_curve
 from harvest.physics.thermoelectrics import maximum_efficiency

@@ -10,7 +10,7 @@ import numpy as np
 import pytest
 from click.testing import CliRunner
 
-from harvest.cli.commands import cli
+from harvest.cli import cli
 from harvest.errors import CaseError
 from harvest.model.batch import Batch
 from harvest.model.estimate import estimate, estimate_batch

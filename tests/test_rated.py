@@ -9,7 +9,8 @@ from hypothesis import strategies as st
 
 from harvest.errors import CaseError
 from harvest.model.batch import Batch
-from harvest.model.case import Case, FlowCurve
+from harvest.model.case import Case
+from harvest.model.case_fields import FlowCurve
 from harvest.model.design import design
 from harvest.model.estimate import estimate, estimate_batch
 from harvest.model.reading import case_from, read_case, replace

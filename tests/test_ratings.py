@@ -14,7 +14,7 @@ from scipy.optimize import brentq, minimize_scalar
 
 from harvest.errors import CaseError, InputError
 from harvest.model.batch import Batch
-from harvest.model.case import GeneratorRating, case_hash, explain, value_at
+from harvest.model.case import case_hash, explain, value_at
 from harvest.model.estimate import estimate, estimate_batch
 from harvest.model.materials import load_material
 from harvest.model.module import (
@@ -23,6 +23,7 @@ from harvest.model.module import (
     described_module,
 )
 from harvest.model.reading import case_from, load_case, read_case, replace
+from harvest.model.stack_sections import GeneratorRating
 from harvest.physics.arrays import FloatArray
 from harvest.physics.curves import HeldCurve, PolynomialCurve, TableCurve
 from harvest.physics.ratings import (

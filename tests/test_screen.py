@@ -15,7 +15,7 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 
 import harvest
-from harvest.cli.commands import cli
+from harvest.cli import cli
 from harvest.errors import CaseError, InputError
 from harvest.model.batch import StreamBatch
 from harvest.model.case import Streams
@@ -301,7 +301,7 @@ def test_exit_codes(inlet: str, code: int, message: str) -> None:
 
 def test_usage_errors_load_nothing_heavy() -> None:
     program = (
-        "import sys; from harvest.cli.commands import cli\n"
+        "import sys; from harvest.cli import cli\n"
         "try: cli(['screen', '-', '--set', 'hot.fluid=none'], prog_name='harvest')\n"
         "except SystemExit as end: assert end.code == 2, end.code\n"
         "print([name for name in ('CoolProp', 'scipy', 'matplotlib', 'pint') if name in sys.modules])"

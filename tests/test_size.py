@@ -18,7 +18,7 @@ from click.testing import CliRunner, Result
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
-from harvest.cli.commands import cli
+from harvest.cli import cli
 from harvest.errors import CaseError, NoAnswerError
 from harvest.model.batch import Batch
 from harvest.model.case import Case

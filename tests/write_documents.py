@@ -12,7 +12,7 @@ import click
 import numpy as np
 from click.testing import CliRunner
 
-from harvest.cli.commands import cli
+from harvest.cli import cli
 from harvest.physics.fluids import FluidBatch, FluidSpec, fluid_table
 from harvest.report.reference import CheckedNumber, case_reference, check_list, result_reference
 from tests.test_published import SOURCES, as_argument

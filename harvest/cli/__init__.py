@@ -1,5 +1,6 @@
 """The command line: reads, calls one library function, writes."""
 
-from harvest.cli.commands import main
+from harvest.cli import commands, study_commands
+from harvest.cli.program import cli, main
 
-__all__ = ["main"]
+__all__ = ["cli", "commands", "main", "study_commands"]

@@ -8,6 +8,33 @@ from dataclasses import dataclass
 from typing import Any
 
 REQUIRED: Any = object()
+MOST_ROWS = 10_000
+MOST_MODULES = 1_000_000
+NOT_TO_ZERO = "none unless given, which flatters the result"
+
+
+@dataclass(frozen=True)
+class Curve:
+    """A module parameter against mean temperature.
+
+    kind "polynomial": `values` are coefficients in (T - 300 K), lowest power first, `temperatures` is empty;
+    kind "table": `values` at `temperatures` [K], ascending.
+    """
+
+    kind: str
+    values: tuple[float, ...]
+    temperatures: tuple[float, ...] = ()
+
+
+@dataclass(frozen=True)
+class FlowCurve:
+    """A quantity against volume flow: rising `flows` [m^3/s] and `values` [SI] of the points."""
+
+    flows: tuple[float, ...]
+    values: tuple[float, ...]
+
+
+FluidRows = tuple[tuple[float, float, float, float, float], ...]
 
 
 @dataclass(frozen=True, kw_only=True)

@@ -8,8 +8,7 @@ from typing import Any
 
 import numpy as np
 
-from harvest.model.case import GASES, GLYCOLS, HEAT_SINK, MOST_MODULES, RATED
-from harvest.model.case_fields import Declaration
+from harvest.model.case_fields import MOST_MODULES, Declaration
 from harvest.model.loads import FIXED_RESISTANCE, FIXED_VOLTAGE
 from harvest.model.rating_rules import (
     LARGEST_MERIT,
@@ -19,6 +18,7 @@ from harvest.model.rating_rules import (
     generator_scatter,
     rating_numbers,
 )
+from harvest.model.stream_sections import GASES, GLYCOLS, HEAT_SINK, RATED
 from harvest.quantities import significant
 
 FLOWS = ("mass_flow", "volume_flow", "standard_volume_flow", "drive_curve")

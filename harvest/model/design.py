@@ -10,7 +10,7 @@ import numpy as np
 
 from harvest.errors import RangeError
 from harvest.model.batch import Batch, StreamBatch
-from harvest.model.case import DECLARATIONS, HEAT_SINK, RATED, limits_text
+from harvest.model.case import DECLARATIONS, limits_text
 from harvest.model.loads import MAXIMUM_POWER
 from harvest.model.module import DescribedModule, cooler_faults, described_module, fill_factor, footprint_area
 from harvest.model.property_store import stored_table
@@ -23,6 +23,7 @@ from harvest.model.stack import (
     StackProblem,
     StackSide,
 )
+from harvest.model.stream_sections import HEAT_SINK, RATED
 from harvest.physics.arrays import BoolArray, FloatArray, IntArray
 from harvest.physics.combustion import (
     GAS_CONSTANT,

@@ -8,7 +8,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from harvest.model.batch import Batch
-from harvest.model.case import Curve as CaseCurve
+from harvest.model.case_fields import Curve as CaseCurve
 from harvest.model.materials import MaterialRecord, load_material
 from harvest.model.rating_rules import (
     Contradiction,

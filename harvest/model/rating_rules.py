@@ -7,8 +7,8 @@ from typing import NamedTuple
 
 import numpy as np
 
-from harvest.model.case import GeneratorRating
 from harvest.model.case_fields import declared
+from harvest.model.stack_sections import GeneratorRating
 from harvest.physics.arrays import BoolArray, FloatArray
 from harvest.physics.ratings import (
     ELECTRICAL_RATINGS,

@@ -14,21 +14,8 @@ from pathlib import Path
 from typing import Any, NamedTuple, TypeVar
 
 from harvest.errors import CaseError, InputError, QuantityError
-from harvest.model.case import (
-    DECLARATIONS,
-    HEAT_SINK,
-    Case,
-    Curve,
-    FlowCurve,
-    FluidRows,
-    Side,
-    Streams,
-    StreamSide,
-    limits_text,
-    nearest_field,
-    nearest_name,
-)
-from harvest.model.case_fields import REQUIRED, Declaration, declared, walk
+from harvest.model.case import DECLARATIONS, Case, Streams, limits_text, nearest_field, nearest_name
+from harvest.model.case_fields import REQUIRED, Curve, Declaration, FlowCurve, FluidRows, declared, walk
 from harvest.model.case_rules import (
     ALTERNATIVES,
     CURVES,
@@ -41,6 +28,7 @@ from harvest.model.case_rules import (
     without_effect,
 )
 from harvest.model.case_text import bounded_text, key_lines, toml_document, toml_value
+from harvest.model.stream_sections import HEAT_SINK, Side, StreamSide
 from harvest.quantities import (
     HIGHEST_DEGREE,
     KINDS,

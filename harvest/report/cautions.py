@@ -2,8 +2,9 @@
 
 from __future__ import annotations
 
-from harvest.model.case import HEAT_SINK, Case
+from harvest.model.case import Case
 from harvest.model.results import Estimate
+from harvest.model.stream_sections import HEAT_SINK
 from harvest.quantities import format_quantity
 
 TOUCH_LIMIT = 333.15

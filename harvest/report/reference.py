@@ -31,7 +31,7 @@ refused where the quantity has one. Unknown fields are refused, and all faults a
 `harvest explain FIELD` tells what stands here, `harvest check CASE` what was assumed, and `harvest start` writes a
 commented file to begin with. Allowed ranges are in SI units; fields without a default must be given where they apply.
 
-This page is made from the declarations in `harvest/model/case.py`.
+This page is made from the declarations in `harvest/model/*_sections.py`.
 """
 CURVES_AND_UNITS = """\
 ## Curves

@@ -5,7 +5,8 @@ from __future__ import annotations
 import math
 from typing import Any
 
-from harvest.model.case import GASES, Streams, StreamSide, assumptions
+from harvest.model.case import Streams, assumptions
+from harvest.model.stream_sections import GASES, StreamSide
 from harvest.quantities import format_quantity, one_line, significant
 from harvest.report.documents import plain
 from harvest.report.layout import WIDTH, heading, pairs, table, wrapped

@@ -7,7 +7,8 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from harvest.model.case import DECLARATIONS, OBJECTIVES, Case, display
+from harvest.model.case import DECLARATIONS, Case, display
+from harvest.model.study_sections import OBJECTIVES
 from harvest.quantities import format_quantity
 from harvest.report.layout import WIDTH, heading, table, wrapped
 from harvest.report.terminal import stack_sentence, title, verdict

@@ -6,19 +6,10 @@ import math
 from collections.abc import Mapping, Sequence
 from typing import TYPE_CHECKING, Any
 
-from harvest.model.case import (
-    DECLARATIONS,
-    HEAT_SINK,
-    Case,
-    Streams,
-    StreamSide,
-    assumptions,
-    case_hash,
-    display,
-    value_at,
-)
+from harvest.model.case import DECLARATIONS, Case, Streams, assumptions, case_hash, display, value_at
 from harvest.model.checks import STATUS_NAMES, Check
 from harvest.model.results import Estimate
+from harvest.model.stream_sections import HEAT_SINK, StreamSide
 from harvest.quantities import format_quantity, one_line
 from harvest.report.cautions import cautions
 from harvest.report.layout import WIDTH, heading, pairs, table, wrapped

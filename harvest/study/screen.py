@@ -10,10 +10,11 @@ import numpy as np
 
 from harvest.errors import InputError
 from harvest.model.batch import StreamBatch
-from harvest.model.case import GASES, Streams, case_hash
+from harvest.model.case import Streams, case_hash
 from harvest.model.case_rules import FLOWS
 from harvest.model.checks import ACID_MARGIN
 from harvest.model.design import BETWEEN, Faults, stream_excess_air_ratio, stream_fluid, stream_mass_flow
+from harvest.model.stream_sections import GASES
 from harvest.physics.arrays import BoolArray, FloatArray, ObjectArray
 from harvest.physics.combustion import sulphuric_acid_dew_point, sulphuric_acid_fraction, water_dew_point
 from harvest.physics.fluids import FluidBatch

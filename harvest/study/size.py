@@ -12,7 +12,8 @@ import numpy as np
 
 from harvest.errors import InputError, NoAnswerError
 from harvest.model.batch import Batch
-from harvest.model.case import DECLARATIONS, MOST_MODULES, Case
+from harvest.model.case import DECLARATIONS, Case
+from harvest.model.case_fields import MOST_MODULES
 from harvest.model.costs import building_cost, cost_per_kilowatt_hour
 from harvest.model.design import BETWEEN
 from harvest.model.estimate import Outcomes, estimate, search_batch

@@ -12,7 +12,7 @@ import numpy as np
 
 from harvest.errors import CaseError, InputError, NoAnswerError
 from harvest.model.batch import Batch
-from harvest.model.case import GASES, RATED, Case, case_hash
+from harvest.model.case import Case, case_hash
 from harvest.model.design import Design, Stream, design, maximum_power_load
 from harvest.model.driven_flow import driven_batch
 from harvest.model.estimate import estimate, estimate_batch
@@ -20,6 +20,7 @@ from harvest.model.fluid import quantity_of
 from harvest.model.loads import FIXED_VOLTAGE, OPEN_CIRCUIT
 from harvest.model.results import Estimate
 from harvest.model.stack import Load, StackState, solve_stack
+from harvest.model.stream_sections import GASES, RATED
 from harvest.physics.arrays import FloatArray, IntArray, ObjectArray
 from harvest.physics.combustion import sulphuric_acid_dew_point, sulphuric_acid_fraction, water_dew_point
 from harvest.physics.expansion import EXPANSION, differential_expansion

@@ -1,0 +1,113 @@
+"""Sections of the case file about what a design must keep to, what it costs, and what a study may change."""
+# ruff: noqa: RUF009 - the declaring functions return dataclasses.field(...), which is no shared default
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import Any
+
+from harvest.model.case_fields import (
+    MOST_ROWS,
+    choice,
+    other,
+    quantity,
+    text,
+)
+
+
+def _limit(kind: str, meaning: str) -> Any:
+    lowest = {"minimum": 1.0, "maximum": 5000.0} if kind == "temperature" else {"above": 0.0, "maximum": 1e9}
+    return quantity(kind, meaning, default=None, descriptive=False, **lowest)
+
+
+@dataclass(frozen=True, kw_only=True)
+class Limits:
+    """What the design must keep to; an estimate checks it, a sizing obeys it."""
+
+    hot_face_temperature: float | None = _limit("temperature", "Highest allowed temperature of a module's hot face.")
+    cold_face_temperature: float | None = _limit("temperature", "Highest allowed temperature of a module's cold face.")
+    hot_pressure_drop: float | None = _limit("pressure difference", "Highest allowed pressure drop on the hot side.")
+    cold_pressure_drop: float | None = _limit("pressure difference", "Highest allowed pressure drop on the cold side.")
+    back_pressure: float | None = _limit("pressure difference", "Highest back pressure that the engine allows.")
+    minimum_hot_outlet_temperature: float | None = _limit(
+        "temperature", "Lowest allowed outlet temperature of the hot stream."
+    )
+    maximum_cold_outlet_temperature: float | None = _limit(
+        "temperature", "Highest allowed outlet temperature of the cold stream."
+    )
+    maximum_length: float | None = _limit("length", "Longest plates allowed along the flow.")
+    maximum_width: float | None = _limit("length", "Widest plates allowed across the flow.")
+    maximum_height: float | None = _limit("length", "Highest stack allowed; needs the module's thickness.")
+    maximum_module_mass: float | None = _limit("mass", "Largest mass of the modules allowed; needs the module's mass.")
+
+
+OBJECTIVES = {
+    "net power": "the most net power",
+    "fewest modules": "the fewest modules that give target_net_power",
+    "cost per net watt": "the least cost of building over net power; needs [cost]",
+    "cost per kilowatt-hour": "the least cost of a net kilowatt-hour over the years of use; needs [cost]",
+}
+
+
+def _count_axis(meaning: str) -> Any:
+    return other("axis", meaning, default=None, minimum=1, maximum=MOST_ROWS, descriptive=True)
+
+
+@dataclass(frozen=True, kw_only=True)
+class Size:
+    """What a sizing may change, and what it looks for."""
+
+    rows: tuple[int, ...] | None = _count_axis(
+        "Numbers of rows to try; unless given, that of the stack. Row blocks grow no longer than the longest."
+    )
+    columns: tuple[int, ...] | None = _count_axis("Numbers of columns to try; unless given, that of the stack.")
+    layers: tuple[int, ...] | None = _count_axis("Numbers of layers to try; unless given, that of the stack.")
+    objective: str = choice(OBJECTIVES, "What the best design is best in.", default="net power", descriptive=True)
+    target_net_power: float | None = quantity(
+        "power",
+        "Net power that the fewest modules must give.",
+        above=0.0,
+        maximum=1e9,
+        applies=("objective", ("fewest modules",)),
+        descriptive=True,
+    )
+    least_net_watts_per_module: float | None = quantity(
+        "power",
+        "Net power that a further module must add to be worth its place.",
+        default=None,
+        above=0.0,
+        maximum=1e6,
+        descriptive=True,
+    )
+    fields: dict[str, tuple[float, ...]] | None = other(
+        "axes",
+        'Further fields to try, written in [size] by their whole names in quotes, such as "hot.duct.gap" = '
+        '{ from = "2 mm", to = "6 mm", points = 5 }; those with a unit are refined around the best.',
+        default=None,
+        descriptive=True,
+    )
+
+
+def _price(meaning: str) -> Any:
+    return quantity("dimensionless", meaning, default=0.0, minimum=0.0, maximum=1e12, descriptive=True)
+
+
+@dataclass(frozen=True, kw_only=True)
+class Cost:
+    """What a design costs to build, in one currency."""
+
+    currency: str = text("Name of the currency, a label only.")
+    module: float = quantity("dimensionless", "Price of one module.", minimum=0.0, maximum=1e9, descriptive=True)
+    exchanger_per_area: float = _price(
+        "Price of a square metre of plate that faces modules; hot and cold plates both count."
+    )
+    layer: float = _price("Price of one layer, for clamping and assembly.")
+    converter: float = _price("Price of the converter.")
+    converter_per_watt: float = _price("Price of the converter a watt that it gives.")
+    drive: float = _price("Price of pumps and fans.")
+    drive_per_watt: float = _price("Price of pumps and fans a watt that they take.")
+    fixed: float = _price("Price of what every design needs, whatever its size.")
+    years: float = quantity("dimensionless", "Years of use.", default=10.0, above=0.0, maximum=100.0, descriptive=True)
+    discount_rate: float = quantity(
+        "dimensionless", "Discount rate a year.", default=0.0, minimum=0.0, maximum=1.0, descriptive=True
+    )
