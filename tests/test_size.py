@@ -26,6 +26,7 @@ from harvest.model.estimate import SEARCHED, estimate, estimate_batch, search_ba
 from harvest.model.reading import load_case, read_case, replace
 from harvest.report.files import case_text
 from harvest.study import size as sizing
+from harvest.study.limits import LIMITS, WINDOW
 from harvest.study.size import marginal_power, row_blocks, size
 
 EXAMPLES = Path(__file__).parents[1] / "examples"
@@ -155,7 +156,7 @@ def sized(name: str, axes: dict[str, list[int]], *more: str) -> Case:
 def keeps_to_limits(case: Case) -> tuple[bool, float]:
     """Whether an estimate on its own is valid and passes the checks of the limits, and its net power."""
     answer = estimate(case)
-    names = {name.replace("_", " ") for name in sizing.LIMITS}
+    names = {name.replace("_", " ") for name in (*LIMITS, WINDOW)}
     failed = any(check.name in names and check.status == "fail" for check in answer.checks)
     return answer.valid and not failed, answer.net_power
 
@@ -220,7 +221,8 @@ def test_wider_bounds_never_worsen_and_a_limit_never_improves(most: int, more: i
 
 
 def test_choices_without_an_answer_are_counted_by_reason_and_never_as_zero() -> None:
-    case = load_case(JACKET, ["size.rows=[1, 2]", "size.layers=[3, 5, 6]", "hot.drive_efficiency=0.001"])
+    wide = 'electrical.converter_window=["1 V", "60 V"]'
+    case = load_case(JACKET, ["size.rows=[1, 2]", "size.layers=[3, 5, 6]", "hot.drive_efficiency=0.001", wide])
     found = size(case)
     assert found.best.net_power < 0.0  # an invalid choice that counted as zero would win
     assert found.choices_tried == 6
@@ -231,7 +233,7 @@ def test_choices_without_an_answer_are_counted_by_reason_and_never_as_zero() -> 
 
 
 def test_a_limit_that_binds_is_told_with_what_it_costs() -> None:
-    axes = ["size.rows={from=1,to=40}", "size.columns=[2,4]"]
+    axes = ["size.rows={from=1,to=40}", "size.columns=[2,4]", 'electrical.converter_window=["1 V", "60 V"]']
     found = size(load_case(JACKET, [*axes, "limits.hot_pressure_drop=4 kPa"]))
     free = size(load_case(JACKET, [*axes, "limits.hot_pressure_drop=400 kPa"]))
     names = [each.limit for each in found.binding_limits]
