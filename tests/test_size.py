@@ -5,6 +5,7 @@ from __future__ import annotations
 import itertools
 import json
 import os
+import pty
 import signal
 import subprocess
 import sys
@@ -150,7 +151,9 @@ BRUTE = {
 
 
 def sized(name: str, axes: dict[str, list[int]], *more: str) -> Case:
-    return load_case(EXAMPLES / name, [f"size.{each}={values}" for each, values in axes.items()] + [*more])
+    return load_case(
+        EXAMPLES / name, [f"size.{each}={values}" for each, values in axes.items()] + ["size.wiring=as given", *more]
+    )
 
 
 def keeps_to_limits(case: Case) -> tuple[bool, float]:
@@ -444,6 +447,21 @@ def test_sizing_changes_no_hash_and_objects_are_library_names() -> None:
     plain, asked = load_case(JACKET), load_case(JACKET, ["size.rows=[3, 4]", "cost.module=3"])
     assert estimate(plain).case_hash == estimate(asked).case_hash
     assert harvest.size is size
+
+
+@pytest.mark.parametrize("terminal", [True, False])
+def test_progress_is_told_at_a_terminal_only(terminal: bool) -> None:
+    command = [sys.executable, "-m", "harvest", "size", str(JACKET), "--set", "size.rows={from=1,to=5}"]
+    ours, theirs = pty.openpty() if terminal else os.pipe()
+    done = subprocess.run(command, stdout=subprocess.PIPE, stderr=theirs, env={**os.environ}, check=True)
+    os.close(theirs)
+    try:
+        told = os.read(ours, 10_000).decode()
+    except OSError:  # a terminal whose other end is closed with nothing left to read
+        told = ""
+    os.close(ours)
+    assert ("5 of 5 choices" in told) if terminal else told == ""
+    assert b"choices\r" not in done.stdout
 
 
 def test_an_interrupted_search_leaves_no_file(tmp_path: Path) -> None:

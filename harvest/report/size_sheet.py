@@ -22,7 +22,7 @@ if TYPE_CHECKING:
 MOST_LINES = 14
 BAR = 16
 MANY_MODULES = 1000
-MOST_WIRINGS = 8
+ROW_BLOCKS = "electrical.row_blocks"
 WORTH_TELLING = 0.001
 """Share of the net power from which another wiring, or a wider window, is worth a sentence."""
 
@@ -78,7 +78,7 @@ def _curve(found: Sizing) -> list[str]:
                 f"{'#' * round(BAR * share):{BAR}}  {marked.get(int(curve.module_count[i]), ''):17}",
             )
         )
-    header = ("modules", "arrangement", "generated", "drives", "net", "per module", "")
+    header = ("modules", "arrangement", "generated", "drives", "net", "a module adds", "")
     return [heading("Best arrangement at each number of modules"), *table(header, rows)]
 
 
@@ -98,10 +98,13 @@ def _flatness(found: Sizing) -> list[str]:
             if found.worthwhile is not None
             else f"No module is worth {_w(worth)} here."
         )
-    elif found.arrangement.module_count >= MANY_MODULES:
+    elif found.objective == "net power" and found.arrangement.module_count >= MANY_MODULES:
+        priced = (
+            'or take size.objective = "cost per kilowatt-hour".' if found.front is not None else "or prices in [cost]."
+        )
         lines.append(
             "That many modules are best only where modules cost nothing; state what one must bring by "
-            "size.least_net_watts_per_module, or prices in [cost]."
+            f"size.least_net_watts_per_module, {priced}"
         )
     return [wrapped("", " ".join(lines))]
 
@@ -112,16 +115,20 @@ def _fewest(found: Arrangement | None) -> str:
     return f"{found.module_count:,} modules ({found.rows_count} x {found.columns_count} x {found.layers_count})"
 
 
-def _bound(found: AtBound) -> str:
-    if found.field == "electrical.row_blocks":
-        return (
-            f"the best has {found.value:g} row blocks, the most that are tried; more may be better: list more in "
-            'electrical.row_blocks, with size.wiring = "as given".'
-        )
-    return (
-        f"the best lies at the {found.end} {found.field} that was tried, "
-        f"{display(found.value, DECLARATIONS[found.field])}; a wider search may find a better one."
-    )
+def _at_bounds(found: tuple[AtBound, ...]) -> list[str]:
+    """Say at which ends of what was tried the best lies."""
+    ends = [
+        f"the {each.end} {each.field}, {display(each.value, DECLARATIONS[each.field])}"
+        for each in found
+        if each.field != ROW_BLOCKS
+    ]
+    notes = [f"the best lies at {'; '.join(ends)}; a wider search may find a better one."] if ends else []
+    return notes + [
+        f"the best has {each.value:g} row blocks, the most that are tried; more may be better: list more in "
+        'electrical.row_blocks, with size.wiring = "as given".'
+        for each in found
+        if each.field == ROW_BLOCKS
+    ]
 
 
 def _limit(found: BindingLimit) -> str:
@@ -150,10 +157,11 @@ def _v(value: float) -> str:
 
 
 def _wirings(case: Case, found: Sizing) -> list[str]:
-    """What other groupings of the best design's modules would give."""
+    """What other groupings of the best design's modules would give, one for each number of row blocks."""
     own = _own_wiring(found)
     usable = [each for each in found.wirings if not each.problem]
-    shown = usable[:MOST_WIRINGS] + [own] * (own not in usable[:MOST_WIRINGS])
+    shown = list({len(each.row_blocks): each for each in reversed(usable)}.values())[::-1]
+    shown += [own] * (own not in shown)
     window = case.electrical.converter_window
     header = ("strings", "in series", "across", "layers", "row blocks", "at load", "no load", "net", "lost", "")
     rows = [
@@ -175,7 +183,8 @@ def _wirings(case: Case, found: Sizing) -> list[str]:
     text = (
         f"{len(usable)} of {len(found.wirings)} groupings keep to every limit"
         + (f" with a converter from {_v(window[0])} to {_v(window[1])}" if window else "")
-        + "; lost is what each generates less than every row with a load of its own."
+        + "; the best with each number of row blocks is told. Lost is what it generates less than every row with a "
+        "load of its own."
     )
     lines = [heading("Wiring of the best design"), wrapped("  ", text), *table(header, rows)]
     if found.net_power_without_window is not None:
@@ -216,7 +225,7 @@ def _front(front: CostFront, currency: str) -> list[str]:
         (
             f"{front.building_cost[i]:,.0f}",
             _w(front.net_power[i]),
-            f"{front.building_cost[i] / front.net_power[i]:.4g}" if front.net_power[i] > 0 else "-",
+            f"{front.building_cost[i] / front.net_power[i]:.4g}",
             f"{front.module_count[i]:,}",
             f"{front.rows_count[i]} x {front.columns_count[i]} x {front.layers_count[i]}",
         )
@@ -243,9 +252,9 @@ def size_report(case: Case, found: Sizing) -> str:
         wrapped("", stack_sentence(found.best_case, found.best) + "."),
         wrapped("", verdict(found.best)),
     ]
-    lines += [wrapped("Note: ", _bound(each)) for each in found.at_bounds]
+    lines += [wrapped("Note: ", text) for text in _at_bounds(found.at_bounds)]
     lines += _curve(found)
-    if found.front is not None:
+    if found.front is not None and len(found.front.net_power):
         lines += _front(found.front, found.best.currency)
     if found.wirings:
         lines += _wirings(case, found)
@@ -257,7 +266,8 @@ def size_report(case: Case, found: Sizing) -> str:
         lines.append("  None keeps the best from being better.")
     lines.append(heading("Choices"))
     refined = f", and {found.choices_refined:,} more around the best" if found.choices_refined else ""
-    lines.append(f"  {found.choices_tried:,} tried{refined}")
+    wired = ", each wiring counted" if found.wiring == "search" else ""
+    lines.append(f"  {found.choices_tried:,} tried{wired}{refined}")
     lines += [f"  {count:,} beyond {limit_path(name)}" for name, count in found.choices_beyond_limits.items()]
     lines += [wrapped(f"  {count:,} without an answer: ", text) for text, count in found.choices_invalid.items()]
     return "\n".join(lines)

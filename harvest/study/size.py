@@ -79,7 +79,7 @@ class SizeCurve:
 
 @dataclass(frozen=True)
 class CostFront:
-    """Choices of which none is both cheaper and stronger; arrays, rising in cost."""
+    """Choices with net power of which none is both cheaper and stronger; arrays, rising in cost."""
 
     building_cost: FloatArray
     net_power: FloatArray
@@ -406,13 +406,13 @@ def marginal_power(counts: FloatArray, net_power: FloatArray) -> FloatArray:
 
 
 def _front(found: _Found, among: BoolArray) -> CostFront | None:
-    """Choices that nothing beats in both cost and net power; None without prices."""
+    """Choices with net power that nothing beats in both cost and net power; None without prices."""
     if found.case.cost is None:
         return None
-    places = np.flatnonzero(among)
+    places = np.flatnonzero(among & (found.numbers["net_power"] > 0))
     cost, net = found.numbers["building_cost"][places], found.numbers["net_power"][places]
     order = np.lexsort((-net, cost))
-    before = np.concatenate([[-np.inf], np.maximum.accumulate(net[order])[:-1]])
+    before = np.concatenate([[-np.inf], np.maximum.accumulate(net[order])])[: len(order)]
     chosen = places[order[net[order] > before]]
     return CostFront(
         found.numbers["building_cost"][chosen],
