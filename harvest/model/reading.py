@@ -538,7 +538,7 @@ class _Reading:
         """Tolerance of one field around its value; raises QuantityError or UnknownValueError."""
         known = DECLARATIONS.get(name)
         if known is None or known.section is not None:
-            raise QuantityError(f"unknown field; write its whole name in quotes, {nearest_field(name[:60])}")
+            raise QuantityError(f"unknown field; {nearest_field(name[:60])}")
         if name in CURVES or known.form == "flow curve":
             near = {"seebeck", "resistance", "conductance"} & {name.rpartition(".")[2]}
             factor = f"module.{near.pop()}_factor" if near else "the factors beside it, film_factor and its like,"

@@ -34,13 +34,13 @@ def draw_distribution(axes: Any, found: Doubt) -> None:
     shares = np.full(found.valid, 100.0 / found.valid)
     axes.hist(found.net_power_sample, BINS, weights=shares, color="0.85", edgecolor="0.45", linewidth=0.5)
     for value, style, name in ((net.p10, "--", "P10"), (net.p50, "-", "P50"), (net.p90, "-.", "P90")):
-        axes.axvline(value, color=BLUE, linestyle=style, label=f"{name}  {value:.4g} W")
-    axes.plot(net.nominal, 0.0, "D", color="black", clip_on=False, label=f"as it stands  {net.nominal:.4g} W")
+        axes.axvline(value, color=BLUE, linestyle=style, label=f"{name} {value:.3g} W")
+    axes.plot(net.nominal, 0.0, "D", color="black", clip_on=False, label=f"as it stands {net.nominal:.3g} W")
     lowest, highest = axes.get_xlim()
     if lowest <= 0.0 or lowest < 0.5 * highest:  # far from zero, showing it would hide the band
         axes.axvline(0.0, color="black", linewidth=1.2, linestyle=":", label="zero")
     axes.set(xlabel="net power [W]", ylabel="share of cases [%]")
-    axes.legend(frameon=False)
+    axes.legend(frameon=False, ncols=3, loc="lower center", bbox_to_anchor=(0.5, 1.0), fontsize=8)
     axes.grid(axis="y", color="0.9", linewidth=0.6)
 
 
@@ -56,7 +56,7 @@ def draw_swings(axes: Any, found: Doubt) -> None:
         lengths = [getattr(each, side) - net for each in bars]
         axes.barh(places, lengths, 0.7, net, color=colour, hatch=hatch, edgecolor="white", linewidth=0.5, label=name)
     axes.axvline(net, color="black", linewidth=0.8)
-    axes.set_yticks(places, [f"{each.field}  {each.tolerance}" for each in bars], fontsize=8)
+    axes.set_yticks(places, [f"{each.field}  {each.tolerance.replace('+-', chr(177))}" for each in bars], fontsize=8)
     for place, each in zip(places, bars, strict=True):
         axes.annotate(
             f"{100.0 * max(each.first_order, 0.0):.0f} %", (1.01, place), xycoords=("axes fraction", "data"),
@@ -64,5 +64,5 @@ def draw_swings(axes: Any, found: Doubt) -> None:
         )  # fmt: skip
     axes.annotate("share", (1.01, 1.02), xycoords="axes fraction", fontsize=8, annotation_clip=False)
     axes.set(xlabel="net power with this input alone changed [W]")
-    axes.legend(frameon=False, loc="best", fontsize=8)
+    axes.legend(frameon=False, ncols=2, loc="lower center", bbox_to_anchor=(0.5, 1.0), fontsize=8)
     axes.grid(axis="x", color="0.9", linewidth=0.6)

@@ -5,12 +5,15 @@ from __future__ import annotations
 from itertools import groupby
 from typing import TYPE_CHECKING, Any
 
+import numpy as np
+
 from harvest.model.case import DECLARATIONS, Case, display
 from harvest.model.results import SCALARS, UNITS
 from harvest.quantities import format_quantity, unit_of
 from harvest.report.documents import plain
 from harvest.report.layout import WIDTH, heading, table, wrapped
 from harvest.report.terminal import title
+from harvest.study.doubt import WORTHWHILE
 from harvest.version import VERSION
 
 if TYPE_CHECKING:
@@ -22,6 +25,31 @@ LITTLE = 0.005
 """Share of the variance below which an input is nothing."""
 MANY_INVALID = 0.05
 """Share of cases without an answer from which the percentiles are not to be trusted."""
+
+
+MODULE_FACTORS = ("module.seebeck_factor", "module.resistance_factor", "module.conductance_factor")
+MEASUREMENTS = {
+    "seebeck_factor": "the open-circuit voltage of a module on a bench",
+    "resistance_factor": "the resistance of a module on a bench",
+    "conductance_factor": "the heat through a module on a bench",
+    "film_factor": "the heat that one duct takes in a trial",
+    "friction_loss_factor": "the pressure drop of one duct in a trial",
+    "film_coefficient": "the heat that a plate of known temperature takes in its place",
+    "connection_loss_coefficient": "the pressure drop of the connections at a known flow",
+    "minor_loss_coefficient": "the pressure drop of the fittings at a known flow",
+    "fouling": "the loss of heat in use, or by opening what is in use already",
+    "inlet_temperature": "a record over days of use with a calibrated sensor",
+    "mass_flow": "a calibrated meter",
+    "volume_flow": "a calibrated meter",
+    "standard_volume_flow": "a calibrated meter",
+    "circuit_flow": "a calibrated meter",
+    "fuel_flow": "weighing the fuel",
+    "drive_efficiency": "the electrical power of the pump or fan at its working point",
+    "hot_interface": "a joint on a bench at its clamping pressure",
+    "cold_interface": "a joint on a bench at its clamping pressure",
+    "converter_efficiency": "power in and out of the converter at its working point",
+}
+"""How a field is found out, by its name."""
 
 
 def _w(value: float) -> str:
@@ -38,27 +66,50 @@ def chance_text(chance: float, cases: int) -> str:
         return f"in none of {cases:,} cases"
     if chance == 1.0:
         return f"in all of {cases:,} cases"
-    percent = 100.0 * chance
-    return f"with a chance of {percent:.1f} %" if 1.0 <= percent <= 99.0 else f"with a chance of {percent:.2g} %"
+    if chance < 0.0005 or chance > 0.9995:
+        return f"with a chance {'below 0.1' if chance < 0.5 else 'above 99.9'} %"
+    return f"with a chance of {100.0 * chance:.1f} %"
 
 
 def answer_sentences(found: Doubt) -> str:
     """What is known of the net power, in words."""
     net = found.results["net_power"]
     return (
-        f"Net power is {_w(net.p50)} at the middle: 80 of 100 cases lie between {_w(net.p10)} and {_w(net.p90)} (P10 to "
-        f"P90), 90 of 100 between {_w(net.p5)} and {_w(net.p95)}. The case as it stands gives {_w(net.nominal)}. "
-        f"Net power is negative {chance_text(found.chance_negative, found.valid)}."
+        f"Net power lies between {_w(net.p10)} (P10) and {_w(net.p90)} (P90) in 80 of 100 cases, with {_w(net.p50)} in "
+        f"the middle (P50), and between {_w(net.p5)} and {_w(net.p95)} in 90 of 100. The case as it stands gives "
+        f"{_w(net.nominal)}. It is negative {chance_text(found.chance_negative, found.valid)}."
     )
 
 
-def measuring_sentences(found: Doubt) -> str:
-    """What is worth measuring, in words."""
-    if not found.worth_measuring:
-        return "No input alone matters much: knowing any one of them exactly would narrow the band by less than 5 %."
+def measuring_lines(found: Doubt) -> list[str]:
+    """What is worth measuring, in words, one line an input."""
     inputs = {each.field: each for each in found.inputs}
-    parts = [f"{name} by {_share(inputs[name].band_narrowing)}" for name in found.worth_measuring]
-    return f"Known exactly, each alone would narrow the band of net power on average: {', '.join(parts)}."
+    lines = []
+    for name in found.worth_measuring:
+        how = MEASUREMENTS.get(name.rpartition(".")[2])
+        narrower = f"the band would be {_share(inputs[name].band_narrowing)} narrower"
+        lines.append(f"{name}{f', by {how}' if how else ''}: {narrower}")
+    return lines
+
+
+def bench_line(found: Doubt) -> str:
+    """What one bench test of the module would bring, which tells all its factors at once; empty where little."""
+    together = sum(max(each.first_order, 0.0) for each in found.inputs if each.field in MODULE_FACTORS)
+    narrowing = 1.0 - float(np.sqrt(1.0 - min(together, 1.0)))
+    if narrowing < WORTHWHILE:
+        return ""
+    return f"A bench test of the module tells its factors at once: the band would be {_share(narrowing)} narrower."
+
+
+def _measuring(found: Doubt) -> list[str]:
+    lines = [wrapped("  ", each, rest="      ") for each in [*measuring_lines(found), bench_line(found)] if each]
+    if not lines:
+        lines = [
+            wrapped(
+                "  ", "No input alone matters much: knowing any one exactly would narrow the band by less than 5 %."
+            )
+        ]
+    return [heading("Worth measuring: if known exactly, on average"), *lines]
 
 
 def _results(found: Doubt) -> list[str]:
@@ -69,7 +120,7 @@ def _results(found: Doubt) -> list[str]:
         deviation = format_quantity(each.standard_deviation, deviation_kind, 3)
         return (name, *(format_quantity(number, kind, 4) for number in numbers), deviation)
 
-    header = ("", "stands", "P5", "P10", "P50", "P90", "P95", "deviation")
+    header = ("", "nominal", "P5", "P10", "P50", "P90", "P95", "deviation")
     return [heading("Results"), *table(header, [row(*each) for each in found.results.items()])]
 
 
@@ -153,7 +204,8 @@ def _sample(found: Doubt) -> list[str]:
             "  ",
             f"{found.samples:,} cases drawn (scrambled Sobol sequence, seed {found.seed}), {found.valid:,} with an "
             f"answer; indices from {found.index_cases:,} further cases, {found.index_samples:,} x "
-            f"({len(found.inputs)} inputs + 2). Inputs are taken to vary independently of each other.",
+            f"({len(found.inputs)} inputs + 2). Inputs are taken to vary independently of each other. The band holds "
+            "their doubt, not that of what the model leaves out, such as uneven flow and ageing.",
         ),
     ]
     lines += [
@@ -179,8 +231,8 @@ def doubt_report(case: Case, found: Doubt) -> str:
                 "of the others only.",
             )
         )
-    lines.append(wrapped("", measuring_sentences(found)))
-    return "\n".join([*lines, *_results(found), *_limits(found), *_inputs(found), *_sources(found), *_sample(found)])
+    parts = (_measuring, _results, _limits, _inputs, _sources, _sample)
+    return "\n".join([*lines, *(line for part in parts for line in part(found))])
 
 
 def doubt_document(found: Doubt) -> dict[str, Any]:

@@ -35,8 +35,8 @@ def _duct(*kinds: str) -> Callable[[Case, str], bool]:
     return lambda case, path: getattr(case, path.partition(".")[0]).duct.kind in kinds
 
 
-def _fluid(is_gas: bool) -> Callable[[Case, str], bool]:
-    return lambda case, path: (getattr(case, path.partition(".")[0]).fluid in GASES) is is_gas
+def _is_liquid(case: Case, path: str) -> bool:
+    return getattr(case, path.partition(".")[0]).fluid not in (*GASES, "reservoir")
 
 
 def _is_cooler(case: Case, _path: str) -> bool:
@@ -61,18 +61,18 @@ COMMON_TOLERANCES = (
         _sides("inlet_temperature"),
         Tolerance(NORMAL, -5.0, 5.0),
         f"{NO_SOURCE}: thermocouple, its place and its day",
-        "gases, room air",
-        _fluid(is_gas=True),
+        "gases, reservoirs",
+        lambda case, path: not _is_liquid(case, path),
     ),
     CommonTolerance(
         _sides("inlet_temperature"),
         Tolerance(NORMAL, -2.0, 2.0),
         NO_SOURCE,
-        "liquids, reservoirs",
-        _fluid(is_gas=False),
+        "liquids",
+        _is_liquid,
     ),
-    CommonTolerance(FLOWS, normal(0.08), f"{NO_SOURCE}: a gas flow", "gases", _fluid(is_gas=True)),
-    CommonTolerance(FLOWS, normal(0.05), f"{NO_SOURCE}: a flow meter as built in", "liquids", _fluid(is_gas=False)),
+    CommonTolerance(FLOWS, normal(0.05), f"{NO_SOURCE}: a flow meter as built in", "liquids", _is_liquid),
+    CommonTolerance(FLOWS, normal(0.08), f"{NO_SOURCE}: a gas flow", "gases"),
     CommonTolerance(_sides("fuel_flow", "excess_air_ratio", "dry_oxygen"), normal(0.05), NO_SOURCE),
     CommonTolerance(_sides("film_coefficient"), normal(0.20), NO_SOURCE, "reservoirs"),
     CommonTolerance(
@@ -101,7 +101,13 @@ COMMON_TOLERANCES = (
     ),
     CommonTolerance(_sides("duct.gap"), normal(0.03), f"{NO_SOURCE}: made and under pressure"),
     CommonTolerance(_sides("duct.wall_conductivity", "duct.fin_conductivity"), normal(0.10), f"{NO_SOURCE}: alloy"),
-    CommonTolerance(_sides("fouling"), within_factor(2.0), f"{NO_SOURCE}: a design value, not a measurement"),
+    CommonTolerance(
+        _sides("fouling"),
+        within_factor(2.0),
+        f"{NO_SOURCE}: a design value, not a measurement",
+        "passages",
+        _duct("smooth", "plain fins", STRIPS),
+    ),
     CommonTolerance(
         ("stack.hot_interface", "stack.cold_interface"),
         within_factor(1.5),

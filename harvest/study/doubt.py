@@ -15,7 +15,7 @@ from harvest.model.case import DECLARATIONS, Case, value_at
 from harvest.model.design import BETWEEN, SPEC_NUMBERS, stream_excess_air_ratio
 from harvest.model.estimate import Outcomes, search_batch
 from harvest.model.stream_sections import HEAT_SINK
-from harvest.model.tolerances import FACTOR, NONE, NORMAL, UNIFORM, Tolerance
+from harvest.model.tolerances import FACTOR, NONE, UNIFORM, Tolerance
 from harvest.physics.arrays import FloatArray, IntArray, ObjectArray
 from harvest.quantities import StandardVolumeFlow
 from harvest.study.common_tolerances import COMMON_TOLERANCES
@@ -33,6 +33,8 @@ QUANTILE = 1.959963984540054
 """Standard deviations within which 95 of 100 values of a normal distribution lie."""
 EDGE = 1e-12
 """Least probability that is drawn: a normal distribution has no end."""
+SMALLEST = 1e-300
+"""Next to zero [SI], where a number must lie above it."""
 COMPOSITION_DIGITS, PRESSURE_DIGITS = 3, 4
 """Significant digits to which a fluid's composition and pressure are rounded, so that cases share property tables."""
 WORTHWHILE = 0.05
@@ -190,20 +192,22 @@ class Drawn:
         if self.tolerance.distribution == UNIFORM:
             return np.asarray(low + (high - low) * probability)
         lowest, highest = self._range()
-        logarithmic = self.tolerance.distribution == FACTOR
-        if logarithmic:
-            low, high, lowest, highest = (float(np.log(max(each, 1e-300))) for each in (low, high, lowest, highest))
+        scale = np.log if self.tolerance.distribution == FACTOR else np.asarray
+        low, high, least, most = (float(scale(each)) for each in (low, high, lowest, highest))
         middle, deviation = 0.5 * (low + high), 0.5 * (high - low) / QUANTILE
-        below, above = ndtr((np.array([lowest, highest]) - middle) / deviation)
+        below, above = ndtr((np.array([least, most]) - middle) / deviation)
         drawn = middle + deviation * ndtri(np.clip(below + (above - below) * probability, EDGE, 1.0 - EDGE))
-        return np.asarray(np.exp(drawn) if logarithmic else drawn)
+        drawn = np.exp(drawn) if self.tolerance.distribution == FACTOR else drawn
+        return np.asarray(np.clip(drawn, lowest, highest))
 
     def _range(self) -> tuple[float, float]:
-        """Allowed range of the field [SI]."""
+        """Allowed range of the field [SI]; a factor keeps to numbers above zero."""
         declaration = DECLARATIONS[self.path]
-        lowest = declaration.minimum if declaration.above is None else declaration.above
-        if lowest is None:
-            lowest = -np.inf if self.tolerance.distribution == NORMAL else 0.0
+        lowest = -np.inf if declaration.minimum is None else declaration.minimum
+        if self.tolerance.distribution == FACTOR:
+            lowest = max(lowest, SMALLEST)
+        if declaration.above is not None:
+            lowest = max(lowest, declaration.above + SMALLEST)
         return lowest, np.inf if declaration.maximum is None else declaration.maximum
 
 
@@ -233,7 +237,9 @@ def drawn_inputs(case: Case) -> tuple[tuple[Drawn, ...], tuple[ExactField, ...]]
             settled.add(path)
             nominal = _nominal(case, path)
             if nominal == 0.0:
-                exact[path] = "is 0, of which a share is nothing"
+                exact[path] = (
+                    "0 here, and a share of 0 is nothing; if it is in doubt, give it in [uncertainty] as a difference"
+                )
             elif path in case.assumed and nominal == DECLARATIONS[path].maximum:
                 exact[path] = "is assumed to be without loss"
             else:
