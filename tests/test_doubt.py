@@ -277,8 +277,6 @@ TEXT = LOOP.read_text("utf-8")
         ('"hot.inlet_temperature" = { uniform = ["2 K", "-1 K"] }', "give the lower end first"),
         ('"hot.volume_flow" = { uniform = ["-2 %", "1 L/min"] }', "one end is in % and the other is not"),
         ('"hot.volume_flow" = { factor = 0.5 }', "give above 1 and at most 100"),
-        ('"hot.drive_efficiency" = { uniform = ["-0.1", "0.9"] }', "give above 0 and at most 1"),
-        ('"electrical.auxiliary_power" = "5 %"', "is 0, of which a share is nothing"),
         ('"stack.rows" = "5 %"', "is no number that a result depends on continuously"),
         ('"limits.hot_pressure_drop" = "5 %"', "is no number that a result depends on continuously"),
         ('"module.seebeck" = "5 %"', "is a curve; give module.seebeck_factor a tolerance instead"),
@@ -342,6 +340,21 @@ def test_a_standard_volume_flow_varies_in_its_flow() -> None:
     written = str(dataclasses.replace(given_flow, volume_flow=1.1 * given_flow.volume_flow))
     stated = estimate_batch(Batch(replace(case, {"hot.standard_volume_flow": written})))
     assert varied.net_power == pytest.approx(stated.net_power, rel=1e-12)
+
+
+def test_a_tolerance_outlives_a_value_of_zero_and_leaves_with_its_field() -> None:
+    """Studies replace values of a case: its tolerances must not make it a faulty one."""
+    case = load_case(LOOP, ['uncertainty.hot.fouling="20 %"', 'uncertainty.hot.volume_flow="2 %"'])
+    clean = replace(case, {"hot.fouling": 0.0})
+    assert "hot.fouling" in {each.field for each in drawn_inputs(clean)[1]}
+    by_mass = replace(case, {"hot.mass_flow": "1.2 kg/s"})
+    assert by_mass.uncertainty is not None and set(by_mass.uncertainty) == {"hot.fouling"}
+    assert "hot.mass_flow" in {each.path for each in drawn_inputs(by_mass)[0]}
+
+
+def test_a_uniform_tolerance_is_cut_off_at_the_allowed_range() -> None:
+    drawn = Drawn("hot.drive_efficiency", 0.9, Tolerance(UNIFORM, -0.2, 0.4), "given", "")
+    assert drawn.values(np.array([0.0, 0.5, 1.0])) == pytest.approx([0.7, 0.85, 1.0])
 
 
 # ---- Factors

@@ -29,7 +29,7 @@ from harvest.model.case_rules import (
 )
 from harvest.model.case_text import bounded_text, key_lines, toml_document, toml_value
 from harvest.model.stream_sections import HEAT_SINK, Side, StreamSide
-from harvest.model.tolerances import FACTOR, UNIFORM, Tolerance, parse_tolerance
+from harvest.model.tolerances import FACTOR, Tolerance, parse_tolerance
 from harvest.quantities import (
     HIGHEST_DEGREE,
     KINDS,
@@ -201,7 +201,7 @@ def replace(case: AnyStreams, changes: Mapping[str, Any]) -> AnyStreams:
 
 
 def _put(document: dict[str, Any], path: str, value: Any) -> None:
-    """Set a value in a document; what is an alternative to it goes."""
+    """Set a value in a document; what is an alternative to it goes, with its tolerance."""
     if _PLACE.sub("", path) not in DECLARATIONS and not path.startswith(OPEN_TABLES):
         raise InputError(f"{one_line(path)}: unknown field; {nearest_field(path[:60])}")
     *parents, name = path.split(".", 1) if path.startswith(OPEN_TABLES) else path.split(".")
@@ -219,6 +219,8 @@ def _put(document: dict[str, Any], path: str, value: Any) -> None:
             for other in alternatives:
                 if other != path:
                     table.pop(other.rpartition(".")[2], None)
+                    if isinstance(tolerances := document.get("uncertainty"), dict):
+                        tolerances.pop(other, None)
 
 
 def _inside(document: Mapping[str, Any], *names: str) -> Any:
@@ -550,16 +552,8 @@ class _Reading:
         tolerance = parse_tolerance(raw, known.kind)
         if decided is not None or value is None or isinstance(value, tuple):
             raise QuantityError("has no value of its own in this case, so it has no tolerance; remove it")
-        if isinstance(value, StandardVolumeFlow):
-            value = value.volume_flow
-        if tolerance.relative and not value:
-            raise QuantityError(
-                f"is 0, of which a share is nothing; give a difference such as {example_of(known.kind)}"
-            )
-        if tolerance.distribution == FACTOR and value < 0:
+        if tolerance.distribution == FACTOR and not isinstance(value, StandardVolumeFlow) and value < 0:
             raise QuantityError("is below zero, where a factor means nothing; give a difference")
-        for end in tolerance.ends(value) if tolerance.distribution == UNIFORM else ():
-            _within(known, end, raw["uniform"])
         return tolerance
 
     def size_fields(self, raw: Any) -> dict[str, tuple[float, ...]]:

@@ -184,14 +184,15 @@ class Drawn:
     def values(self, probability: FloatArray) -> FloatArray:
         """Values [SI] below which the field lies with a `probability` [-]; one shape.
 
-        Normal and factor distributions are cut off at the ends of the field's allowed range.
+        Every distribution is cut off at the ends of the field's allowed range.
         """
         from scipy.special import ndtr, ndtri
 
         low, high = self.tolerance.ends(self.nominal)
-        if self.tolerance.distribution == UNIFORM:
-            return np.asarray(low + (high - low) * probability)
         lowest, highest = self._range()
+        if self.tolerance.distribution == UNIFORM:
+            low, high = np.clip([low, high], lowest, highest)
+            return np.asarray(low + (high - low) * probability)
         scale = np.log if self.tolerance.distribution == FACTOR else np.asarray
         low, high, least, most = (float(scale(each)) for each in (low, high, lowest, highest))
         middle, deviation = 0.5 * (low + high), 0.5 * (high - low) / QUANTILE
@@ -214,36 +215,30 @@ class Drawn:
 def drawn_inputs(case: Case) -> tuple[tuple[Drawn, ...], tuple[ExactField, ...]]:
     """Fields of a case that are in doubt, those that it states first, and fields whose default does not apply."""
     stated = case.uncertainty or {}
-    found = [
-        Drawn(path, _nominal(case, path), tolerance, "given", "")
-        for path, tolerance in stated.items()
-        if tolerance.distribution != NONE
-    ]
-    exact = {
-        path: 'said to be exact by "none" in [uncertainty]'
-        for path, each in stated.items()
-        if each.distribution == NONE
-    }
-    settled = set(stated)
+    candidates = [(path, tolerance, "given", "") for path, tolerance in stated.items()]
     for common in COMMON_TOLERANCES:
         for path in common.fields:
+            known = {each[0] for each in candidates}
             if (
-                path in settled
-                or value_at(case, path) is None
-                or not _is_asked(case, path)
-                or not common.holds(case, path)
+                path not in known
+                and value_at(case, path) is not None
+                and _is_asked(case, path)
+                and common.holds(case, path)
             ):
-                continue
-            settled.add(path)
-            nominal = _nominal(case, path)
-            if nominal == 0.0:
-                exact[path] = (
-                    "0 here, and a share of 0 is nothing; if it is in doubt, give it in [uncertainty] as a difference"
-                )
-            elif path in case.assumed and nominal == DECLARATIONS[path].maximum:
-                exact[path] = "is assumed to be without loss"
-            else:
-                found.append(Drawn(path, nominal, common.tolerance, "default", common.source))
+                candidates.append((path, common.tolerance, "default", common.source))
+    found, exact = [], {}
+    for path, tolerance, origin, source in candidates:
+        nominal = _nominal(case, path)
+        if tolerance.distribution == NONE:
+            exact[path] = 'said to be exact by "none" in [uncertainty]'
+        elif tolerance.relative and nominal == 0.0:
+            exact[path] = (
+                "0 here, and a share of 0 is nothing; if it is in doubt, give it in [uncertainty] as a difference"
+            )
+        elif origin == "default" and path in case.assumed and nominal == DECLARATIONS[path].maximum:
+            exact[path] = "is assumed to be without loss"
+        else:
+            found.append(Drawn(path, nominal, tolerance, origin, source))
     for side in ("hot", "cold"):
         if getattr(case, side).drive_curve is not None:
             exact[f"{side}.drive_curve"] = "a curve is taken as it is"
@@ -454,7 +449,7 @@ def _uncertain(drawn: Drawn, swing: FloatArray, shares: Indices, place: int) -> 
     kind = DECLARATIONS[drawn.path].kind
     lower, upper = drawn.values(np.array([0.5 - 0.5 * SHARE_WITHIN, 0.5 + 0.5 * SHARE_WITHIN]))
     if drawn.tolerance.distribution == UNIFORM:
-        lower, upper = drawn.tolerance.ends(drawn.nominal)
+        lower, upper = drawn.values(np.array([0.0, 1.0]))
     first, total = (float(each[place]) for each in (shares.first_order, shares.total))
     low, high = (tuple(map(float, each[:, place])) for each in (shares.first_order_interval, shares.total_interval))
     return UncertainInput(

@@ -1,9 +1,10 @@
 """Speeds beside their yardsticks, measured in one run: `python -m tests.bench [PART ...]`.
 
-PART is solver, checks, sizing, doubt, start_up or script; all of them without. Solver: 10,000 random designs of 20 rows
-against one evaluation of both streams' properties and films over the same arrays; the time a design with the number of
-designs. Checks: what they add to a batch of estimates. Doubt: a sample and its indices against the solver alone. Script:
-what an engineer would write, one design at a time. Start-up: the commands against importing what they cannot do without.
+PART is solver, checks, sizing, doubt, start_up or script; all of them without. Solver: 10,000 random designs of 20
+rows against one evaluation of both streams' properties and films over the same arrays; the time a design with the
+number of designs. Checks: what they add to a batch of estimates. Doubt: a sample and its indices against the solver
+alone. Script: what an engineer would write, one design at a time. Start-up: the commands against importing what they
+cannot do without.
 """
 
 from __future__ import annotations
