@@ -26,7 +26,7 @@ from harvest.physics.arrays import FloatArray
 from harvest.report.doubt_sheet import chance_text, doubt_report
 from harvest.study import doubt as doubting
 from harvest.study.common_tolerances import COMMON_TOLERANCES
-from harvest.study.doubt import Doubt, Drawn, answered, doubt, drawn_inputs, indices, probabilities, rounded, spread
+from harvest.study.doubt import Doubt, Drawn, answered, doubt, drawn_inputs, indices, probabilities, spread
 
 EXAMPLES = Path(__file__).parents[1] / "examples"
 CASES = sorted(EXAMPLES.glob("*.toml"))
@@ -294,6 +294,11 @@ def test_a_faulty_tolerance_is_refused_with_its_line(line: str, message: str) ->
     assert message in fault
 
 
+def test_a_name_without_quotes_is_told_how_to_be_written() -> None:
+    with pytest.raises(CaseError, match="write the whole name of its field in quotes"):
+        read_case(f'{TEXT}\n[uncertainty]\nhot.volume_flow = "5 %"\n')
+
+
 def test_all_faults_of_tolerances_are_told_at_once() -> None:
     text = TEXT.replace('volume_flow = "75 L/min"', 'volume_flow = "75 furlongs"')
     faulty = '\n[uncertainty]\n"hot.volume_flow" = "5 %"\n"cold.volume_flow" = "5 kg"\n"nothing.here" = "1 %"\n'
@@ -505,8 +510,17 @@ def test_few_fluids_are_made_and_their_rounding_does_not_show(monkeypatch: pytes
     assert np.abs(apart).max() < 0.02 * np.ptp(exact.scalars["net_power"])
 
 
-def test_numbers_are_rounded_to_significant_digits() -> None:
-    assert rounded(np.array([1.23456, 0.0012345, 0.0, 98765.0]), 3) == pytest.approx([1.23, 0.00123, 0.0, 98800.0])
+def test_compositions_are_drawn_in_few_steps_with_the_same_spread() -> None:
+    """Steps of a twelfth of the 95 % range add a variance of step^2/12, under 1 % of the whole."""
+    drawn = Drawn("hot.volume_fraction", 0.5, Tolerance(NORMAL, -0.04, 0.04), "given", "")
+    values = drawn.values(probabilities(1, 4096, seed=1)[0])
+    stepped = drawn.in_steps(values)
+    assert len(np.unique(stepped)) < 30 and 0.5 in stepped
+    step = 0.08 / 12
+    assert np.abs(stepped - values).max() <= 0.5 * step * (1 + 1e-9)
+    assert stepped.var() == pytest.approx(values.var() + step**2 / 12, rel=3e-3)
+    flow = Drawn("hot.volume_flow", 1e-3, Tolerance(NORMAL, -0.05, 0.05, relative=True), "given", "")
+    assert flow.in_steps(values) is values
 
 
 def test_chances_that_were_not_met_are_not_called_impossible() -> None:

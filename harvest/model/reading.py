@@ -539,6 +539,8 @@ class _Reading:
     def tolerance(self, name: str, raw: Any) -> Tolerance:
         """Tolerance of one field around its value; raises QuantityError or UnknownValueError."""
         known = DECLARATIONS.get(name)
+        if isinstance(raw, Mapping) and known is not None and known.section is not None:
+            raise QuantityError('is a section; write the whole name of its field in quotes, "hot.mass_flow" = "5 %"')
         if known is None or known.section is not None:
             raise QuantityError(f"unknown field; {nearest_field(name[:60])}")
         if name in CURVES or known.form == "flow curve":

@@ -22,7 +22,7 @@ from harvest.study.common_tolerances import COMMON_TOLERANCES
 from harvest.study.size import LIMITS, SEARCH_CELLS, stated_limit
 
 SAMPLES = 4096
-FEWEST_SAMPLES, MOST_SAMPLES = 64, 2**20
+FEWEST_SAMPLES, MOST_SAMPLES = 64, 2**16
 SEED = 1
 INDEX_SHARE = 4
 """Cases of the percentiles for each base case of the indices."""
@@ -35,8 +35,11 @@ EDGE = 1e-12
 """Least probability that is drawn: a normal distribution has no end."""
 SMALLEST = 1e-300
 """Next to zero [SI], where a number must lie above it."""
-COMPOSITION_DIGITS, PRESSURE_DIGITS = 3, 4
-"""Significant digits to which a fluid's composition and pressure are rounded, so that cases share property tables."""
+OF_TABLES = (*SPEC_NUMBERS, "pressure")
+"""Fields of which each different value costs a table of the fluid's properties."""
+LEVELS = 12
+AIR_STEP = 0.005
+"""Relative step of an excess air that follows from two flows."""
 WORTHWHILE = 0.05
 """Part of the band's width that knowing an input must take away to be worth measuring."""
 RESULTS = (
@@ -201,6 +204,16 @@ class Drawn:
         drawn = np.exp(drawn) if self.tolerance.distribution == FACTOR else drawn
         return np.asarray(np.clip(drawn, lowest, highest))
 
+    def in_steps(self, values: FloatArray) -> FloatArray:
+        """Values [SI] in steps where each costs a table of the fluid, for compositions and pressures; others as given.
+
+        The nominal value is one of the steps, and LEVELS of them span 95 of 100 values.
+        """
+        if self.path.rpartition(".")[2] not in OF_TABLES:
+            return values
+        low, high = self.tolerance.ends(self.nominal)
+        return np.clip(in_steps(values, self.nominal, (high - low) / LEVELS), *self._range())
+
     def _range(self) -> tuple[float, float]:
         """Allowed range of the field [SI]; a factor keeps to numbers above zero."""
         declaration = DECLARATIONS[self.path]
@@ -270,40 +283,30 @@ def answered(case: Case, inputs: tuple[Drawn, ...], values: FloatArray) -> Outco
     parts = []
     for first in range(0, cases, chunk):
         some = values[:, first : first + chunk]
-        varied = {each.path: numbers for each, numbers in zip(inputs, some, strict=True)}
-        parts.append(search_batch(_with_few_tables(Batch(case, some.shape[1], varied))))
+        varied = {each.path: each.in_steps(numbers) for each, numbers in zip(inputs, some, strict=True)}
+        parts.append(search_batch(_with_few_gases(Batch(case, some.shape[1], varied))))
     return Outcomes(
         {name: np.concatenate([part.scalars[name] for part in parts]) for name in parts[0].scalars},
         np.concatenate([part.problem for part in parts]),
     )
 
 
-def _with_few_tables(batch: Batch) -> Batch:
-    """Return the batch with compositions and pressures rounded: each different fluid costs a table of its own."""
-    varied, sides = dict(batch.varied), {}
+def _with_few_gases(batch: Batch) -> Batch:
+    """Return the batch with an excess air that follows from two flows in steps, as each different gas costs a table."""
     for name in ("hot", "cold"):
-        side = getattr(batch.base, name)
-        if side.fluid == "exhaust gas" and any(
-            f"{name}.{each}" in varied for each in ("mass_flow", "fuel_flow", "excess_air_ratio", "dry_oxygen")
-        ):
-            ratio = stream_excess_air_ratio(batch, name)
-            if np.ptp(ratio) > 0:  # the flow that follows from it must be of the same air
-                varied[f"{name}.excess_air_ratio"] = rounded(ratio, COMPOSITION_DIGITS)
-                varied.pop(f"{name}.dry_oxygen", None)
-                sides[name] = dataclasses.replace(side, excess_air_ratio=1.0, dry_oxygen=None)
-        for each in SPEC_NUMBERS:
-            if (path := f"{name}.{each}") in varied:
-                varied[path] = rounded(varied[path], COMPOSITION_DIGITS)
-        if (path := f"{name}.pressure") in varied:
-            varied[path] = rounded(varied[path], PRESSURE_DIGITS)
-    return dataclasses.replace(batch, base=dataclasses.replace(batch.base, **sides), varied=varied)
+        if not (batch.given(f"{name}.mass_flow") and batch.given(f"{name}.fuel_flow")):
+            continue
+        nominal = stream_excess_air_ratio(Batch(batch.base), name)
+        ratio = in_steps(stream_excess_air_ratio(batch, name), float(nominal[0]), AIR_STEP * float(nominal[0]))
+        side = dataclasses.replace(getattr(batch.base, name), excess_air_ratio=1.0)
+        varied = {**batch.varied, f"{name}.excess_air_ratio": ratio}
+        batch = dataclasses.replace(batch, base=dataclasses.replace(batch.base, **{name: side}), varied=varied)
+    return batch
 
 
-def rounded(values: FloatArray, digits: int) -> FloatArray:
-    """Numbers with so many significant digits; one shape."""
-    safe = np.where(np.isfinite(values) & (values != 0), np.abs(values), 1.0)
-    step = 10.0 ** (np.floor(np.log10(safe)) - (digits - 1))
-    return np.asarray(np.round(values / step) * step)
+def in_steps(values: FloatArray, middle: float, step: float) -> FloatArray:
+    """Nearest of the numbers that are whole steps from a middle; one shape."""
+    return np.asarray(middle + step * np.round((values - middle) / step))
 
 
 # ---- Propagation
@@ -346,13 +349,12 @@ def indices(answer: Callable[[FloatArray], FloatArray], inputs: int, samples: in
     both = probabilities(2 * inputs, samples, seed).reshape(2, inputs, samples)
     swapped = np.repeat(both[0][None], inputs, axis=0)
     swapped[np.arange(inputs), np.arange(inputs)] = both[1]
-    points = np.concatenate([both[0], both[1], *swapped], axis=1)
-    results = answer(points)
+    results = answer(np.concatenate([*both, *swapped], axis=1))
     lost = ~np.isfinite(results)
     results = np.where(lost, results[~lost].mean(), results).reshape(inputs + 2, 1, samples)
     if inputs == 1:  # all of the variance is that of the only input
         one, certain = np.ones(1), np.ones((2, 1))
-        return Indices(one, one, certain, certain, points.shape[1], int(lost.sum()))
+        return Indices(one, one, certain, certain, results.size, int(lost.sum()))
 
     def of(places: IntArray) -> FloatArray:
         some = results[:, :, places]
@@ -363,7 +365,7 @@ def indices(answer: Callable[[FloatArray], FloatArray], inputs: int, samples: in
     rng = np.random.default_rng(seed)
     again = np.stack([of(rng.integers(0, samples, samples)) for _ in range(RESAMPLED)])
     ends = np.quantile(again, [0.5 - 0.5 * SHARE_WITHIN, 0.5 + 0.5 * SHARE_WITHIN], axis=0)
-    return Indices(best[0], best[1], ends[:, 0], ends[:, 1], points.shape[1], int(lost.sum()))
+    return Indices(best[0], best[1], ends[:, 0], ends[:, 1], results.size, int(lost.sum()))
 
 
 # ---- The study
@@ -372,7 +374,7 @@ def indices(answer: Callable[[FloatArray], FloatArray], inputs: int, samples: in
 def doubt(case: Case, samples: int = SAMPLES, seed: int = SEED, progress: Progress | None = None) -> Doubt:
     """How sure the results of a case are, from the tolerances of its inputs.
 
-    Parameters: `case`, with or without tolerances in [uncertainty]; `samples`, a power of two from 64 to 1,048,576, for
+    Parameters: `case`, with or without tolerances in [uncertainty]; `samples`, a power of two from 64 to 65,536, for
     the percentiles, a quarter of it as base of the indices; `seed`, from 0 on; `progress`, called with cases done and
     in all. Inputs are drawn independently of each other. Raises InputError for wrong numbers or where nothing is in
     doubt, NoAnswerError where the case itself, or every drawn one, has no answer.
