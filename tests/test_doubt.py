@@ -277,6 +277,7 @@ TEXT = LOOP.read_text("utf-8")
         ('"hot.inlet_temperature" = { uniform = ["2 K", "-1 K"] }', "give the lower end first"),
         ('"hot.volume_flow" = { uniform = ["-2 %", "1 L/min"] }', "one end is in % and the other is not"),
         ('"hot.volume_flow" = { factor = 0.5 }', "give above 1 and at most 100"),
+        ('"site.ambient_pressure" = "1 kPa"', "give hot.pressure or cold.pressure a tolerance"),
         ('"stack.rows" = "5 %"', "is no number that a result depends on continuously"),
         ('"limits.hot_pressure_drop" = "5 %"', "is no number that a result depends on continuously"),
         ('"module.seebeck" = "5 %"', "is a curve; give module.seebeck_factor a tolerance instead"),
