@@ -476,6 +476,15 @@ def test_cases_without_an_answer_are_counted_with_their_reason() -> None:
     assert f"Caution: {count} of 1,024 cases have no answer" in report
 
 
+def test_a_curve_that_meets_no_resistance_is_the_reason_told() -> None:
+    """A circuit flow beyond the pump's curve leaves no flow, which is no fault of the blocks behind it."""
+    case = load_case(EXAMPLES / "workshop-water-blocks.toml")
+    found = doubt(only(case, {"hot.circuit_flow": {"uniform": ["-1 L/min", "4 L/min"]}}), samples=256)
+    ((reason, count),) = found.invalid.items()
+    assert "hot.drive_curve" in reason
+    assert count == pytest.approx(256 * 2.0 / 5.0, abs=2)  # the curve ends at 16 L/min, 2 above the stated 14
+
+
 @pytest.mark.parametrize(("samples", "seed", "message"), [(1000, 1, "power of two"), (32, 1, "64"), (256, -1, "seed")])
 def test_wrong_numbers_are_refused(samples: int, seed: int, message: str) -> None:
     with pytest.raises(InputError, match=message):

@@ -205,7 +205,7 @@ def _sample(found: Doubt) -> list[str]:
             f"{found.samples:,} cases drawn (scrambled Sobol sequence, seed {found.seed}), {found.valid:,} with an "
             f"answer; indices from {found.index_cases:,} further cases, {found.index_samples:,} x "
             f"({len(found.inputs)} inputs + 2). Inputs are taken to vary independently of each other. The band holds "
-            "their doubt, not that of what the model leaves out, such as uneven flow and ageing.",
+            "their doubt, not that of what the model leaves out, such as ageing and heat along the plates.",
         ),
     ]
     lines += [
