@@ -21,6 +21,7 @@ if TYPE_CHECKING:
     from harvest.model.reading import load_case, load_streams, replace
     from harvest.model.results import Estimate, Estimates
     from harvest.study.bench_record import fit_bench_record, read_bench_record
+    from harvest.study.doubt import Doubt, doubt
     from harvest.study.modules import load_module
     from harvest.study.screen import Screening, screen
     from harvest.study.size import Sizing, size
@@ -32,6 +33,8 @@ _HOMES = {
     "Batch": "harvest.model.batch",
     "Case": "harvest.model.case",
     "CaseError": "harvest.errors",
+    "Doubt": "harvest.study.doubt",
+    "doubt": "harvest.study.doubt",
     "Estimate": "harvest.model.results",
     "Estimates": "harvest.model.results",
     "HarvestError": "harvest.errors",
@@ -62,6 +65,7 @@ __all__ = [
     "Batch",
     "Case",
     "CaseError",
+    "Doubt",
     "Estimate",
     "Estimates",
     "HarvestError",
@@ -74,6 +78,7 @@ __all__ = [
     "WhatIf",
     "WhatIfOptions",
     "__version__",
+    "doubt",
     "estimate",
     "estimate_batch",
     "fit_bench_record",
