@@ -16,7 +16,7 @@ from harvest.errors import CaseError, InputError
 from harvest.model.batch import Batch
 from harvest.model.case import DECLARATIONS, Case, value_at
 from harvest.model.case_fields import Declaration
-from harvest.model.estimate import estimate, search_batch
+from harvest.model.estimate import Outcomes, estimate, search_batch
 from harvest.model.reading import load_case, replace
 from harvest.quantities import example_of, parse_quantity
 from harvest.study.sweep import SweepPart, SweepPlan, planned, varied_field, with_axes
@@ -75,7 +75,7 @@ def test_every_number_gives_what_single_cases_give(name: str) -> None:
     tried = 0
     for path in NUMERIC:
         values = tried_values(case, path, DECLARATIONS[path])
-        singles = []
+        singles: list[Outcomes | None] = []
         for value in values:
             try:
                 singles.append(search_batch(Batch(replace(case, {path: value}))))
@@ -158,7 +158,7 @@ def test_choices_are_cases_of_their_own(path: str) -> None:
 def test_a_fault_is_a_row_that_says_why() -> None:
     axes = {
         "stack.layers": [3, 4],
-        "hot.inlet_temperature": ["440 degC", "1900 K"],
+        "hot.inlet_temperature": ["440 degC", "2190 K"],
         "cold.fluid": ["ethylene glycol", "reservoir", "water"],
     }
     plan = planned(with_axes(load_case(EXHAUST), axes))
