@@ -1,4 +1,6 @@
-"""Speeds beside their yardsticks, measured in one run: `python -m tests.bench [solver] [checks] [start_up] [script]`.
+"""Speeds beside their yardsticks, measured in one run: `python -m tests.bench`, or some parts of it.
+
+Parts are solver, checks, sizing, sweeping, start_up and script.
 
 Solver: 10,000 random designs of 20 rows against one evaluation of both streams' properties and films over the same
 arrays; the time a design with the number of designs. Checks: what they add to a batch of estimates. Script: what an
@@ -28,6 +30,7 @@ from harvest.model.stack.solver import CHUNK_CELLS
 from harvest.study.size import size
 from tests.bench.baseline import DEMO_DESIGNS, solve_plainly
 from tests.bench.random_designs import random_batch
+from tests.bench.sweeping import sweeping
 from tests.independent.stack import Load as ScriptLoad
 from tests.translation import case_text
 
@@ -195,6 +198,6 @@ def start_up() -> None:
 
 
 if __name__ == "__main__":
-    for part in (solver, checks, sizing, start_up, script):
+    for part in (solver, checks, sizing, sweeping, start_up, script):
         if len(sys.argv) == 1 or part.__name__ in sys.argv[1:]:
             part()
