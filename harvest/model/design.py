@@ -65,7 +65,7 @@ class Faults:
         return np.asarray(self.text == "")
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, eq=False, repr=False)
 class Stream:
     """One side's stream, (cases,): total `mass_flow` [kg/s], duct counts, table data.
 
@@ -91,7 +91,7 @@ class Stream:
         return np.array([getattr(table, name) for table in self.tables], dtype=float)[self.table_of_case]
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, eq=False, repr=False)
 class Design:
     """A batch made ready for the solver."""
 
