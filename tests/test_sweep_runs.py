@@ -82,12 +82,15 @@ def test_a_journal_keeps_what_was_whole_wherever_it_is_cut(tmp_path: Path) -> No
 def test_a_journal_distrusts_changed_bytes(tmp_path: Path) -> None:
     path = tmp_path / "journal"
     filled(path, 5).close()
-    content = bytearray(path.read_bytes())
-    content[-1] ^= 1
-    path.write_bytes(content)
-    journal = Journal(path, ONE_RUN)
-    assert sorted(journal.finished) == [0, 1, 2, 3]
-    journal.close()
+    whole = path.read_bytes()
+    last = len(whole) - len(squares(4)) - 20
+    for changed in (len(whole) - 1, last, last + 8, last + 15, last + 16):  # content, number, length, its end, check
+        content = bytearray(whole)
+        content[changed] ^= 1
+        path.write_bytes(content)
+        journal = Journal(path, ONE_RUN)
+        assert sorted(journal.finished) == [0, 1, 2, 3]
+        journal.close()
 
 
 def test_a_journal_of_another_run_or_in_use_is_refused(tmp_path: Path) -> None:

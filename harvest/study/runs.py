@@ -83,19 +83,20 @@ class Journal:
                 "call the program as then, or remove the file to begin anew"
             )
         self.identity = found
-        whole = len(line)
+        whole, size = len(line), os.fstat(self._file.fileno()).st_size
         while len(head := self._file.read(_HEAD.size)) == _HEAD.size:
             index, length, check = _HEAD.unpack(head)
-            if zlib.crc32(self._file.read(length)) != check or self._file.tell() != whole + _HEAD.size + length:
+            place = whole + _HEAD.size
+            if length > size - place or _check(index, self._file.read(length)) != check:
                 break
-            self.finished[index] = (whole + _HEAD.size, length)
-            whole = self._file.tell()
+            self.finished[index] = (place, length)
+            whole = place + length
         self._file.truncate(whole)
 
     def add(self, index: int, content: bytes) -> None:
         """Keep a chunk for good."""
         place = self._file.seek(0, os.SEEK_END) + _HEAD.size
-        self._write(_HEAD.pack(index, len(content), zlib.crc32(content)) + content)
+        self._write(_HEAD.pack(index, len(content), _check(index, content)) + content)
         self.finished[index] = (place, len(content))
 
     def _write(self, content: bytes) -> None:
@@ -123,6 +124,10 @@ class Journal:
         if self.path is not None:
             self.path.unlink(missing_ok=True)
         self.close()
+
+
+def _check(index: int, content: bytes) -> int:
+    return zlib.crc32(content, index & 0xFFFFFFFF)
 
 
 def _lock(file: IO[bytes], path: Path) -> None:
