@@ -1,7 +1,7 @@
 """Speeds beside their yardsticks, measured in one run: `python -m tests.bench [PART ...]`.
 
-PART is solver, checks, sizing, doubt, start_up or script; all of them without. Solver: 10,000 random designs of 20
-rows against one evaluation of both streams' properties and films over the same arrays; the time a design with the
+PART is solver, checks, sizing, sweeping, doubt, start_up or script; all of them without. Solver: 10,000 random designs
+of 20 rows against one evaluation of both streams' properties and films over the same arrays; the time a design with the
 number of designs. Checks: what they add to a batch of estimates. Doubt: a sample and its indices against the solver
 alone. Script: what an engineer would write, one design at a time. Start-up: the commands against importing what they
 cannot do without.
@@ -35,6 +35,7 @@ from harvest.study.doubt import drawn_inputs
 from harvest.study.size import size
 from tests.bench.baseline import DEMO_DESIGNS, solve_plainly
 from tests.bench.random_designs import random_batch
+from tests.bench.sweeping import sweeping
 from tests.independent.stack import Load as ScriptLoad
 from tests.translation import case_text
 
@@ -246,6 +247,6 @@ def start_up() -> None:
 
 
 if __name__ == "__main__":
-    for part in (solver, checks, sizing, doubt, start_up, script):
+    for part in (solver, checks, sizing, sweeping, doubt, start_up, script):
         if len(sys.argv) == 1 or part.__name__ in sys.argv[1:]:
             part()
