@@ -22,7 +22,6 @@ from harvest.cli import cli
 from harvest.errors import CaseError, NoAnswerError
 from harvest.model.batch import Batch
 from harvest.model.case import Case
-from harvest.model.costs import annuity_factor
 from harvest.model.estimate import SEARCHED, estimate, estimate_batch, search_batch
 from harvest.model.reading import load_case, read_case, replace
 from harvest.report.files import case_text
@@ -307,18 +306,15 @@ def test_objectives() -> None:
     front = cheap.front
     assert front is not None
     paying = front.net_power > 0
-    assert cheap.cost_per_net_watt == pytest.approx((front.cost / front.net_power)[paying].min(), rel=1e-12)
+    assert cheap.best.cost_per_net_watt == pytest.approx(
+        (front.building_cost / front.net_power)[paying].min(), rel=1e-12
+    )
     chosen = cheap.arrangement
-    assert chosen.cost == 20 * chosen.module_count + 2000 + 15 * chosen.layers_count
+    assert chosen.building_cost == 20 * chosen.module_count + 2000 + 15 * chosen.layers_count
     hours = 2.88e7 / 3600.0
     yearly_energy = cheap.arrangement.net_power / 1000.0 * hours
-    assert cheap.cost_per_kilowatt_hour == pytest.approx(chosen.cost / 8 / yearly_energy, rel=1e-12)
-    assert np.all(np.diff(front.cost) > 0) and np.all(np.diff(front.net_power) > 0)
-
-
-def test_annuity() -> None:
-    assert annuity_factor(0.0, 10.0) == 0.1
-    assert annuity_factor(0.05, 10.0) == pytest.approx(0.05 / (1 - 1.05**-10), rel=1e-12)
+    assert cheap.best.cost_per_kilowatt_hour == pytest.approx(chosen.building_cost / 8 / yearly_energy, rel=1e-12)
+    assert np.all(np.diff(front.building_cost) > 0) and np.all(np.diff(front.net_power) > 0)
 
 
 @settings(max_examples=100, deadline=None)

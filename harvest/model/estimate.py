@@ -11,6 +11,7 @@ from harvest.model.assessment import assess
 from harvest.model.batch import Batch
 from harvest.model.case import Case, case_hash
 from harvest.model.checks import PASS, BatchCheck
+from harvest.model.costs import costs
 from harvest.model.design import BETWEEN, Design, Stream, design, maximum_power_load
 from harvest.model.driven_flow import driven_batch
 from harvest.model.loads import MATCHED, MAXIMUM_POWER, OPEN_CIRCUIT
@@ -407,6 +408,7 @@ def _scalars(solved: Solved) -> dict[str, FloatArray]:
         "coolant_lost_face_temperature": solved.coolant_lost.hot_face,
         "energy_closure": unclosed / chosen.heat_scale,
         "entropy_generation": entropy,
+        **costs(batch, powers),
     }
 
 
@@ -547,6 +549,11 @@ SEARCHED = (
     "stack_width",
     "stack_height",
     "module_mass",
+    "building_cost",
+    "cost_per_net_watt",
+    "cost_per_kilowatt_hour",
+    "payback_years",
+    "discounted_payback_years",
 )
 
 
@@ -579,8 +586,10 @@ def search_batch(batch: Batch) -> Outcomes:
         for stream, boundaries in ((made.hot, state.hot_stream), (made.cold, state.cold_stream)):
             _flag_range(made, stream, boundaries)
         hot_drop, cold_drop = _pressure_drops(made, chosen)
+        powers = _powers(made, chosen, hot_drop, cold_drop)
         scalars = {
-            **_powers(made, chosen, hot_drop, cold_drop),
+            **powers,
+            **costs(driven, powers),
             "voltage": state.string_voltage[0],
             "hot_outlet_temperature": chosen.hot_outlet,
             "cold_outlet_temperature": chosen.cold_outlet,
@@ -643,6 +652,7 @@ def estimate(case: Case) -> Estimate:
     }
     return Estimate(
         **{name: float(value[0]) for name, value in answers.scalars.items()},
+        currency=case.cost.currency if case.cost is not None else "",
         rows=Rows(**rows),
         checks=tuple(check.of(0) for check in answers.checks) if valid else (),
         valid=valid,

@@ -140,7 +140,7 @@ def size_document(found: Sizing) -> dict[str, Any]:
     """A sizing: the best with its arrangement, the curve, what was tried and what binds; costs are in `currency`."""
     document: dict[str, Any] = plain(found)
     arrangement = document.pop("arrangement")
-    best = {**estimate_document(found.best), **{name: arrangement[name] for name in arrangement if name != "net_power"}}
+    best = {**arrangement, **estimate_document(found.best)}
     units = {name: unit_of(kind) for name, kind in SIZE_KINDS.items()}
     return {**document, "best": best, "units": units, "version": VERSION}
 

@@ -10,6 +10,7 @@ import numpy as np
 from harvest.model.case import DECLARATIONS, Case, display
 from harvest.model.study_sections import OBJECTIVES
 from harvest.quantities import format_quantity
+from harvest.report.cost_sheet import cost_sentence
 from harvest.report.layout import WIDTH, heading, table, wrapped
 from harvest.report.terminal import stack_sentence, title, verdict
 
@@ -114,28 +115,19 @@ def _limit(found: BindingLimit) -> str:
 def _front(front: CostFront, currency: str) -> list[str]:
     rows = [
         (
-            f"{front.cost[i]:,.0f}",
+            f"{front.building_cost[i]:,.0f}",
             _w(front.net_power[i]),
-            f"{front.cost[i] / front.net_power[i]:.4g}" if front.net_power[i] > 0 else "-",
+            f"{front.building_cost[i] / front.net_power[i]:.4g}" if front.net_power[i] > 0 else "-",
             f"{front.module_count[i]:,}",
             f"{front.rows_count[i]} x {front.columns_count[i]} x {front.layers_count[i]}",
         )
-        for i in _shown(len(front.cost), [])
+        for i in _shown(len(front.building_cost), [])
     ]
     head = f"cost [{currency or 'currency'}]"
     return [
         heading("Net power against cost: nothing is both cheaper and stronger"),
         *table((head, "net", "cost per watt", "modules", "rows x columns x layers"), rows),
     ]
-
-
-def _costs(found: Sizing) -> str:
-    currency = found.currency or "(currency)"
-    text = (
-        f"It costs {found.arrangement.cost:,.0f} {currency}: {found.cost_per_net_watt:.4g} {currency} a net watt, "
-        f"{found.cost_per_kilowatt_hour:.4g} {currency} a kilowatt-hour"
-    )
-    return text + (f", paid back in {found.payback_years:.3g} years." if math.isfinite(found.payback_years) else ".")
 
 
 def size_report(case: Case, found: Sizing) -> str:
@@ -147,7 +139,7 @@ def size_report(case: Case, found: Sizing) -> str:
         "",
         wrapped("", f"Best for {OBJECTIVES[found.objective].partition(';')[0]}: {_arranged(found.arrangement)}."),
         f"Net power {_w(found.best.net_power)} of {_w(found.best.generated_power)} generated.",
-        *([wrapped("", _costs(found))] if found.front is not None else []),
+        *([wrapped("", cost_sentence(case, found.best))] if case.cost is not None else []),
         *_flatness(found),
         wrapped("", stack_sentence(found.best_case, found.best) + "."),
         wrapped("", verdict(found.best)),
@@ -171,7 +163,7 @@ def size_report(case: Case, found: Sizing) -> str:
         )
     lines += _curve(found)
     if found.front is not None:
-        lines += _front(found.front, found.currency)
+        lines += _front(found.front, found.best.currency)
     lines.append(heading("Limits"))
     lines += [_limit(each) for each in found.binding_limits]
     if found.limits_together is not None:

@@ -14,7 +14,6 @@ from harvest.errors import InputError, NoAnswerError
 from harvest.model.batch import Batch
 from harvest.model.case import DECLARATIONS, Case
 from harvest.model.case_fields import MOST_MODULES
-from harvest.model.costs import building_cost, cost_per_kilowatt_hour
 from harvest.model.design import BETWEEN
 from harvest.model.estimate import Outcomes, estimate, search_batch
 from harvest.model.reading import replace
@@ -48,6 +47,9 @@ LIMITS = {
 }
 """Limits of the case with the result they bound, from above (1) or below (-1)."""
 
+KEPT = ("net_power", "building_cost", "cost_per_net_watt", "cost_per_kilowatt_hour")
+"""Results of every choice that objectives and the front of cost look at."""
+
 Progress = Callable[[int, int], None]
 
 
@@ -60,7 +62,7 @@ class Arrangement:
     columns_count: int
     layers_count: int
     net_power: float
-    cost: float
+    building_cost: float
     fields: dict[str, float]
 
 
@@ -85,7 +87,7 @@ class SizeCurve:
 class CostFront:
     """Choices of which none is both cheaper and stronger; arrays, rising in cost."""
 
-    cost: FloatArray
+    building_cost: FloatArray
     net_power: FloatArray
     module_count: IntArray
     rows_count: IntArray
@@ -135,10 +137,6 @@ class Sizing:
     at_bounds: tuple[AtBound, ...] = ()
     net_power_without_window: float | None = None
     front: CostFront | None = None
-    cost_per_net_watt: float = np.nan
-    cost_per_kilowatt_hour: float = np.nan
-    payback_years: float = np.nan
-    currency: str = ""
 
 
 class _Axes:
@@ -218,27 +216,23 @@ class _Tally:
             return
         blocks = row_blocks(self.case, int(rows[0]))
         base = dataclasses.replace(self.case, electrical=dataclasses.replace(self.case.electrical, row_blocks=blocks))
-        batch = Batch(base, cases, values)
-        found = search_batch(batch)
+        found = search_batch(Batch(base, cases, values))
         if counted:
             self.choices += cases
             for problem in found.problem[found.problem != ""]:
                 self.note(problem.split(BETWEEN)[0], 1)
-        self.keep(batch, values, found)
+        self.keep(values, found)
 
-    def keep(self, batch: Batch, values: dict[str, FloatArray], found: Outcomes) -> None:
+    def keep(self, values: dict[str, FloatArray], found: Outcomes) -> None:
         """Keep the choices that have an answer."""
         valid = found.problem == ""
         scalars = found.scalars
-        cost = building_cost(batch, scalars)
         part = {
             **values,
             "module_count": values["stack.rows"] * values["stack.columns"] * values["stack.layers"],
             "generated_power": scalars["generated_power"],
             "drive_power": scalars["hot_drive_power"] + scalars["cold_drive_power"],
-            "net_power": scalars["net_power"],
-            "cost": cost,
-            "cost_per_kilowatt_hour": cost_per_kilowatt_hour(batch, cost, scalars["net_power"]),
+            **{name: scalars[name] for name in KEPT},
             **{name: scalars[result] for name, (result, _) in self.limits.items()},
         }
         self.parts.append({name: np.asarray(each)[valid] for name, each in part.items()})
@@ -289,17 +283,14 @@ class _Found:
         """Places of choices that meet the objective, the best first; of equals the one with fewer modules."""
         size = self.case.size
         assert size is not None
-        net, count, cost = (self.numbers[name] for name in ("net_power", "module_count", "cost"))
+        net, count = self.numbers["net_power"], self.numbers["module_count"]
         if size.objective == "fewest modules":
             reached = among & (net >= float(size.target_net_power or 0.0))
             keys: tuple[FloatArray, ...] = (-net, count)
         elif size.objective == "net power":
             reached, keys = among, (count, -net)
         else:
-            reached = among & (net > 0)
-            with np.errstate(all="ignore"):
-                each = cost / net if size.objective == "cost per net watt" else self.numbers["cost_per_kilowatt_hour"]
-            keys = (count, each)
+            reached, keys = among & (net > 0), (count, self.numbers[size.objective.replace(" ", "_").replace("-", "_")])
         places = np.flatnonzero(reached)
         return places[np.lexsort(tuple(key[places] for key in keys))]
 
@@ -309,7 +300,7 @@ class _Found:
         fields = {path: numbers[path] for path in (self.case.size.fields or {} if self.case.size else {})}
         rows, columns, layers = (int(numbers[path]) for path in COUNTS)
         return Arrangement(
-            int(numbers["module_count"]), rows, columns, layers, numbers["net_power"], numbers["cost"], fields
+            int(numbers["module_count"]), rows, columns, layers, numbers["net_power"], numbers["building_cost"], fields
         )
 
 
@@ -366,12 +357,12 @@ def _front(found: _Found, among: BoolArray) -> CostFront | None:
     if found.case.cost is None:
         return None
     places = np.flatnonzero(among)
-    cost, net = found.numbers["cost"][places], found.numbers["net_power"][places]
+    cost, net = found.numbers["building_cost"][places], found.numbers["net_power"][places]
     order = np.lexsort((-net, cost))
     before = np.concatenate([[-np.inf], np.maximum.accumulate(net[order])[:-1]])
     chosen = places[order[net[order] > before]]
     return CostFront(
-        found.numbers["cost"][chosen],
+        found.numbers["building_cost"][chosen],
         found.numbers["net_power"][chosen],
         _whole(found, "module_count", chosen),
         *(_whole(found, path, chosen) for path in COUNTS),
@@ -509,7 +500,6 @@ def size(case: Case, progress: Progress | None = None) -> Sizing:
         at_bounds=_at_bounds(axes, chosen),
         net_power_without_window=_without_window(best_case, best),
         front=_front(found, allowed),
-        **_worth_of(case, arrangement),
     )
 
 
@@ -521,23 +511,6 @@ def _without_window(case: Case, best: Estimate) -> float | None:
     electrical = dataclasses.replace(case.electrical, converter_window=None)
     found = search_batch(Batch(dataclasses.replace(case, electrical=electrical)))
     return float(found.scalars["net_power"][0])
-
-
-def _worth_of(case: Case, best: Arrangement) -> dict[str, Any]:
-    """Costs of the best against what it gives; payback where electricity has a price in the same currency."""
-    if case.cost is None:
-        return {}
-    net = np.array([best.net_power])
-    each = float(cost_per_kilowatt_hour(Batch(case), np.array([best.cost]), net)[0])
-    price = case.site.electricity_value
-    one_currency = price is not None and price.currency == case.cost.currency
-    yearly = price.amount * best.net_power * case.site.yearly_operation if price is not None and one_currency else 0.0
-    return {
-        "cost_per_net_watt": best.cost / best.net_power if best.net_power > 0 else np.inf,
-        "cost_per_kilowatt_hour": each,
-        "payback_years": best.cost / yearly if yearly > 0 else np.nan,
-        "currency": case.cost.currency,
-    }
 
 
 def _said(tally: _Tally) -> list[str]:
