@@ -21,6 +21,8 @@ if TYPE_CHECKING:
     from harvest.model.reading import load_case, load_streams, replace
     from harvest.model.results import Estimate, Estimates
     from harvest.study.bench_record import fit_bench_record, read_bench_record
+    from harvest.study.duty import DutyBalance, duty
+    from harvest.study.duty_log import DutyLog, read_duty_log
     from harvest.study.modules import load_module
     from harvest.study.screen import Screening, screen
     from harvest.study.size import Sizing, size
@@ -52,6 +54,10 @@ _HOMES = {
     "WhatIf": "harvest.study.what_if",
     "WhatIfOptions": "harvest.study.what_if",
     "what_if": "harvest.study.what_if",
+    "DutyBalance": "harvest.study.duty",
+    "DutyLog": "harvest.study.duty_log",
+    "duty": "harvest.study.duty",
+    "read_duty_log": "harvest.study.duty_log",
     "Sizing": "harvest.study.size",
     "size": "harvest.study.size",
     "screen": "harvest.study.screen",
@@ -62,6 +68,8 @@ __all__ = [
     "Batch",
     "Case",
     "CaseError",
+    "DutyBalance",
+    "DutyLog",
     "Estimate",
     "Estimates",
     "HarvestError",
@@ -74,6 +82,7 @@ __all__ = [
     "WhatIf",
     "WhatIfOptions",
     "__version__",
+    "duty",
     "estimate",
     "estimate_batch",
     "fit_bench_record",
@@ -83,6 +92,7 @@ __all__ = [
     "load_streams",
     "module_curve",
     "read_bench_record",
+    "read_duty_log",
     "replace",
     "screen",
     "size",

@@ -544,6 +544,7 @@ SEARCHED = (
     "hot_pressure_drop",
     "cold_pressure_drop",
     "hottest_face_temperature",
+    "hottest_junction_temperature",
     "warmest_cold_face_temperature",
     "stack_length",
     "stack_width",
@@ -596,6 +597,7 @@ def search_batch(batch: Batch) -> Outcomes:
             "hot_pressure_drop": hot_drop.total,
             "cold_pressure_drop": cold_drop.total,
             "hottest_face_temperature": chosen.largest(chosen.hot_face),
+            "hottest_junction_temperature": chosen.largest(state.hot_junction),
             "warmest_cold_face_temperature": chosen.largest(chosen.cold_face),
             **_measures(made),
         }
@@ -603,6 +605,26 @@ def search_batch(batch: Batch) -> Outcomes:
         made.faults.add(lost, "the result is not a finite number")
     valid = made.faults.valid
     return Outcomes({name: np.where(valid, value, np.nan) for name, value in scalars.items()}, made.faults.text)
+
+
+def drive_power_without_heat(batch: Batch, side: str) -> tuple[FloatArray, ObjectArray]:
+    """Drive power of a side whose stream passes the stack at its inlet temperature [W], or why there is none; (cases,).
+
+    The other stream stands, whatever flow the batch has for it.
+    """
+    with np.errstate(all="ignore"):
+        made = design(driven_batch(batch))
+        stream = made.hot if side == "hot" else made.cold
+        boundaries = np.ones((made.problem.rows + 1, 1)) * stream.inlet_temperature
+        active = (np.arange(made.problem.rows)[:, None] < made.problem.active_rows).astype(float)
+        row_length = batch.number("stack.row_pitch") / made.segments
+        drop = pressure_drop(made.batch, stream, boundaries, stream.inlet_temperature, active, row_length)
+        power = side_drive_power(made.batch, stream, drop.total, stream.inlet_temperature)
+    problem: ObjectArray = np.full(batch.cases, "", dtype=object)
+    for index in np.flatnonzero(made.faults.text != ""):
+        own = [text for text in made.faults.text[index].split(BETWEEN) if text.startswith(side)]
+        problem[index] = own[0] if own else ""
+    return np.where(problem == "", power, np.nan), problem
 
 
 def _among(answers: Estimates, which: IntArray, problem: ObjectArray, batch: Batch) -> Estimates:

@@ -135,7 +135,7 @@ class Duty:
     )
     longest_hold: float | None = quantity(
         "duration",
-        "Longest time for which a reading holds until the next one; unless given, three usual steps of the log. After a "
+        "Longest time for which a reading holds until the next one; unless given, three usual steps of the log. In a "
         "longer gap the reading holds for one usual step, and the rest of the gap is not covered.",
         default=None,
         above=0.0,

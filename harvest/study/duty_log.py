@@ -2,14 +2,13 @@
 
 from __future__ import annotations
 
-import dataclasses
 from dataclasses import dataclass
 from pathlib import Path
-from typing import NamedTuple
+from typing import Any, NamedTuple
 
 import numpy as np
 
-from harvest.errors import CaseError, InputError
+from harvest.errors import CaseError
 from harvest.model.case import DECLARATIONS, Case, display, limits_text
 from harvest.model.case_fields import Declaration
 from harvest.physics.arrays import BoolArray, FloatArray, IntArray, ObjectArray
@@ -65,14 +64,15 @@ class DutyLog:
     """Readings of a log in the order of its lines, (readings,) each.
 
     `values` in SI by field; `duration` [s] for which each holds, 0 where it is left out; `time` [s] since 1970 or
-    since the log's own zero, NaN in a table of bins; `stamps` of it as text. `problem` says why a reading is left out
-    or its time not covered, `used` whether it counts. `gap_time` [s] lies beyond what the readings hold.
+    since the log's own zero, NaN in a table of bins; `offset` [s] of the clock from UTC, NaN where not known.
+    `problem` says why a reading is left out or its time not covered, `used` whether it counts. `gap_time` [s] lies
+    beyond what the readings hold, `held_cells` were empty and have the value before.
     """
 
     label: str
     lines: IntArray
-    stamps: tuple[str, ...]
     time: FloatArray
+    offset: FloatArray
     duration: FloatArray
     values: dict[str, FloatArray]
     problem: ObjectArray
@@ -81,6 +81,13 @@ class DutyLog:
     gap_time: float
     usual_step: float
     held_cells: int
+    is_stamped: bool
+
+    def stamp(self, reading: int) -> str:
+        """Time of a reading as text, "" where it has none."""
+        if self.is_stamped:
+            return stamp_text(float(self.time[reading]), float(self.offset[reading]))
+        return "" if np.isnan(self.time[reading]) else f"{self.time[reading] / HOUR:.6g} h"
 
     @property
     def is_bins(self) -> bool:
@@ -147,6 +154,12 @@ def _raise_header_faults(table: MeasurementTable) -> None:
         )
 
 
+def usual_step(time: FloatArray) -> float:
+    """Median step [s] between the different times of a log, whether their readings are good or not."""
+    steps = np.diff(np.unique(time[np.isfinite(time)]))
+    return float(np.median(steps)) if len(steps) else np.nan
+
+
 class _Reading:
     """A log on its way from the table: what is left out, and why."""
 
@@ -172,41 +185,40 @@ class _Reading:
             if declaration.above is not None:
                 wrong |= numbers < declaration.above
                 wrong |= (numbers == declaration.above) & (path not in FLOWS)
-            for reading in np.flatnonzero(wrong):
+            allowed = limits_text(declaration)
+            if path in FLOWS:
+                allowed = f"0 where the stream stands, or {allowed}"
+            for reading in np.flatnonzero(wrong).tolist():
                 shown = display(float(numbers[reading]), declaration)
-                self.leave_out(
-                    int(reading), "out of range", f"{path}: {shown} is not possible; give {limits_text(declaration)}"
-                )
+                self.leave_out(reading, "out of range", f"{path}: {shown} is not possible; give {allowed}")
 
     def bins(self) -> DutyLog:
         """A table of conditions with their hours."""
         hours = self.table.values["hours"]
         for name, numbers in {"hours": hours, **self.values}.items():
-            for reading in np.flatnonzero(np.isnan(numbers) & (self.problem == "")):
-                self.leave_out(int(reading), "incomplete", f"{name}: empty; a bin needs every value")
-        for reading in np.flatnonzero(hours < 0):
-            self.leave_out(int(reading), "out of range", f"hours: {hours[reading] / HOUR:g} h is below zero")
+            for reading in np.flatnonzero(np.isnan(numbers) & (self.problem == "")).tolist():
+                self.leave_out(reading, "incomplete", f"{name}: empty; a bin needs every value")
+        for reading in np.flatnonzero(hours < 0).tolist():
+            self.leave_out(reading, "out of range", f"hours: {hours[reading] / HOUR:g} h is below zero")
         duration = np.where(self.problem == "", hours, 0.0)
         nothing = np.full(len(hours), np.nan)
         lost = float(np.nansum(np.where(self.problem == "", 0.0, np.maximum(hours, 0.0))))
-        return self.log(("",) * len(hours), nothing, duration, gap_time=lost, usual_step=np.nan, held_cells=0)
+        return self.log(nothing, nothing, duration, lost)
 
     def course(self) -> DutyLog:
         """Readings at times, put in order."""
         stamped = self.table.kinds["time"] == TEXT
         if stamped:
-            cells = self.table.texts["time"]
-            empty = [not cell for cell in cells]
-            read = read_time_stamps([cell or "1970-01-01" for cell in cells], self.case.duty.time_zone)
+            read = read_time_stamps(self.table.texts["time"], self.case.duty.time_zone)
             for reading, text in read.faults:
-                self.leave_out(reading, "unreadable", text)
+                if not self.problem[reading]:
+                    self.leave_out(reading, "unreadable", text)
             time, offset, repeated = read.seconds, read.offset, read.repeated
-            time = np.where(empty, np.nan, time)
         else:
             time = self.table.values["time"]
             offset, repeated = np.full(len(time), np.nan), np.zeros(len(time), dtype=bool)
-        for reading in np.flatnonzero(np.isnan(time) & (self.problem == "")):
-            self.leave_out(int(reading), "unreadable", "time: empty")
+        for reading in np.flatnonzero(np.isnan(time) & (self.problem == "")).tolist():
+            self.leave_out(reading, "unreadable", "time: empty")
         order = self.in_order(time, stamped and bool(np.isnan(offset).all()))
         if len(order) < 2:
             raise CaseError(
@@ -217,7 +229,7 @@ class _Reading:
                 ]
             )
         steps = np.diff(time[order])
-        usual = float(np.median(steps))
+        usual = usual_step(time)
         given = self.case.duty.longest_hold
         longest = LONGEST_STEPS * usual if given is None else given
         self.judge_clock(time, offset, repeated, order, usual, stamped)
@@ -227,12 +239,11 @@ class _Reading:
         holds = np.append(steps, min(usual, longest))
         holds[gaps] = min(usual, longest)
         duration[order] = holds
-        for place in gaps:
+        for place in gaps.tolist():
             said = f"the next reading is {steps[place] / HOUR:.6g} h later"
             self.note(int(order[place]), "long gap", said)
         gap_time = float((steps[gaps] - holds[gaps]).sum())
-        stamps = tuple(map(stamp_text, time.tolist(), offset.tolist())) if stamped else ("",) * len(time)
-        return self.log(stamps, time, duration, gap_time=gap_time, usual_step=usual, held_cells=held)
+        return self.log(time, offset, duration, gap_time, usual_step=usual, held_cells=held, is_stamped=stamped)
 
     def in_order(self, time: FloatArray, is_clock: bool) -> IntArray:
         """Readings that count, in the order of their times; none stands at the time of another."""
@@ -241,30 +252,29 @@ class _Reading:
             self.leave_out_repeated_hours(time, used)
             used = np.flatnonzero(self.problem == "")
         late = time[used] < np.maximum.accumulate(time[used])
-        for reading in used[late]:
-            self.note(int(reading), "out of order", "time: earlier than on a line above")
-        order = used[np.argsort(time[used], kind="stable")]
+        for reading in used[late].tolist():
+            self.note(reading, "out of order", "time: earlier than on a line above")
+        order: IntArray = used[np.argsort(time[used], kind="stable")]
         again = np.append(False, np.diff(time[order]) == 0)
         firsts = np.maximum.accumulate(np.where(again, 0, np.arange(len(order))))
-        for place in np.flatnonzero(again):
+        for place in np.flatnonzero(again).tolist():
             line = self.table.lines[order[firsts[place]]]
             self.leave_out(int(order[place]), "same time", f"time: the same as on line {line}")
-        return order[~again]
+        return np.asarray(order[~again])
 
     def leave_out_repeated_hours(self, time: FloatArray, used: IntArray) -> None:
         """Leave out what a clock of unknown zone shows again where it seems to be put back by an hour."""
         clock = time[used]
-        steps = np.diff(clock)
-        forward = steps[steps > 0]
-        if not len(forward) or (usual := float(np.median(forward))) > HOUR:
+        usual = usual_step(time)
+        if not usual <= HOUR:
             return
-        back = np.abs(steps - (usual - HOUR)) < 1.0
-        for place in np.flatnonzero(back & may_be_changed(clock[1:])):
+        back = np.abs(np.diff(clock) - (usual - HOUR)) < 1.0
+        for place in np.flatnonzero(back & may_be_changed(clock[1:])).tolist():
             after = place + 1 + np.flatnonzero(clock[place + 1 :] > clock[place])
             end = int(after[0]) if len(after) else len(clock)
-            for reading in used[place + 1 : end]:
+            for reading in used[place + 1 : end].tolist():
                 said = "time: the clock shows this hour again, as at the end of daylight-saving time"
-                self.leave_out(int(reading), "repeated hour", said)
+                self.leave_out(reading, "repeated hour", said)
 
     def judge_clock(
         self, time: FloatArray, offset: FloatArray, repeated: BoolArray, order: IntArray, usual: float, stamped: bool
@@ -274,7 +284,7 @@ class _Reading:
             return
         clock = offset[order]
         known = np.isfinite(clock[:-1]) & np.isfinite(clock[1:])
-        for place in np.flatnonzero(known & (np.diff(clock) != 0)):
+        for place in np.flatnonzero(known & (np.diff(clock) != 0)).tolist():
             change = clock[place + 1] - clock[place]
             ahead = "forward" if change > 0 else "back"
             twice = " and shows an hour again" if repeated[order[place + 1]] and change < 0 else ""
@@ -284,7 +294,7 @@ class _Reading:
             return
         steps = np.diff(time[order])
         longer = (np.abs(steps - usual - HOUR) < 1.0) & (usual <= HOUR) & may_be_changed(time[order][1:])
-        for place in np.flatnonzero(longer):
+        for place in np.flatnonzero(longer).tolist():
             said = "a step longer by an hour, as at the start of daylight-saving time"
             self.note(int(order[place + 1]), "clock perhaps changed", said)
 
@@ -300,26 +310,23 @@ class _Reading:
             empty = np.isnan(column)
             held += int((empty & ~stale).sum())
             numbers[order] = np.where(stale, np.nan, column[last])
-            for place in np.flatnonzero(empty & stale):
+            for place in np.flatnonzero(empty & stale).tolist():
                 said = f"{path}: empty, and no value before" if last[place] < 0 else f"{path}: empty for too long"
                 self.leave_out(int(order[place]), "no value", said)
         return held
 
-    def log(
-        self, stamps: tuple[str, ...], time: FloatArray, duration: FloatArray, *, gap_time: float, usual_step: float,
-        held_cells: int,
-    ) -> DutyLog:
+    def log(self, time: FloatArray, offset: FloatArray, duration: FloatArray, gap_time: float, **more: Any) -> DutyLog:
+        """The log as it was read; what is not given in `more` is that of a table of bins."""
         return DutyLog(
-            self.table.label,
-            self.table.lines,
-            stamps,
-            time,
-            duration,
-            self.values,
-            self.problem,
-            tuple(sorted(self.notes)),
-            self.table.ignored,
-            gap_time,
-            usual_step,
-            held_cells,
+            label=self.table.label,
+            lines=self.table.lines,
+            time=time,
+            offset=offset,
+            duration=duration,
+            values=self.values,
+            problem=self.problem,
+            notes=tuple(sorted(self.notes)),
+            ignored=self.table.ignored,
+            gap_time=gap_time,
+            **{"usual_step": np.nan, "held_cells": 0, "is_stamped": False, **more},
         )

@@ -64,9 +64,7 @@ class MeasurementTable:
     @property
     def cell_faults(self) -> list[str]:
         """One line for each cell that is wrong; decimal commas between commas are one fault of the whole file."""
-        lines = [
-            f"{self.label}:{self.lines[each.reading]}: {each.text}" for each in self.faulty if not each.is_comma
-        ]
+        lines = [f"{self.label}:{self.lines[each.reading]}: {each.text}" for each in self.faulty if not each.is_comma]
         commas = [each for each in self.faulty if each.is_comma]
         if commas:
             more = f", and {len(commas) - 1} more like it" if len(commas) > 1 else ""

@@ -192,7 +192,7 @@ class _Tally:
         self.case = case
         self.parts: list[dict[str, FloatArray]] = []
         self.limits = {
-            name: (result, sign) for name, (result, sign) in LIMITS.items() if np.isfinite(_limit(case, name))
+            name: (result, sign) for name, (result, sign) in LIMITS.items() if np.isfinite(limit_of(case, name))
         }
         self.reasons: dict[str, tuple[str, int]] = {}
         self.choices = 0
@@ -248,12 +248,12 @@ class _Tally:
         names = self.parts[0] if self.parts else {}
         numbers = {name: np.concatenate([part[name] for part in self.parts]) for name in names}
         beyond = {
-            name: sign * numbers[name] > sign * _limit(self.case, name) for name, (_, sign) in self.limits.items()
+            name: sign * numbers[name] > sign * limit_of(self.case, name) for name, (_, sign) in self.limits.items()
         }
         return _Found(self.case, numbers, beyond)
 
 
-def _limit(case: Case, name: str) -> float:
+def limit_of(case: Case, name: str) -> float:
     """A limit in SI; NaN where the case has none. Faces obey the module's limit too."""
     given = getattr(case.limits, name)
     limit = np.nan if given is None else float(given)

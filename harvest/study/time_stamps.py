@@ -17,8 +17,8 @@ QUARTER = 900
 SUNDAY = 6
 MONTHS_OF_CHANGE = (3, 4, 5, 9, 10, 11)
 LAST_HOUR_OF_CHANGE = 4
-EPOCH = datetime(1970, 1, 1)  # noqa: DTZ001 - of a clock without a zone
-_SECOND = np.timedelta64(1_000_000, "us")
+EPOCH = datetime(1970, 1, 1)
+"""Zero of a clock whose zone does not matter."""
 
 
 @dataclass(frozen=True, eq=False)
@@ -60,8 +60,9 @@ def read_time_stamps(cells: Sequence[str], zone_name: str = "") -> TimeStamps:
             faults.append((place, f"time: {shown(cells[place])} has {said}"))
             stamps[place] = None
     known = np.array([stamp is not None for stamp in stamps], dtype=bool)
-    bare = np.array([EPOCH if stamp is None else stamp.replace(tzinfo=None) for stamp in stamps], dtype="datetime64[us]")
-    clock = np.where(known, (bare - np.datetime64(EPOCH, "us")) / _SECOND, np.nan)
+    bare = [EPOCH if stamp is None else stamp.replace(tzinfo=None) for stamp in stamps]
+    clock = np.array(bare, dtype="datetime64[us]").astype(np.int64) / 1e6
+    clock[~known] = np.nan
     repeated = np.zeros(len(cells), dtype=bool)
     if has_offset:
         offset = np.array([np.nan if stamp is None else _seconds(stamp.utcoffset()) for stamp in stamps])
@@ -70,16 +71,17 @@ def read_time_stamps(cells: Sequence[str], zone_name: str = "") -> TimeStamps:
     else:
         before, after = _offsets(clock, known, zone)
         missing = before < after
-        for place in np.flatnonzero(missing):
-            text = f"time: {shown(cells[place])} does not exist in {zone_name}, where the clock was put forward"
-            faults.append((int(place), text))
+        faults += [
+            (each, f"time: {shown(cells[each])} does not exist in {zone_name}, where the clock was put forward")
+            for each in np.flatnonzero(missing).tolist()
+        ]
         repeated = before > after
         offset = np.where(missing, np.nan, np.where(_second_pass(clock, repeated), after, before))
     return TimeStamps(clock - offset, offset, repeated, tuple(sorted(faults)))
 
 
 def may_be_changed(clock: FloatArray) -> BoolArray:
-    """Whether a clock [s since 1970] could just have been changed, by the rules of today: a Sunday night's few hours."""
+    """Whether a clock [s since 1970] could just have been changed, by today's rules: in a Sunday night's few hours."""
     days = np.floor(np.nan_to_num(clock) / 86400.0).astype(np.int64)
     months = days.astype("datetime64[D]").astype("datetime64[M]").astype(np.int64) % 12 + 1
     night = np.nan_to_num(clock) - 86400.0 * days <= 3600.0 * LAST_HOUR_OF_CHANGE
