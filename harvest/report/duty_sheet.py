@@ -26,7 +26,15 @@ MOST_NOTES = 5
 MOST_NOTES_IN_JSON = 1000
 DUTY_KINDS = {
     **dict.fromkeys(
-        ("covered_time", "time_on", "time_off", "time_without_answer", "time_not_covered", "time_beyond_limits"),
+        (
+            "covered_time",
+            "answered_time",
+            "time_on",
+            "time_off",
+            "time_without_answer",
+            "time_not_covered",
+            "time_beyond_limits",
+        ),
         "duration",
     ),
     **dict.fromkeys(("yearly_time", "yearly_from_time"), "duration"),

@@ -27,6 +27,10 @@ MOST_SAID = 20
 FLOWS = tuple(f"{side}.{flow}" for side in ("hot", "cold") for flow in ("mass_flow", "volume_flow", "fuel_flow"))
 """Fields that may be zero in a log: the stream stands."""
 SIDES = ("hot.", "cold.", "site.", "electrical.")
+_INSTEAD = {
+    "ambient_pressure": ", and log the absolute hot.pressure and cold.pressure",
+    "standard_volume_flow": ", and log the mass_flow",
+}
 FIXED = ("site.ambient_pressure", "hot.circuit_flow", "cold.circuit_flow")
 """Fields that change others of the case, which would not follow."""
 
@@ -140,7 +144,11 @@ def read_duty_log(case: Case, source: str | Path, *, strict: bool = False) -> Du
 
 
 def _raise_header_faults(table: MeasurementTable) -> None:
-    """Refuse a log without time or without a field."""
+    """Refuse a log without time or without a field, or with fields that do not change over time."""
+    fixed = [name for name in (each.partition("[")[0].strip() for each in table.ignored) if name in DECLARATIONS]
+    if fixed:
+        said = "cannot change in a log; leave the column out"
+        raise CaseError([f"{table.label}: {name}: {said}{_INSTEAD.get(name.partition('.')[2], '')}" for name in fixed])
     times = [name for name in ("time", "hours") if name in table.kinds]
     if len(times) != 1:
         said = "missing; write time, time [h], or hours [h] in a table of bins" if not times else "stands beside hours"
@@ -189,6 +197,8 @@ class _Reading:
             if path in FLOWS:
                 allowed = f"0 where the stream stands, or {allowed}"
             for reading in np.flatnonzero(wrong).tolist():
+                if self.problem[reading].startswith(path):
+                    continue
                 shown = display(float(numbers[reading]), declaration)
                 self.leave_out(reading, "out of range", f"{path}: {shown} is not possible; give {allowed}")
 
@@ -255,7 +265,7 @@ class _Reading:
         for reading in used[late].tolist():
             self.note(reading, "out of order", "time: earlier than on a line above")
         order: IntArray = used[np.argsort(time[used], kind="stable")]
-        again = np.append(False, np.diff(time[order]) == 0)
+        again = np.diff(time[order], prepend=-np.inf) == 0
         firsts = np.maximum.accumulate(np.where(again, 0, np.arange(len(order))))
         for place in np.flatnonzero(again).tolist():
             line = self.table.lines[order[firsts[place]]]
@@ -292,11 +302,11 @@ class _Reading:
             self.note(int(order[place + 1]), "clock changed", said)
         if known.any():
             return
-        steps = np.diff(time[order])
-        longer = (np.abs(steps - usual - HOUR) < 1.0) & (usual <= HOUR) & may_be_changed(time[order][1:])
+        every, first = np.unique(time, return_index=True)
+        longer = (np.abs(np.diff(every) - usual - HOUR) < 1.0) & (usual <= HOUR) & may_be_changed(every[1:])
         for place in np.flatnonzero(longer).tolist():
             said = "a step longer by an hour, as at the start of daylight-saving time"
-            self.note(int(order[place + 1]), "clock perhaps changed", said)
+            self.note(int(first[place + 1]), "clock perhaps changed", said)
 
     def hold_cells(self, time: FloatArray, order: IntArray, longest: float) -> int:
         """Give empty cells the last value of their column, for a time; returns how many."""

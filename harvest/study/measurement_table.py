@@ -264,7 +264,7 @@ def _shortened(faults: Sequence[str]) -> list[str]:
 def _cells(line: str, separator: str) -> list[str] | None:
     """Cells of one line, None where it cannot be split."""
     try:
-        return next(csv.reader([line], delimiter=separator, strict=True))
+        return next(csv.reader([line], delimiter=separator, strict=True, skipinitialspace=True))
     except csv.Error:
         return None
 
