@@ -20,6 +20,7 @@ if TYPE_CHECKING:
     from harvest.model.module_curve import ModuleCurve, module_curve
     from harvest.model.reading import load_case, load_streams, replace
     from harvest.model.results import Estimate, Estimates
+    from harvest.report.sweep_files import sweep
     from harvest.study.bench_record import fit_bench_record, read_bench_record
     from harvest.study.duty import DutyBalance, duty
     from harvest.study.duty_log import DutyLog, read_duty_log
@@ -51,6 +52,7 @@ _HOMES = {
     "module_curve": "harvest.model.module_curve",
     "read_bench_record": "harvest.study.bench_record",
     "replace": "harvest.model.reading",
+    "sweep": "harvest.report.sweep_files",
     "WhatIf": "harvest.study.what_if",
     "WhatIfOptions": "harvest.study.what_if",
     "what_if": "harvest.study.what_if",
@@ -96,6 +98,7 @@ __all__ = [
     "replace",
     "screen",
     "size",
+    "sweep",
     "what_if",
 ]
 

@@ -27,7 +27,7 @@ HOMES = {
     "click": ("cli/",),
     "matplotlib": ("report/",),
     "jinja2": ("report/",),
-    "scipy": ("study/",),
+    "scipy": ("study/", "report/"),
 }
 
 

@@ -21,8 +21,10 @@ from harvest.model.case import Case
 from harvest.model.costs import building_cost
 from harvest.model.estimate import estimate, estimate_batch
 from harvest.model.reading import load_case, replace
-from harvest.quantities import parse_quantity, unit_of
-from harvest.report.duty_sheet import MOST_NOTES, duty_columns
+from harvest.quantities import parse_quantity
+from harvest.report.duty_files import duty_table
+from harvest.report.duty_sheet import MOST_NOTES
+from harvest.report.tables import read_about
 from harvest.study.duty import (
     NO_ANSWER,
     NO_FLOW,
@@ -618,8 +620,24 @@ def test_the_plot_is_the_same_each_time(tmp_path: Path, header: str) -> None:
 
 
 def test_each_reading_has_a_row(jacket: Case) -> None:
-    columns = duty_columns(mixed(jacket))
-    assert {len(values) for _, values in columns.values()} == {7}
-    assert columns["net_power"][0] == unit_of("power") and columns["hot_pressure_drop"][0] == "Pa"
-    assert columns["time"][1][1] == "2026-03-02T01:00:00"
-    assert list(columns["valid"][1]) == [True] * 5 + [False, True]
+    found = mixed(jacket)
+    table, columns = duty_table(jacket, found)
+    assert {len(values) for values in columns.values()} == {7} and set(columns) == {each.name for each in table.columns}
+    assert columns["time"][1] == "2026-03-02T01:00:00"
+    assert list(columns["valid"]) == [True] * 5 + [False, True]
+
+
+@pytest.mark.parametrize("suffix", [".csv", ".parquet", ".nc"])
+def test_the_table_is_written_with_units(tmp_path: Path, suffix: str) -> None:
+    (tmp_path / "log.csv").write_text(MIXED.replace("20,", "bad,"), "utf-8")
+    path = tmp_path / f"rows{suffix}"
+    arguments = ("duty", str(JACKET), str(tmp_path / "log.csv"), "-o", str(path), "--drives", "always on")
+    assert run(*arguments).exit_code == 0
+    assert read_about(path)["command"].endswith("--set 'duty.drives=always on'")
+    assert run(*arguments).exit_code == 2  # it exists already
+    if suffix == ".csv":
+        header, *rows = path.read_text("utf-8").splitlines()
+        assert header.startswith("line,time,duration [s],hot.inlet_temperature [K],hot.volume_flow [m^3/s],state,")
+        assert "net_power [W]" in header and header.endswith("valid,problem")
+        assert len(rows) == 7
+        assert rows[3].startswith("5,2026-03-02T03:00:00,0.0,,") and "false" in rows[3] and "finite number" in rows[3]

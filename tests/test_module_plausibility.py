@@ -14,8 +14,9 @@ from harvest.cli import cli
 from harvest.errors import CaseError
 from harvest.model.batch import Batch
 from harvest.model.estimate import estimate, estimate_batch
-from harvest.model.module import cooler_comparison, described_module, fill_factor
+from harvest.model.module import described_module, fill_factor
 from harvest.model.module_curve import module_curve
+from harvest.model.rated_module import cooler_comparison
 from harvest.model.reading import load_case, read_case
 
 SIDES = """\

@@ -17,11 +17,8 @@ from harvest.model.batch import Batch
 from harvest.model.case import case_hash, explain, value_at
 from harvest.model.estimate import estimate, estimate_batch
 from harvest.model.materials import load_material
-from harvest.model.module import (
-    cooler_heat_disagreement,
-    cooler_matched_powers,
-    described_module,
-)
+from harvest.model.module import described_module
+from harvest.model.rated_module import cooler_heat_disagreement, cooler_matched_powers
 from harvest.model.reading import case_from, load_case, read_case, replace
 from harvest.model.stack_sections import GeneratorRating
 from harvest.physics.arrays import FloatArray

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import shlex
 import sys
 from pathlib import Path
 
@@ -19,6 +20,13 @@ OPTIONS = {"drives": "duty.drives", "longest_hold": "duty.longest_hold", "time_z
 @click.option("--longest-hold", default=None, help='How long a reading holds at most, such as "3 h".')
 @click.option("--time-zone", default=None, help='Of time stamps without an offset, such as "Europe/Berlin".')
 @click.option("--strict", is_flag=True, help="Refuse a log with bad readings.")
+@click.option(
+    "-o",
+    "--output",
+    default=None,
+    type=click.Path(dir_okay=False),
+    help="Table to write, a row a reading: .csv, .parquet or .nc; a new file.",
+)
 @click.option("--plot", default=None, type=click.Path(dir_okay=False), help="Draw curve and course (.svg, .png, .pdf).")
 def duty(
     case: str,
@@ -26,6 +34,7 @@ def duty(
     as_json: bool,
     log: str | None,
     strict: bool,
+    output: str | None,
     plot: str | None,
     **options: str | None,
 ) -> None:
@@ -36,6 +45,12 @@ def duty(
     """
     settings = tuple(f"{OPTIONS[name]}={value}" for name, value in options.items() if value is not None)
     loaded = read_case_of(case, (*overrides, *settings))
+    if output is not None:
+        from harvest.report.files import refuse_existing
+        from harvest.report.tables import table_suffix
+
+        table_suffix(Path(output))
+        refuse_existing(Path(output))
     if plot is not None:
         from harvest.report.plots import can_plot
 
@@ -49,6 +64,11 @@ def duty(
         strict=strict,
         progress=_progress if sys.stderr.isatty() else None,
     )
+    if output is not None:
+        from harvest.report.duty_files import write_duty
+
+        given = [part for each in (*overrides, *settings) for part in ("--set", each)]
+        write_duty(Path(output), loaded, found, shlex.join(["harvest", "duty", case, *([log] if log else []), *given]))
     if plot is not None:
         from harvest.report.duty_plots import duty_figure
         from harvest.report.plots import write_figure

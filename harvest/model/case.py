@@ -19,14 +19,13 @@ from harvest.model.case_fields import (
     Curve,
     Declaration,
     FlowCurve,
-    other,
     section,
     text,
     walk,
 )
 from harvest.model.stack_sections import Electrical, Module, Stack
 from harvest.model.stream_sections import Side, Site, StreamSide
-from harvest.model.study_sections import Cost, Duty, Limits, Size
+from harvest.model.study_sections import Cost, Duty, Limits, Size, Sweep
 from harvest.quantities import (
     KINDS,
     StandardVolumeFlow,
@@ -64,12 +63,7 @@ class Case(Streams):
     size: Size | None = section(Size, "What a sizing may change, and what it looks for.", optional=True)
     cost: Cost | None = section(Cost, "What a design costs to build, in one currency.", optional=True)
     duty: Duty = section(Duty, "How the streams change over time.")
-    sweep: dict[str, Any] | None = other(
-        "axes",
-        "Fields that a sweep varies, by their whole names in quotes, as lists or { from = .., to = .., points = .. }.",
-        default=None,
-        descriptive=True,
-    )
+    sweep: Sweep | None = section(Sweep, "What a sweep varies.", optional=True)
 
 
 class FieldRecord(NamedTuple):

@@ -34,6 +34,18 @@ class FlowCurve:
     values: tuple[float, ...]
 
 
+@dataclass(frozen=True)
+class SweepAxis:
+    """What a sweep gives one field: `values`, with `labels` where they are no single numbers; or all of a range.
+
+    `between` holds the ends [SI] of a range from which a sample draws, and `values` is empty then.
+    """
+
+    values: tuple[Any, ...]
+    labels: tuple[str, ...] = ()
+    between: tuple[float, float] | None = None
+
+
 FluidRows = tuple[tuple[float, float, float, float, float], ...]
 
 

@@ -591,7 +591,7 @@ def search_batch(batch: Batch) -> Outcomes:
         scalars = {
             **powers,
             **costs(driven, powers),
-            "voltage": state.string_voltage[0],
+            "voltage": np.full(batch.cases, np.nan) if made.problem.circuit.independent else state.string_voltage[0],
             "hot_outlet_temperature": chosen.hot_outlet,
             "cold_outlet_temperature": chosen.cold_outlet,
             "hot_pressure_drop": hot_drop.total,

@@ -8,7 +8,9 @@ from typing import Any
 
 from harvest.model.case_fields import (
     MOST_ROWS,
+    SweepAxis,
     choice,
+    integer,
     other,
     quantity,
     text,
@@ -83,6 +85,44 @@ class Size:
         "axes",
         'Further fields to try, written in [size] by their whole names in quotes, such as "hot.duct.gap" = '
         '{ from = "2 mm", to = "6 mm", points = 5 }; those with a unit are refined around the best.',
+        default=None,
+        descriptive=True,
+    )
+
+
+SEQUENCES = {
+    "Sobol": "scrambled Sobol points, most even for a power of two of them",
+    "Halton": "scrambled Halton points, even for any number of them",
+}
+MOST_COMBINATIONS = 100_000_000
+
+
+@dataclass(frozen=True, kw_only=True)
+class Sweep:
+    """What a sweep varies: every combination of its fields' values, or a sample of them."""
+
+    sample: int | None = integer(
+        "Number of combinations drawn evenly from all that the fields allow, in place of every one of them.",
+        default=None,
+        minimum=1,
+        maximum=MOST_COMBINATIONS,
+        descriptive=True,
+    )
+    sequence: str = choice(
+        SEQUENCES, "Points of low discrepancy that a sample takes.", default="Sobol", descriptive=True
+    )
+    seed: int = integer(
+        "Start of the scrambling of a sample; the same seed gives the same sample.",
+        default=0,
+        minimum=0,
+        maximum=2**31,
+        descriptive=True,
+    )
+    fields: dict[str, SweepAxis] | None = other(
+        "axes",
+        'Fields that are varied, written in [sweep] by their whole names in quotes, such as "hot.mass_flow" = '
+        '{ from = "0.05 kg/s", to = "0.12 kg/s", points = 8 }, or with step in place of points, or as a list, '
+        "which may also hold choices; a sample also draws between from and to alone.",
         default=None,
         descriptive=True,
     )

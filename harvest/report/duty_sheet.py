@@ -6,8 +6,6 @@ import math
 from collections.abc import Iterable
 from typing import TYPE_CHECKING, Any
 
-import numpy as np
-
 from harvest.model.case import Case
 from harvest.model.study_sections import DUTY_DRIVES
 from harvest.quantities import KINDS, format_quantity, significant, unit_of
@@ -228,22 +226,3 @@ def duty_document(found: DutyBalance) -> dict[str, Any]:
 
 def _note(note: LogNote) -> dict[str, Any]:
     return {"line": note.line, "kind": note.kind, "text": note.text, "done": NOTES[note.kind]}
-
-
-def duty_columns(found: DutyBalance) -> dict[str, tuple[str, Any]]:
-    """One row a reading: each column's name with its unit, "" for text, and its values."""
-    from harvest.model.case import DECLARATIONS
-    from harvest.model.results import UNITS
-    from harvest.study.duty import STATES
-
-    log, rows = found.log, found.rows
-    return {
-        "line": ("", log.lines),
-        "time": ("", [log.stamp(reading) for reading in range(len(log.lines))]),
-        "duration": ("s", log.duration),
-        **{path: (unit_of(DECLARATIONS[path].kind), values) for path, values in log.values.items()},
-        "state": ("", np.array(STATES, dtype=object)[rows.state]),
-        **{name: (UNITS.get(name, "W"), values) for name, values in rows.results.items()},
-        "valid": ("", rows.problem == ""),
-        "problem": ("", rows.problem),
-    }

@@ -3,17 +3,19 @@
 from __future__ import annotations
 
 from dataclasses import dataclass, replace
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
 from harvest.physics.arrays import BoolArray, FloatArray, IntArray
 from harvest.physics.films import Film
 from harvest.physics.fluids import FluidBatch
-from harvest.physics.natural_convection import RoomSink
 from harvest.physics.rated import RatedFilm
 from harvest.physics.spreading import Constriction
 from harvest.physics.thermoelectrics import ModuleModel
+
+if TYPE_CHECKING:
+    from harvest.physics.natural_convection import RoomSink
 
 METAL_PASSES = 8
 """Fixed-point passes from the wall face to the metal that a sink's air meets; each gains two digits or more."""
