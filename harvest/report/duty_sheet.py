@@ -174,7 +174,7 @@ def _log(log: DutyLog, found: DutyBalance) -> list[str]:
         )
     ]
     if log.held_cells:
-        lines.append(wrapped("  ", f"{log.held_cells:,} empty cells have the value before them."))
+        lines.append(wrapped("  ", f"Empty cells that have the value before them: {log.held_cells:,}."))
     if log.ignored:
         lines.append(wrapped("  ", f"Columns that mean nothing here: {', '.join(log.ignored)}."))
     for kind, done in NOTES.items():
