@@ -92,7 +92,9 @@ def test_equal_hours_are_hours_times_the_estimate(name: str, overrides: list[str
         assert getattr(found, energy) == pytest.approx(getattr(one, power) * 48 * HOUR, rel=1e-12, abs=0.0), energy
     assert found.time_on == 48 * HOUR == found.covered_time
     assert found.net_power == pytest.approx(np.full(101, one.net_power), rel=1e-12)
-    assert found.yearly_net_energy == pytest.approx(one.net_power * 8760 * HOUR, rel=1e-12)
+    assert found.yearly_net_energy == pytest.approx(one.net_power * found.yearly_time, rel=1e-12)
+    stated = "site.yearly_operation" not in case.assumed
+    assert found.yearly_time == (case.site.yearly_operation if stated else 8760 * HOUR)
     assert found.hottest_face_temperature is not None
     assert found.hottest_face_temperature.value == one.hottest_face_temperature
     assert found.hottest_junction_temperature is not None

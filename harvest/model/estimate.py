@@ -558,26 +558,31 @@ SEARCHED = (
 )
 
 
-def search_batch(batch: Batch) -> Outcomes:
+SEARCHED_WITHOUT_LOAD = ("open_circuit_face_temperature", "highest_open_circuit_voltage")
+
+
+def search_batch(batch: Batch, *, without_load: bool = False) -> Outcomes:
     """Answer a batch at its own load only, without checks: the numbers in `SEARCHED`, as an estimate has them.
 
-    A case without an answer is NaN throughout and says why in `problem`. Raises InputError for faults of all.
+    Parameters: `batch`; `without_load`, whether to solve without current too, for `SEARCHED_WITHOUT_LOAD`. A case
+    without an answer is NaN throughout and says why in `problem`. Raises InputError for faults of all.
     """
     with np.errstate(all="ignore"):
         driven = driven_batch(batch)
         made = design(driven)
         wanting = made.faults.valid
         if not wanting.all():
-            scalars = {name: np.full(batch.cases, np.nan) for name in SEARCHED}
+            names = SEARCHED + SEARCHED_WITHOUT_LOAD * without_load
+            scalars = {name: np.full(batch.cases, np.nan) for name in names}
             problem = made.faults.text.copy()
             if wanting.any():
                 which = np.flatnonzero(wanting)
-                found = search_batch(driven.take(which))
+                found = search_batch(driven.take(which), without_load=without_load)
                 problem[which] = found.problem
                 for name, values in found.scalars.items():
                     scalars[name][which] = values
             return Outcomes(scalars, problem)
-        state = solve_stack(made.problem, maximum_power_load(driven))
+        best = state = solve_stack(made.problem, maximum_power_load(driven))
         if made.load.mode != MAXIMUM_POWER:  # the same road to other loads as in an estimate
             state = solve_stack(made.problem, Load(MATCHED), state)
         if made.load.mode not in (MAXIMUM_POWER, MATCHED):
@@ -591,7 +596,7 @@ def search_batch(batch: Batch) -> Outcomes:
         scalars = {
             **powers,
             **costs(driven, powers),
-            "voltage": np.full(batch.cases, np.nan) if made.problem.circuit.independent else state.string_voltage[0],
+            "voltage": np.where(made.problem.circuit.independent, np.nan, state.string_voltage[0]),
             "hot_outlet_temperature": chosen.hot_outlet,
             "cold_outlet_temperature": chosen.cold_outlet,
             "hot_pressure_drop": hot_drop.total,
@@ -600,11 +605,23 @@ def search_batch(batch: Batch) -> Outcomes:
             "hottest_junction_temperature": chosen.largest(state.hot_junction),
             "warmest_cold_face_temperature": chosen.largest(chosen.cold_face),
             **_measures(made),
+            **(_without_load(made, best) if without_load else {}),
         }
         lost = ~np.isfinite(scalars["net_power"]) & made.faults.valid
         made.faults.add(lost, "the result is not a finite number")
     valid = made.faults.valid
     return Outcomes({name: np.where(valid, value, np.nan) for name, value in scalars.items()}, made.faults.text)
+
+
+def _without_load(made: Design, start: StackState) -> dict[str, FloatArray]:
+    """Results of a stack without current by name, (cases,), solved on the road of an estimate."""
+    opened = solve_stack(made.problem, Load(OPEN_CIRCUIT), start)
+    made.faults.add(~opened.converged & made.faults.valid, "no solution found without current")
+    solution = unfold(made, made.problem, opened)
+    return {
+        "open_circuit_face_temperature": solution.largest(solution.hot_face),
+        "highest_open_circuit_voltage": np.abs(opened.string_voltage).max(axis=0),
+    }
 
 
 def drive_power_without_heat(batch: Batch, side: str) -> tuple[FloatArray, ObjectArray]:

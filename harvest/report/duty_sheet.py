@@ -13,6 +13,7 @@ from harvest.report.documents import plain
 from harvest.report.layout import WIDTH, heading, pairs, table, wrapped
 from harvest.report.terminal import title
 from harvest.study.duty_log import LONGEST_STEPS, NOTES
+from harvest.study.limits import limit_path
 
 if TYPE_CHECKING:
     from harvest.study.duty import DutyBalance, Extreme
@@ -157,8 +158,10 @@ def _extremes(found: DutyBalance) -> list[str]:
 
 
 def _limits(found: DutyBalance) -> list[str]:
-    kept = [f"limits.{name}" for name, time in found.time_beyond_limits.items() if not time]
-    lines = [f"  limits.{name}: beyond it for {hours(time)}" for name, time in found.time_beyond_limits.items() if time]
+    kept = [limit_path(name) for name, time in found.time_beyond_limits.items() if not time]
+    lines = [
+        f"  {limit_path(name)}: beyond it for {hours(time)}" for name, time in found.time_beyond_limits.items() if time
+    ]
     if kept:
         lines.append(wrapped("  ", f"kept all the time: {', '.join(kept)}"))
     return lines or ["  The case states none."]

@@ -14,7 +14,7 @@ from harvest.model.estimate import search_batch
 from harvest.physics.arrays import FloatArray
 from harvest.quantities import format_quantity, unit_of
 from harvest.report.plots import BLUE, GREEN, VERMILION, new_figure
-from harvest.study.size import LIMITS, limit_of
+from harvest.study.limits import LIMITS, limit_of
 from harvest.study.sweep import SweepPlan, is_structure
 
 if TYPE_CHECKING:

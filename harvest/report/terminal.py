@@ -44,7 +44,7 @@ def title(case: Streams) -> str:
 
 
 def _count(number: int, noun: str) -> str:
-    return f"{number} {noun}" + "s" * (number != 1)
+    return f"{number:,} {noun}" + "s" * (number != 1)
 
 
 def stack_sentence(case: Case, answer: Estimate) -> str:

@@ -20,7 +20,8 @@ from harvest.model.reading import replace
 from harvest.model.study_sections import ALWAYS_ON
 from harvest.physics.arrays import BoolArray, FloatArray, IntArray, ObjectArray
 from harvest.study.duty_log import FLOWS, DutyLog, read_duty_log
-from harvest.study.size import LIMITS, SEARCH_CELLS, limit_of
+from harvest.study.limits import asks_without_load, bounded_results, broken_limits
+from harvest.study.size import SEARCH_CELLS
 from harvest.version import VERSION
 
 YEAR = 8760.0 * 3600.0
@@ -213,13 +214,13 @@ def answers(case: Case, values: Mapping[str, FloatArray], progress: Progress | N
     colder = ~still & (batch.number("hot.inlet_temperature") <= batch.number("cold.inlet_temperature"))
     always = case.duty.drives == ALWAYS_ON
     state = np.where(still, NO_FLOW, np.where(colder, NOT_HOTTER, ON))
-    found = {name: np.zeros(batch.cases) for name in (*POWERS, *CONDITIONS)}
+    found = {name: np.zeros(batch.cases) for name in {*POWERS, *CONDITIONS, *bounded_results(case)}}
     problem: ObjectArray = np.full(batch.cases, "", dtype=object)
     solved = np.flatnonzero(~still & (~colder | always))
     chunk = max(1, SEARCH_CELLS // (base.stack.rows * base.stack.segments))
     for first in range(0, len(solved), chunk):
         which = solved[first : first + chunk]
-        answer = search_batch(batch.take(which))
+        answer = search_batch(batch.take(which), without_load=asks_without_load(case))
         problem[which] = answer.problem
         for name in found.keys() & answer.scalars.keys():
             found[name][which] = answer.scalars[name]
@@ -324,9 +325,7 @@ def _balance(case: Case, log: DutyLog, course: Course, answer: Answers) -> DutyB
         hottest_face_temperature=extreme("hottest_face_temperature"),
         hottest_junction_temperature=extreme("hottest_junction_temperature"),
         time_beyond_limits={
-            name: float(time[on & (sign * results[result] > sign * limit_of(case, name))].sum())
-            for name, (result, sign) in LIMITS.items()
-            if result in CONDITIONS and np.isfinite(limit_of(case, name))
+            name: float(time[on & wrong].sum()) for name, wrong in broken_limits(case, results).items()
         },
         yearly_net_energy=year["yearly_net_energy"],
         yearly_time=year["yearly_time"],
@@ -386,6 +385,6 @@ def _rows(log: DutyLog, course: Course, answer: Answers) -> DutyRows:
     """Answers by reading."""
     has = course.of_reading >= 0
     place = np.where(has, course.of_reading, 0)
-    results = {name: np.where(has, numbers[place], np.nan) for name, numbers in answer.results.items()}
+    results = {name: np.where(has, answer.results[name][place], np.nan) for name in (*POWERS, *CONDITIONS)}
     problem = np.where(has, answer.problem[place], log.problem)
     return DutyRows(np.where(has, answer.state[place], NOT_COVERED), results, problem)
