@@ -84,8 +84,8 @@ def sweep(
         ]
     )
     if output is None:
-        write: Any = None if as_json or plot is not None else click.get_binary_stream("stdout").write
-        found = print_sweep(plan, write, **run)
+        standard_output = None if as_json or plot is not None else sys.stdout.buffer
+        found = print_sweep(plan, standard_output, **run)
     else:
         path = Path(output)
         if is_finished(plan, path, resume=resume):

@@ -22,7 +22,10 @@ from harvest.physics.fluids import FluidSpec, FluidTable, check_fluid, expansion
 RECIPE = (fluids, combustion, chebyshev, coolprop_source)
 """Modules that build a table: when one of them changes, tables on disk are built anew."""
 MOST_KEPT = 10_000
+MOST_WRITTEN = 500
+"""Tables that one process writes: a sweep over a composition makes thousands that nobody asks for again."""
 
+_written: set[Path] = set()
 _kept: dict[tuple[object, ...], FluidTable] = {}
 
 
@@ -67,8 +70,9 @@ def stored_table(
         table = _read(path, stated) if path else None
         if table is None:
             table = fluid_table(spec, pressure, lower, upper)
-            if path:
+            if path and len(_written) < MOST_WRITTEN:
                 _write(path, stated, table)
+                _written.add(path)
         if len(_kept) >= MOST_KEPT:
             _kept.clear()
         _kept[key] = table

@@ -6,10 +6,10 @@ import json
 import re
 import struct
 from collections import Counter
-from collections.abc import Callable, Generator, Mapping
+from collections.abc import Generator, Mapping
 from dataclasses import dataclass, field
 from pathlib import Path
-from typing import TYPE_CHECKING, Any
+from typing import IO, TYPE_CHECKING, Any
 
 import numpy as np
 
@@ -247,25 +247,25 @@ def write_sweep(
 
 def print_sweep(
     plan: SweepPlan,
-    write: Callable[[bytes], object] | None,
+    file: IO[bytes] | None,
     *,
     keep: tuple[str, ...] = (),
     jobs: int = 1,
     scheduler: str | None = None,
     progress: Progress | None = None,
 ) -> SweepFindings:
-    """Solve a sweep and give its CSV to `write` piece by piece; without `write`, only the findings are made."""
+    """Solve a sweep and write its CSV to `file` piece by piece; without one, only the findings are made."""
     table = sweep_table(plan, "")
     journal = Journal(None, {"run": table.about["run"]})
     try:
-        task = ChunkTask(plan, table, write is not None)
+        task = ChunkTask(plan, table, file is not None)
         run_chunks(task, plan.chunks, journal, jobs=jobs, scheduler=scheduler, progress=progress)
         found = _findings(plan, keep)
-        if write is not None:
-            write(csv_head(table).encode())
+        if file is not None:
+            file.write(csv_head(table).encode())
         for _, lines in _parts(plan, journal, found):
-            if write is not None:
-                write(lines)
+            if file is not None:
+                file.write(lines)
     finally:
         journal.close()
     return found

@@ -179,6 +179,8 @@ def _rising(first: FloatArray, second: FloatArray) -> tuple[FloatArray, FloatArr
 
 
 def _maps(plan: SweepPlan, across: list[str], values: dict[str, FloatArray], names: list[tuple[str, bool]]) -> Figure:
+    from matplotlib.ticker import MaxNLocator
+
     columns = min(len(names), 2)
     rows = -(-len(names) // columns)
     figure = new_figure(4.0 + 3.5 * columns, 1.0 + 3.6 * rows)
@@ -191,7 +193,7 @@ def _maps(plan: SweepPlan, across: list[str], values: dict[str, FloatArray], nam
 
     net = values["net_power"]
     lowest, highest = float(np.nanmin(net)), float(np.nanmax(net))
-    levels = np.linspace(lowest, highest if highest > lowest else lowest + 1.0, LEVELS)
+    levels = MaxNLocator(LEVELS).tick_values(lowest, highest if highest > lowest else lowest + 1.0)
     point = _design(plan, across)
     filled: Any = None
     for axes, group, (name, own) in zip(panels, range(len(names)), names, strict=False):

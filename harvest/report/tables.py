@@ -91,30 +91,23 @@ def csv_head(table: Table) -> str:
 
 def csv_rows(table: Table, columns: Columns) -> str:
     """Lines of a CSV file; numbers read back as the same numbers, empty where there is none."""
-    texts = [_texts(column, columns[column.name]) for column in table.columns]
-    return "".join([",".join(row) + "\n" for row in zip(*texts, strict=True)])
+    texts = [_texts(column, columns[column.name].tolist()) for column in table.columns]
+    return "\n".join([*map(",".join, zip(*texts, strict=True)), ""])
 
 
-def _texts(column: Column, values: Any) -> list[str]:
-    """Texts of a column; a number that stands there often is written once."""
-    if column.form == TEXT:
-        cells = {text: _cell(text) for text in set(values)}
-        return [cells[text] for text in values]
-    if len(values) > FEW and len(set(values[:FEW].tolist())) < FEW // 2:
-        several, places = np.unique(values, return_inverse=True)
-        words = np.array(_plain_texts(column, several), dtype=object)
-        written: list[str] = words[places].tolist()
-        return written
-    return _plain_texts(column, values)
+def _texts(column: Column, values: list[Any]) -> list[str]:
+    """Texts of a column; where many values are alike, each is written once."""
+    write: Any = {TEXT: _cell, FLAG: _flag, WHOLE: str, NUMBER: repr}[column.form]
+    if column.form == TEXT or len(set(values[:FEW])) < FEW // 2:
+        written = {value: write(value) for value in set(values)}
+        texts = list(map(written.__getitem__, values))
+    else:
+        texts = list(map(write, values))
+    return [text if text != "nan" else "" for text in texts] if column.form == NUMBER and "nan" in texts else texts
 
 
-def _plain_texts(column: Column, values: Any) -> list[str]:
-    if column.form == FLAG:
-        return ["true" if value else "false" for value in values]
-    if column.form == WHOLE:
-        return list(map(str, values.tolist()))
-    texts = list(map(repr, values.tolist()))
-    return [text if text != "nan" else "" for text in texts] if np.isnan(values).any() else texts
+def _flag(value: bool) -> str:
+    return "true" if value else "false"
 
 
 def _cell(text: str) -> str:

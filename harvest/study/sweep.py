@@ -29,7 +29,7 @@ from harvest.model.study_sections import MOST_COMBINATIONS
 from harvest.physics.arrays import FloatArray, IntArray, ObjectArray
 from harvest.version import VERSION
 
-CHUNK_CELLS = 50_000
+CHUNK_CELLS = 25_000
 """Rows times combinations that are solved at a time: few enough for the caches, and to share among processes."""
 CHUNK_CASES = 5_000
 MOST_STRUCTURES = 2_000
@@ -316,7 +316,8 @@ def _base(plan: SweepPlan, structure: dict[str, Any]) -> Case | str:
     numbers = [path for path, axis in plan.axes.items() if not is_structure(path, axis)]
     changes = {**dict.fromkeys(_without_use(plan, structure)), **structure}
     first = plan.at(np.zeros(1, dtype=np.int64))
-    absent = {path: first[path] for path in numbers if value_at(case, path) is None}
+    # a number that is not written in the case is written, so that it is judged whether it applies
+    absent = {path: first[path] for path in numbers if not _is_given(case, path)}
     spread = np.unique(np.linspace(0, plan.count - 1, MOST_TRIED).astype(np.int64))
     tried = plan.at(spread)
     said = ""
