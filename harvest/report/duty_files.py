@@ -27,17 +27,21 @@ def duty_table(case: Case, found: DutyBalance, command: str = "") -> tuple[Table
     log, rows = found.log, found.rows
     columns: dict[Column, Any] = {
         Column("line", "Line of the log.", form=WHOLE): log.lines,
-        Column("time", "Time from which the reading holds.", form=TEXT): list(map(log.stamp, range(len(log.lines)))),
+        Column("time", "Time from which the reading holds.", form=TEXT): np.array(
+            [log.stamp(reading) for reading in range(len(log.lines))], dtype=object
+        ),
         Column("duration", "Time for which the reading holds.", "s"): log.duration,
     }
     for path, values in log.values.items():
         columns[Column(path, DECLARATIONS[path].meaning, unit_of(DECLARATIONS[path].kind))] = values
-    columns[Column("state", "What the reading means for the stack.", form=TEXT)] = np.array(STATES)[rows.state].tolist()
+    columns[Column("state", "What the reading means for the stack.", form=TEXT)] = np.array(STATES, dtype=object)[
+        rows.state
+    ]
     for name, values in rows.results.items():
         kind, meaning = OWN_RESULTS.get(name) or (SCALARS[name]["kind"], SCALARS[name]["meaning"])
         columns[Column(name, meaning, unit_of(kind))] = values
     columns[Column("valid", "Whether the reading has an answer.", form=FLAG)] = rows.problem == ""
-    columns[Column("problem", "Why the reading has no answer.", form=TEXT)] = rows.problem.tolist()
+    columns[Column("problem", "Why the reading has no answer.", form=TEXT)] = rows.problem
     about = {
         "title": case.title,
         "source": f"harvest {found.version}",
