@@ -265,3 +265,10 @@ def test_the_report_tells_wiring_and_case_text_is_whole() -> None:
     assert 'try size.wiring = "search"' in " ".join(given_wiring.stdout.split())
     assert "as given" in given_wiring.stdout
     assert "strings_across" in case_text(size(load_case(JACKET, ["size.rows=[20]", SEARCH])).best_case)
+
+
+def test_blocks_of_a_driven_stack_that_cannot_be_built_are_a_reason_and_no_crash() -> None:
+    case = load_case(EXAMPLES / "workshop-water-blocks.toml", ["size.rows=[1, 2, 3, 4]", SEARCH])
+    found = size(case)
+    assert sum(found.choices_invalid.values()) > 0
+    assert found.arrangement.rows_count in (2, 4)

@@ -13,7 +13,7 @@ from harvest.model.case import DECLARATIONS, Case, Streams, nearest_field, value
 from harvest.physics.arrays import FloatArray, IntArray
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, eq=False)
 class StreamBatch:
     """The streams of a case and `varied`, SI numbers (cases,) by field path, that replace the base's.
 
@@ -56,7 +56,7 @@ class StreamBatch:
         return path in self.varied or value_at(self.base, path) is not None
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, eq=False)
 class Batch(StreamBatch):
     """A base case and the numbers in which designs differ from it; see `StreamBatch`."""
 

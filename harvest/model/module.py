@@ -25,7 +25,7 @@ SHORT_LEG = 1e-3
 """Length of a leg [m] below which its contacts count."""
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, eq=False, repr=False)
 class DescribedModule:
     """A module with where it comes from.
 

@@ -15,13 +15,12 @@ from harvest.model.batch import Batch
 from harvest.model.case import Case, case_hash
 from harvest.model.costs import building_cost
 from harvest.model.design import BETWEEN
-from harvest.model.estimate import drive_power_without_heat, search_batch
+from harvest.model.estimate import SEARCH_CELLS, drive_power_without_heat, search_batch
 from harvest.model.reading import replace
 from harvest.model.study_sections import ALWAYS_ON
 from harvest.physics.arrays import BoolArray, FloatArray, IntArray, ObjectArray
 from harvest.study.duty_log import FLOWS, DutyLog, read_duty_log
 from harvest.study.limits import asks_without_load, bounded_results, broken_limits
-from harvest.study.size import SEARCH_CELLS
 from harvest.version import VERSION
 
 YEAR = 8760.0 * 3600.0
@@ -208,19 +207,27 @@ def answers(case: Case, values: Mapping[str, FloatArray], progress: Progress | N
 
     Parameters: `case`; `values` in SI by field, (conditions,), where a flow of zero is a stream that stands.
     """
-    base, batch = _logged(case, values)
-    standing = {side: _stands(values, side, batch.cases) for side in ("hot", "cold")}
+    return switched_answers(*logged_batch(case, values), progress)
+
+
+def switched_answers(batch: Batch, standing: Mapping[str, BoolArray], progress: Progress | None = None) -> Answers:
+    """Answer a batch and switch its drives as its base says.
+
+    Parameters: `batch`, with some flow above zero where a side is `standing` (cases,), by "hot" and "cold".
+    """
+    base = batch.base
     still = standing["hot"] | standing["cold"]
     colder = ~still & (batch.number("hot.inlet_temperature") <= batch.number("cold.inlet_temperature"))
-    always = case.duty.drives == ALWAYS_ON
+    always = base.duty.drives == ALWAYS_ON
+    without_load = asks_without_load(base)
     state = np.where(still, NO_FLOW, np.where(colder, NOT_HOTTER, ON))
-    found = {name: np.zeros(batch.cases) for name in {*POWERS, *CONDITIONS, *bounded_results(case)}}
+    found = {name: np.zeros(batch.cases) for name in {*POWERS, *CONDITIONS, *bounded_results(base)}}
     problem: ObjectArray = np.full(batch.cases, "", dtype=object)
     solved = np.flatnonzero(~still & (~colder | always))
-    chunk = max(1, SEARCH_CELLS // (base.stack.rows * base.stack.segments))
+    chunk = max(1, int(SEARCH_CELLS / (batch.number("stack.rows").max() * base.stack.segments)))
     for first in range(0, len(solved), chunk):
         which = solved[first : first + chunk]
-        answer = search_batch(batch.take(which), without_load=asks_without_load(case))
+        answer = search_batch(batch.take(which), without_load=without_load)
         problem[which] = answer.problem
         for name in found.keys() & answer.scalars.keys():
             found[name][which] = answer.scalars[name]
@@ -235,8 +242,8 @@ def answers(case: Case, values: Mapping[str, FloatArray], progress: Progress | N
     return Answers(_switched(batch, found, state, always), state, problem)
 
 
-def _logged(case: Case, values: Mapping[str, FloatArray]) -> tuple[Case, Batch]:
-    """The case with the log's fields in place of their alternatives, and the batch of conditions.
+def logged_batch(case: Case, values: Mapping[str, FloatArray]) -> tuple[Batch, dict[str, BoolArray]]:
+    """Batch of conditions with the log's fields in place of their alternatives, and where each side stands.
 
     Where a stream stands the batch has some other flow, so that nothing is asked of a flow of zero.
     """
@@ -247,7 +254,8 @@ def _logged(case: Case, values: Mapping[str, FloatArray]) -> tuple[Case, Batch]:
         path: np.where(numbers > 0, numbers, typical[path]) if path in FLOWS else numbers
         for path, numbers in values.items()
     }
-    return base, Batch(base, len(next(iter(values.values()))), flowing)
+    batch = Batch(base, len(next(iter(values.values()))), flowing)
+    return batch, {side: _stands(values, side, batch.cases) for side in ("hot", "cold")}
 
 
 def _stands(values: Mapping[str, FloatArray], side: str, count: int) -> BoolArray:

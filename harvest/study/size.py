@@ -17,15 +17,13 @@ from harvest.model.batch import Batch
 from harvest.model.case import DECLARATIONS, Case
 from harvest.model.case_fields import MOST_MODULES
 from harvest.model.design import BETWEEN
-from harvest.model.estimate import Outcomes, estimate, search_batch
+from harvest.model.estimate import SEARCH_CELLS, Outcomes, estimate, search_batch
 from harvest.model.reading import replace
 from harvest.model.results import Estimate
 from harvest.physics.arrays import BoolArray, FloatArray, IntArray
 from harvest.study.limits import asks_without_load, bounded_results, broken_limits, limit_path
 from harvest.study.wirings import MOST_BLOCKS, WIRING, Wiring, even_blocks, groupings, wired, wirings
 
-SEARCH_CELLS = 200_000
-"""Rows times cases that are prepared and solved at a time, so that memory does not grow with the choices."""
 MOST_CHOICES = 2_000_000
 REFINED_POINTS = 5
 REFINEMENTS = 6

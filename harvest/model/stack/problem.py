@@ -28,7 +28,7 @@ def take_cases(item: Any, which: IntArray) -> Any:
     return item[..., which] if isinstance(item, np.ndarray) else item.take(which)
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, eq=False, repr=False)
 class StackSide:
     """One side of the stack; arrays (cases,).
 
@@ -66,7 +66,7 @@ class StackSide:
         return replace(self, **{name: take_cases(value, which) for name, value in self.__dict__.items()})
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, eq=False, repr=False)
 class Circuit:
     """How the modules of a stack are wired; arrays (cases,).
 
@@ -97,7 +97,7 @@ class Circuit:
         )
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, eq=False, repr=False)
 class Load:
     """What the stack feeds: a mode of `LOADS` with its number, (cases,): `resistance` [ohm] or `voltage` [V].
 
@@ -117,7 +117,7 @@ class Load:
         )
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, eq=False, repr=False)
 class StackProblem:
     """A batch of stacks of one structure; arrays (cases,).
 
