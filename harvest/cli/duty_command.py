@@ -75,8 +75,7 @@ def duty(
 
         write_figure(Path(plot), duty_figure(loaded.title, found))
     if as_json:
-        from harvest.report.documents import json_text
-        from harvest.report.duty_sheet import duty_document
+        from harvest.report.documents import duty_document, json_text
 
         click.echo(json_text(duty_document(found)))
     else:

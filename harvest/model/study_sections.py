@@ -53,6 +53,7 @@ class Limits:
 
 OBJECTIVES = {
     "net power": "the most net power",
+    "yearly energy": "the most net energy of a year over [duty] log",
     "fewest modules": "the fewest modules that give target_net_power",
     "cost per net watt": "the least cost of building over net power; needs [cost]",
     "cost per kilowatt-hour": "the least cost of a net kilowatt-hour over the years of use; needs [cost]",

@@ -1,15 +1,14 @@
-"""The report of a design over a log of its streams, as text and as JSON: the answer first."""
+"""The report of a design over a log of its streams, as text, the answer first."""
 
 from __future__ import annotations
 
 import math
 from collections.abc import Iterable
-from typing import TYPE_CHECKING, Any
+from typing import TYPE_CHECKING
 
 from harvest.model.case import Case
 from harvest.model.study_sections import DUTY_DRIVES
-from harvest.quantities import KINDS, format_quantity, significant, unit_of
-from harvest.report.documents import plain
+from harvest.quantities import KINDS, format_quantity, significant
 from harvest.report.layout import WIDTH, heading, pairs, table, wrapped
 from harvest.report.terminal import title
 from harvest.study.duty_log import LONGEST_STEPS, NOTES
@@ -17,44 +16,11 @@ from harvest.study.limits import limit_path
 
 if TYPE_CHECKING:
     from harvest.study.duty import DutyBalance, Extreme
-    from harvest.study.duty_log import DutyLog, LogNote
+    from harvest.study.duty_log import DutyLog
 
 SHARES = (0.0, 0.05, 0.25, 0.5, 0.75, 0.95, 1.0)
 MOST_NOTES = 5
 """Notes of one kind that the report tells one by one."""
-MOST_NOTES_IN_JSON = 1000
-DUTY_KINDS = {
-    **dict.fromkeys(
-        (
-            "covered_time",
-            "answered_time",
-            "time_on",
-            "time_off",
-            "time_without_answer",
-            "time_not_covered",
-            "time_beyond_limits",
-        ),
-        "duration",
-    ),
-    **dict.fromkeys(("yearly_time", "yearly_from_time"), "duration"),
-    **dict.fromkeys(
-        (
-            "generated_energy",
-            "converted_energy",
-            "hot_drive_energy",
-            "cold_drive_energy",
-            "auxiliary_energy",
-            "standby_energy",
-            "net_energy",
-            "yearly_net_energy",
-        ),
-        "energy",
-    ),
-    **dict.fromkeys(("mean_net_power", "net_power", "most_net_power"), "power"),
-    **dict.fromkeys(("hottest_face_temperature", "hottest_junction_temperature"), "temperature"),
-    "exceeded_share": "dimensionless",
-    "log.usual_step": "duration",
-}
 
 
 def hours(time: float) -> str:
@@ -87,7 +53,7 @@ def duty_report(case: Case, found: DutyBalance) -> str:
         wrapped(
             "",
             f"Net {kilowatt_hours(found.net_energy)} in {hours(found.answered_time)}, {_w(found.mean_net_power)} on "
-            f"average; in a year {kilowatt_hours(found.yearly_net_energy)}{_worth(found)}.",
+            f"average; in a year {kilowatt_hours(found.yearly_net_energy)}{worth(found)}.",
         ),
         wrapped(
             "",
@@ -126,7 +92,8 @@ def duty_report(case: Case, found: DutyBalance) -> str:
     return "\n".join(lines)
 
 
-def _worth(found: DutyBalance) -> str:
+def worth(found: DutyBalance) -> str:
+    """What a year's energy is worth and when it has paid the stack, as the end of a sentence; "" without prices."""
     text = ""
     if math.isfinite(found.yearly_value):
         text += f", worth {significant(found.yearly_value, 4)} {found.currency}"
@@ -206,26 +173,3 @@ def _rules(case: Case, found: DutyBalance) -> Iterable[str]:
     stated = "site.yearly_operation" not in case.assumed
     source = "the time in which the streams flow" if stated else "the time with an answer"
     yield f"The year has {hours(found.yearly_time)} like {source}, {hours(found.yearly_from_time)}."
-
-
-def duty_document(found: DutyBalance) -> dict[str, Any]:
-    """A design over a log: energies in J, times in s, and what was odd about the log."""
-    log = found.log
-    counts = {kind: sum(note.kind == kind for note in log.notes) for kind in NOTES}
-    return {
-        **plain(found),
-        "answered_time": found.answered_time,
-        "log": {
-            "label": log.label,
-            "usual_step": plain(log.usual_step),
-            "held_cells": log.held_cells,
-            "ignored": list(log.ignored),
-            "note_counts": {kind: count for kind, count in counts.items() if count},
-            "notes": [_note(note) for note in log.notes[:MOST_NOTES_IN_JSON]],
-        },
-        "units": {name: unit_of(kind) for name, kind in DUTY_KINDS.items()},
-    }
-
-
-def _note(note: LogNote) -> dict[str, Any]:
-    return {"line": note.line, "kind": note.kind, "text": note.text, "done": NOTES[note.kind]}

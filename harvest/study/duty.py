@@ -121,8 +121,8 @@ class DutyBalance:
     conditions: int
     version: str
     case_hash: str
-    log: DutyLog = field(compare=False)
-    rows: DutyRows = field(compare=False)
+    log: DutyLog = field(compare=False, repr=False)
+    rows: DutyRows = field(compare=False, repr=False)
 
     @property
     def answered_time(self) -> float:
@@ -140,16 +140,20 @@ def duty(
     conditions solved and conditions in all. Raises InputError and CaseError for the log, NoAnswerError where no reading
     has an answer.
     """
-    if log is None:
-        if case.duty.log is None:
-            raise InputError('duty.log: is missing; write [duty] and log = "log.csv", or give the log beside the case')
-        log = case.folder / case.duty.log
-    if not isinstance(log, DutyLog):
-        log = read_duty_log(case, log, strict=strict)
+    log = case_log(case, log, strict=strict)
     course = Course.of(log)
     if not len(course.duration):
         raise NoAnswerError(f"{log.label}: no reading is left that has a value of every column and lasts a time")
     return _balance(case, log, course, answers(case, course.values, progress))
+
+
+def case_log(case: Case, log: DutyLog | str | Path | None = None, *, strict: bool = False) -> DutyLog:
+    """A log as it was given, read where it is a file or text; by default the one that the case names."""
+    if isinstance(log, DutyLog):
+        return log
+    if log is None and case.duty.log is None:
+        raise InputError('duty.log: is missing; write [duty] and log = "log.csv", or give the log beside the case')
+    return read_duty_log(case, log or case.folder / str(case.duty.log), strict=strict)
 
 
 @dataclass(frozen=True, eq=False)
@@ -311,7 +315,7 @@ def _balance(case: Case, log: DutyLog, course: Course, answer: Answers) -> DutyB
         reading = int(course.first[place])
         return Extreme(float(results[name][place]), int(log.lines[reading]), log.stamp(reading))
 
-    year = _year(case, energy["net_power"], answered, float(time[told & (state != NO_FLOW)].sum()))
+    year = duty_year(case, energy["net_power"], answered, float(time[told & (state != NO_FLOW)].sum()))
     return DutyBalance(
         drives=case.duty.drives,
         covered_time=float(time.sum()),
@@ -370,7 +374,7 @@ def grouped_time(problem: ObjectArray, time: FloatArray) -> dict[str, float]:
     return dict(found.values())
 
 
-def _year(case: Case, net_energy: float, answered: float, flowing: float) -> dict[str, float]:
+def duty_year(case: Case, net_energy: float, answered: float, flowing: float) -> dict[str, float]:
     """Net energy of a year [J]: a year like the log, or one with the stated time in which the streams flow."""
     stated = "site.yearly_operation" not in case.assumed and flowing > 0
     year, source = (case.site.yearly_operation, flowing) if stated else (YEAR, answered)
