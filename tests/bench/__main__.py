@@ -2,7 +2,8 @@
 
 Solver: 10,000 random designs of 20 rows against one evaluation of both streams' properties and films over the same
 arrays; the time a design with the number of designs. Checks: what they add to a batch of estimates. Script: what an
-engineer would write, one design at a time. Duty profile: a year of hours, reading included, against the solver. Start-up: the commands against importing what they cannot do without.
+engineer would write, one design at a time. Duty profile: a year of hours,
+reading included, against the solver. Start-up: the commands against importing what they cannot do without.
 """
 
 from __future__ import annotations
