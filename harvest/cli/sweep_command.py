@@ -58,7 +58,7 @@ def sweep(
     if resume and output is None:
         raise InputError("--resume: goes on with an output; give -o FILE too")
     axes = dict(map(varied_field, vary))
-    varied = with_axes(loaded, axes, sample=sample, sequence=sequence, seed=seed, label="--vary")
+    varied = with_axes(loaded, axes, sample=sample, sequence=sequence, seed=seed, option="--vary")
     plan = planned(varied, full=full)
     from harvest.report.sweep_files import is_finished, print_sweep, sweep_table, write_sweep
 

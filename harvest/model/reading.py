@@ -189,16 +189,19 @@ def _from(
     return case
 
 
-def replace(case: AnyStreams, changes: Mapping[str, Any], *, label: str = "case") -> AnyStreams:
+def replace(
+    case: AnyStreams, changes: Mapping[str, Any], *, label: str = "case", as_written: bool = False
+) -> AnyStreams:
     """Make a validated case, or streams, with other values, by path: SI numbers, texts with units, or pint quantities.
 
-    None takes a value away; `label` names in faults where the changes come from. Raises CaseError with all faults.
+    None takes a value away; `label` names in faults where the changes come from; with `as_written` they are as in a
+    case file, where a number needs its unit. Raises CaseError with all faults.
     """
     document = copy.deepcopy(case.given)
     faults = []
     for path, value in changes.items():
         try:
-            _put(document, path, _as_typed(path, value))
+            _put(document, path, value if as_written else _as_typed(path, value))
         except QuantityError as error:
             faults.append(f"{path}: {error}")
         except InputError as error:
@@ -579,8 +582,9 @@ class _Reading:
         single = declaration.form in NUMBERS and not any(isinstance(each, list | tuple) for each in raw)
         read = self.single if single else self.value
         values = tuple(read(path, declaration, each) for each in raw)
-        if twice := [each for place, each in enumerate(raw) if values[place] in values[:place]]:
-            raise QuantityError(f"has {shown(twice[0])} twice; give each value once")
+        if len(set(values)) < len(values):
+            twice = next(each for place, each in enumerate(raw) if values[place] in values[:place])
+            raise QuantityError(f"has {shown(twice)} twice; give each value once")
         return SweepAxis(values, () if single else tuple(map(_label, raw)))
 
     def single(self, path: str, declaration: Declaration, raw: Any) -> float:
@@ -701,7 +705,7 @@ def _label(raw: Any) -> str:
 
 def _with_fields_apart(size: Mapping[str, Any]) -> Mapping[str, Any]:
     """Put the whole names of fields in a sizing or a sweep together under `fields`."""
-    apart = {name: axis for name, axis in size.items() if "." in str(name)}
+    apart = {name: axis for name, axis in size.items() if "." in str(name) or name in DECLARATIONS}
     if not apart or "fields" in size:
         return size
     return {**{name: each for name, each in size.items() if name not in apart}, "fields": apart}

@@ -31,7 +31,7 @@ _INSTEAD = {
     "ambient_pressure": ", and log the absolute hot.pressure and cold.pressure",
     "standard_volume_flow": ", and log the mass_flow",
 }
-FIXED = ("site.ambient_pressure", "hot.circuit_flow", "cold.circuit_flow")
+FIXED = ("site.ambient_pressure", "electrical.blocking_diode_drop", "hot.circuit_flow", "cold.circuit_flow")
 """Fields that change others of the case, which would not follow."""
 
 NOTES = {

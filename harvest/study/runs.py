@@ -52,15 +52,19 @@ class Journal:
             self._file: IO[bytes] = tempfile.TemporaryFile() if path is None else path.open("a+b")  # noqa: SIM115
         except OSError as error:
             raise InputError(f"{path}: cannot be written ({error.strerror})") from None
-        if path is not None:
-            _lock(self._file, path)
-        self._file.seek(0)
-        line = self._file.readline()
-        if line.endswith(b"\n"):
-            self._go_on(line)
-        else:
-            self._file.truncate(0)
-            self._write(json.dumps(identity).encode() + b"\n")
+        try:
+            if path is not None:
+                _lock(self._file, path)
+            self._file.seek(0)
+            line = self._file.readline()
+            if line.endswith(b"\n"):
+                self._go_on(line)
+            else:
+                self._file.truncate(0)
+                self._write(json.dumps(identity).encode() + b"\n")
+        except BaseException:
+            self._file.close()
+            raise
 
     def _go_on(self, line: bytes) -> None:
         """Find the chunks that are whole."""
@@ -94,7 +98,8 @@ class Journal:
         try:
             self._file.write(content)
             self._file.flush()
-            getattr(os, "fdatasync", os.fsync)(self._file.fileno())
+            if self.path is not None:
+                getattr(os, "fdatasync", os.fsync)(self._file.fileno())
         except OSError as error:
             raise InputError(f"{self.path or 'temporary file'}: cannot be written ({error.strerror})") from None
 

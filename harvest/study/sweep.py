@@ -38,6 +38,7 @@ MOST_TRIED = 64
 STRUCTURAL = frozenset(
     {
         "site.ambient_pressure",  # gauge pressures and defaults are made of it when a case is read
+        "electrical.blocking_diode_drop",  # one diode in a batch sends all its cases another way to the same answer
         "stack.segments",
         "module.minimum_temperature",
         "module.maximum_temperature",
@@ -45,7 +46,7 @@ STRUCTURAL = frozenset(
         "module.figure_of_merit",
     }
 )
-"""Numbers that a batch takes from its base case, so that each value of them is a structure of its own."""
+"""Numbers that belong to the base case of a batch, so that each value of them is a structure of its own."""
 
 WARMEST_COLD_FACE = "warmest_cold_face_temperature"
 _FACE = {"kind": "temperature", "meaning": "Highest cold face temperature at the chosen load."}
@@ -218,16 +219,19 @@ def with_axes(
     sample: int | None = None,
     sequence: str | None = None,
     seed: int | None = None,
-    label: str = "case",
+    option: str | None = None,
 ) -> Case:
-    """Return a case with further fields, or other values, in its [sweep]; `label` says in faults where they come from.
+    """Return a case with further fields, or other values, in its [sweep].
 
-    An axis is a list, an array of SI numbers, or a mapping with from, to and points or step. Raises CaseError.
+    An axis is a list, an array of SI numbers, or a mapping with from, to and points or step. With `option`, what gave
+    the axes is named in faults and they are as in a case file, where a number needs its unit. Raises CaseError.
     """
     settings = {"sample": sample, "sequence": sequence, "seed": seed}
     changes = {f"sweep.{path}": axis for path, axis in (axes or {}).items()}
     changes |= {f"sweep.{name}": value for name, value in settings.items() if value is not None}
-    return replace(case, changes, label=label) if changes else case
+    if not changes:
+        return case
+    return replace(case, changes, label=option or "case", as_written=option is not None)
 
 
 def varied_field(text: str) -> tuple[str, Any]:

@@ -1,4 +1,6 @@
-"""Speeds beside their yardsticks, measured in one run: `python -m tests.bench`, or the names of some parts after it.
+"""Speeds beside their yardsticks, measured in one run: `python -m tests.bench`, or some parts of it.
+
+Parts are solver, checks, sizing, duty_profile, sweeping, start_up and script.
 
 Solver: 10,000 random designs of 20 rows against one evaluation of both streams' properties and films over the same
 arrays; the time a design with the number of designs. Checks: what they add to a batch of estimates. Script: what an
@@ -35,6 +37,7 @@ from harvest.study.duty_log import read_duty_log
 from harvest.study.size import size
 from tests.bench.baseline import DEMO_DESIGNS, solve_plainly
 from tests.bench.random_designs import random_batch
+from tests.bench.sweeping import sweeping
 from tests.independent.stack import Load as ScriptLoad
 from tests.translation import case_text
 
@@ -247,6 +250,6 @@ def start_up() -> None:
 
 
 if __name__ == "__main__":
-    for part in (solver, checks, sizing, duty_profile, start_up, script):
+    for part in (solver, checks, sizing, duty_profile, sweeping, start_up, script):
         if len(sys.argv) == 1 or part.__name__ in sys.argv[1:]:
             part()
