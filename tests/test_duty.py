@@ -355,6 +355,19 @@ def test_the_autumn_night(
     assert noted(log) == notes
 
 
+def test_a_log_that_runs_backwards_is_read_from_its_end(jacket: Case) -> None:
+    case = replace(jacket, {"duty.time_zone": "Europe/Berlin"})
+    stamps = ["01:30", "02:00", "02:30", "02:00", "02:30", "03:00"]
+    rows = [(f"2026-10-25T{stamp}", 80 + i) for i, stamp in enumerate(stamps)]
+    header = "time, hot.inlet_temperature [degC]"
+    ahead, back = (read_duty_log(case, written(each, header)) for each in (rows, rows[::-1]))
+    np.testing.assert_array_equal(back.time[::-1], ahead.time)
+    np.testing.assert_array_equal(back.duration[::-1], ahead.duration)
+    assert noted(back) == [(2, "out of order"), (4, "clock changed")]
+    with pytest.raises(CaseError, match="0 readings are left"):
+        read_duty_log(case, written([("x", 80), ("y", 81)], header))
+
+
 @pytest.mark.parametrize("zone", ["Europe/Berlin", "America/New_York", "Australia/Lord_Howe", "Asia/Kolkata"])
 def test_a_year_on_a_local_clock_has_all_its_hours(zone: str) -> None:
     """Against the standard library: stamps of every half hour in UTC, shown by the zone's clock without offset."""
@@ -398,7 +411,7 @@ def test_an_unknown_zone_is_refused(jacket: Case) -> None:
         (", 80, 70", "unreadable", '"" is no time stamp'),
         ("2026-03-02T02:00+01:00, 80, 70", "unreadable", "has an offset, and the first has none"),
         ("2026-03-02T01:00, 80, 70", "same time", "the same as on line 3"),
-        ("2026-03-02T00:30, 80, 70", "out of order", "earlier than on a line above"),
+        ("2026-03-02T00:30, 80, 70", "out of order", "earlier than a reading before it"),
     ],
 )
 def test_a_bad_reading_is_told_by_its_line(jacket: Case, row: str, kind: str, text: str) -> None:

@@ -258,12 +258,15 @@ class _Reading:
     def in_order(self, time: FloatArray, is_clock: bool) -> IntArray:
         """Readings that count, in the order of their times; none stands at the time of another."""
         used = np.flatnonzero(self.problem == "")
+        if len(used) > 1 and np.median(np.diff(time[used])) < 0:
+            self.note(int(used[0]), "out of order", "time: the log runs backwards")
+            used = used[::-1]
         if is_clock:
             self.leave_out_repeated_hours(time, used)
-            used = np.flatnonzero(self.problem == "")
+            used = used[self.problem[used] == ""]
         late = time[used] < np.maximum.accumulate(time[used])
         for reading in used[late].tolist():
-            self.note(reading, "out of order", "time: earlier than on a line above")
+            self.note(reading, "out of order", "time: earlier than a reading before it")
         order: IntArray = used[np.argsort(time[used], kind="stable")]
         again = np.diff(time[order], prepend=-np.inf) == 0
         firsts = np.maximum.accumulate(np.where(again, 0, np.arange(len(order))))

@@ -76,7 +76,10 @@ def read_time_stamps(cells: Sequence[str], zone_name: str = "") -> TimeStamps:
             for each in np.flatnonzero(missing).tolist()
         ]
         repeated = before > after
-        offset = np.where(missing, np.nan, np.where(_second_pass(clock, repeated), after, before))
+        backwards = known.sum() > 1 and np.median(np.diff(clock[known])) < 0
+        along = slice(None, None, -1) if backwards else slice(None)
+        second = _second_pass(clock[along], repeated[along])[along]
+        offset = np.where(missing, np.nan, np.where(second, after, before))
     return TimeStamps(clock - offset, offset, repeated, tuple(sorted(faults)))
 
 
