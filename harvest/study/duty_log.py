@@ -27,12 +27,13 @@ MOST_SAID = 20
 FLOWS = tuple(f"{side}.{flow}" for side in ("hot", "cold") for flow in ("mass_flow", "volume_flow", "fuel_flow"))
 """Fields that may be zero in a log: the stream stands."""
 SIDES = ("hot.", "cold.", "site.", "electrical.")
-_INSTEAD = {
+FIXED = ("site.ambient_pressure", "electrical.blocking_diode_drop")
+"""Numbers that a case is made of when it is read, so that they are the same in every reading."""
+INSTEAD = {
     "ambient_pressure": ", and log the absolute hot.pressure and cold.pressure",
     "standard_volume_flow": ", and log the mass_flow",
 }
-FIXED = ("site.ambient_pressure", "electrical.blocking_diode_drop", "hot.circuit_flow", "cold.circuit_flow")
-"""Fields that change others of the case, which would not follow."""
+"""What to log in place of such fields, by the last part of their names."""
 
 NOTES = {
     "unreadable": "left out",
@@ -148,7 +149,7 @@ def _raise_header_faults(table: MeasurementTable) -> None:
     fixed = [name for name in (each.partition("[")[0].strip() for each in table.ignored) if name in DECLARATIONS]
     if fixed:
         said = "cannot change in a log; leave the column out"
-        raise CaseError([f"{table.label}: {name}: {said}{_INSTEAD.get(name.partition('.')[2], '')}" for name in fixed])
+        raise CaseError([f"{table.label}: {name}: {said}{INSTEAD.get(name.partition('.')[2], '')}" for name in fixed])
     times = [name for name in ("time", "hours") if name in table.kinds]
     if len(times) != 1:
         said = "missing; write time, time [h], or hours [h] in a table of bins" if not times else "stands beside hours"
