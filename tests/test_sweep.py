@@ -101,6 +101,41 @@ def test_every_number_gives_what_single_cases_give(name: str) -> None:
     assert tried > 60
 
 
+@pytest.mark.parametrize(
+    ("changes", "axes"),
+    [
+        ({}, {"hot.duct.fin_pitch": [1e-3, 7e-3], "hot.duct.fin_thickness": [5e-4, 1e-3, 2e-3]}),
+        ({}, {"stack.columns": [3, 6, 3000], "stack.layers": [4, 600], "electrical.strings_across": [2, 3]}),
+        ({}, {"stack.row_pitch": [0.04, 0.046], "hot.duct.width": [0.1, 0.2]}),
+        ({}, {"hot.duct.faces": [1, 2], "cold.duct.faces": [1, 2], "stack.layers": [1, 2, 3, 4]}),
+        ({}, {"hot.mass_flow": [0.05, 0.09], "electrical.layers_in_series": [1, 2, 3]}),
+        ({"hot.duct.connection_diameter": None}, {"hot.duct.connection_loss_coefficient": [0.0, 2.0]}),
+        (
+            {"hot.duct.wall_thickness": None, "hot.duct.wall_conductivity": None},
+            {"hot.duct.wall_thickness": [0.0, 2e-3]},
+        ),
+    ],
+)
+def test_what_a_single_case_refuses_has_no_answer(changes: dict[str, Any], axes: dict[str, list[float]]) -> None:
+    """Whichever of the combinations comes first, and although no other is refused."""
+    if "hot.duct.connection_diameter" in changes:
+        changes = {**changes, "hot.duct.connection_loss_coefficient": None}
+    case = replace(load_case(EXHAUST), changes)
+    for backwards in (False, True):
+        given = {path: values[::-1] if backwards else values for path, values in axes.items()}
+        found = solved(planned(with_axes(case, given)))
+        refused = []
+        for place, chosen in enumerate(itertools.product(*given.values())):
+            try:
+                single = search_batch(Batch(replace(case, dict(zip(given, chosen, strict=True)))))
+                refused.append(bool(single.problem[0]))
+            except CaseError:
+                refused.append(True)
+                assert found.problem[place], chosen
+        assert any(refused) and not all(refused)
+        assert [bool(problem) for problem in found.problem] == refused
+
+
 def test_a_grid_runs_through_all_values_in_order() -> None:
     case = load_case(EXHAUST)
     axes: dict[str, Any] = {"hot.fuel": ["diesel", "methane"], "hot.mass_flow": [0.07, 0.09], "stack.layers": [4, 6, 8]}
@@ -269,7 +304,10 @@ def test_forms_of_an_axis() -> None:
     ("text", "message"),
     [
         ("hot.mas_flow=0.1 kg/s, 0.2 kg/s", "sweep.hot.mas_flow: unknown field; did you mean hot.mass_flow?"),
-        ("hot=1, 2", "sweep.hot: is a section; vary one of its fields"),
+        (
+            "hot=1, 2",
+            'sweep.hot: is a section; write the whole name of one of its fields in quotes, such as "hot.fluid"',
+        ),
         ("title=a, b", "changes no result"),
         ("limits.back_pressure=1 kPa, 2 kPa", "a limit changes no result"),
         ("module.generator_rating.matched_power=1 W, 2 W", "write each module as a record and vary module.use"),

@@ -679,7 +679,8 @@ def _swept(path: str) -> Declaration:
     if declaration is None:
         raise QuantityError(f"unknown field; {nearest_field(path[:60])}")
     if declaration.section is not None:
-        raise QuantityError(f'is a section; vary one of its fields, such as "{path}.{_first_field(declaration)}"')
+        example = f"{path}.{_first_field(declaration)}"
+        raise QuantityError(f'is a section; write the whole name of one of its fields in quotes, such as "{example}"')
     if DECLARATIONS.get(path.rpartition(".")[0], declaration).form == "tables":
         raise QuantityError("stands in a list of tables; write each module as a record and vary module.use")
     if path.startswith("limits."):

@@ -299,10 +299,10 @@ def sweep(
 
     Parameters: `axes`, values by field beside those in [sweep] of the case: lists, arrays of SI numbers, or mappings
     with from, to and points or step; `sample`, how many combinations to draw, by `sequence` ("Sobol" or "Halton") and
-    `seed`; `full`, all results and checks of an estimate; `jobs`, processes, for which a script needs the usual guard of
-    its main part (`if __name__ == "__main__"`); `progress`, told how many of the chunks
-    are done. A grid has its fields as dimensions; a sample has `combination`. A combination without an answer has
-    `valid` false, says why in `problem`, and is NaN. Raises CaseError or InputError for what cannot be swept.
+    `seed`; `full`, all results and checks of an estimate; `jobs`, processes, for which a script needs the usual guard
+    of its main part; `progress`, told how many of the chunks are done. A grid has its fields as dimensions, a sample
+    `combination`. A combination without an answer has `valid` false, says why in `problem`, and is NaN. Raises
+    CaseError or InputError for what cannot be swept.
     """
     plan = planned(with_axes(case, axes, sample=sample, sequence=sequence, seed=seed), full=full)
     table = sweep_table(plan, "")

@@ -173,11 +173,9 @@ def write_netcdf(path: Path, table: Table, parts: Iterable[Columns]) -> None:
         raise InputError(f"{path}: {table.rows:,} rows are too many for NetCDF-3; write .parquet or .csv")
     inside = [column for column in table.columns if column.name not in table.dimensions]
     types = {NUMBER: "f8", WHOLE: "i4", FLAG: "i1", TEXT: "i4"}
-    with whole_file(path) as temporary:
-        file: Any = netcdf_file(temporary, "w", version=2)
-        for name, text in table.about.items():
-            setattr(file, name, text)
-        file.Conventions = CONVENTIONS
+    with whole_file(path) as temporary, netcdf_file(temporary, "w", version=2) as opened:
+        file: Any = opened
+        _add_attributes(file, table)
         for name, length in zip(table.axes, table.shape, strict=True):
             file.createDimension(name, length)
         named = {column.name: column for column in table.columns}
@@ -200,7 +198,12 @@ def write_netcdf(path: Path, table: Table, parts: Iterable[Columns]) -> None:
         for name, known in numbers.items():
             variables[name].comment = f"number of a text in {name}_text, counted from 0"
             _add_texts(file, f"{name}_text", f"{name}_number", list(known) or [""])
-        file.close()
+
+
+def _add_attributes(file: Any, table: Table) -> None:
+    for name, text in table.about.items():
+        setattr(file, name, text)
+    file.Conventions = CONVENTIONS
 
 
 def write_table(path: Path, table: Table, columns: Columns) -> None:

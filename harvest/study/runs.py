@@ -10,7 +10,11 @@ import json
 import os
 import pickle
 import struct
+import sys
 import tempfile
+import threading
+import time
+import warnings
 import zlib
 from collections.abc import Callable, Generator, Iterable
 from pathlib import Path
@@ -127,10 +131,12 @@ def _lock(file: IO[bytes], path: Path) -> None:
         import fcntl
     except ImportError:
         return
-    try:
-        fcntl.flock(file, fcntl.LOCK_EX | fcntl.LOCK_NB)
-    except OSError:
-        raise InputError(f"{path}: another run is writing it; wait for it or stop it") from None
+    for patience in (0.1, 0.3, 0.6):  # processes of a killed run end a moment after it
+        with contextlib.suppress(OSError):
+            fcntl.flock(file, fcntl.LOCK_EX | fcntl.LOCK_NB)
+            return
+        time.sleep(patience)
+    raise InputError(f"{path}: another run is writing it; wait for it or stop it")
 
 
 def run_chunks(
@@ -164,14 +170,14 @@ def run_chunks(
 
 def _on_processes(task: Task, wanted: list[int], jobs: int) -> Results:
     """Results of own processes in any order; when one is killed all are begun anew with what is still to do."""
-    import multiprocessing
-
     work, left, breaks = _packed(task), dict.fromkeys(wanted), 0
     while left:
-        pool = concurrent.futures.ProcessPoolExecutor(
-            jobs, multiprocessing.get_context("spawn"), initializer=_begin_process
-        )
+        pool = concurrent.futures.ProcessPoolExecutor(jobs, _process_context(), initializer=_begin_process)
         try:
+            with warnings.catch_warnings():
+                # newer Pythons warn of forking beside threads, and those of the linear algebra are idle
+                warnings.simplefilter("ignore", DeprecationWarning)
+                pool.submit(os.getpid)
             for index, content in _completed(pool, work, list(left), AHEAD * jobs):
                 del left[index]
                 breaks = 0
@@ -185,6 +191,14 @@ def _on_processes(task: Task, wanted: list[int], jobs: int) -> Results:
                 ) from None
         finally:
             pool.shutdown(wait=True, cancel_futures=True)
+
+
+def _process_context() -> Any:
+    """Way to begin a process: a copy that has everything loaded already, where that is safe, or else a new one."""
+    import multiprocessing
+
+    alone = sys.platform == "linux" and threading.active_count() == 1
+    return multiprocessing.get_context("fork" if alone else "spawn")
 
 
 def _on_scheduler(task: Task, wanted: list[int], address: str) -> Results:
@@ -262,7 +276,6 @@ def _begin_process() -> None:
     """Leave the interrupt key to the first process, and end with it even when it is killed."""
     import multiprocessing
     import signal
-    import threading
 
     signal.signal(signal.SIGINT, signal.SIG_IGN)
     first = multiprocessing.parent_process()

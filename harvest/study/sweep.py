@@ -149,8 +149,8 @@ class SweepPlan:
             if isinstance(base, str):
                 problem[which] = base
                 continue
-            batch = Batch(base, len(which), {path: number[which] for path, number in varied.items()})
             try:
+                batch = Batch(base, len(which), {path: number[which] for path, number in varied.items()})
                 found = _full(batch) if self.full else _lean(batch)
             except InputError as error:
                 problem[which] = str(error)
