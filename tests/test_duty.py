@@ -467,6 +467,7 @@ def test_thousands_of_bad_readings_make_a_short_report(jacket: Case) -> None:
     lines = hourly([80 if i % 2 else "bad" for i in range(8000)])
     result = run("duty", str(JACKET), "-", text=lines)
     assert result.exit_code == 0
+    assert "The log has 4,000 odd readings" in result.stdout.splitlines()[5]
     assert "unreadable, 4,000 times: left out" in result.stdout
     assert f"and {4000 - MOST_NOTES:,} more, the last on line 8000" in result.stdout
     assert len(result.stdout.splitlines()) < 80
@@ -586,6 +587,7 @@ def test_the_report_answers_first(tmp_path: Path) -> None:
     assert result.exit_code == 0
     lines = result.stdout.splitlines()
     assert lines[3].startswith("Net ") and "kWh in 6.000 h" in lines[3]
+    assert "odd readings" not in result.stdout
     assert "no answer 1.000 h" in result.stdout and "holds until the next one, 3.000 h at most" in result.stdout
 
 

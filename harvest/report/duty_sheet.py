@@ -45,6 +45,7 @@ def duty_report(case: Case, found: DutyBalance) -> str:
     """The report of a design over a log."""
     name = title(case)
     off = sum(found.time_off.values())
+    odd = bool(found.log.notes)
     unanswered = sum(found.time_without_answer.values())
     lines = [
         name,
@@ -60,6 +61,7 @@ def duty_report(case: Case, found: DutyBalance) -> str:
             f"On {hours(found.time_on)}, off {hours(off)}; no answer {hours(unanswered)}, not covered by the log "
             f"{hours(found.time_not_covered)}.",
         ),
+        *([f"The log has {len(found.log.notes):,} odd readings; what was done with them stands below."] * odd),
         heading("Energy"),
         *pairs(
             [
