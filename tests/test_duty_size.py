@@ -203,3 +203,19 @@ def test_the_shipped_week_is_sized_by_its_log() -> None:
     assert found.objective == "yearly energy" and found.duty is not None
     assert found.duty.balance.log.label.endswith("genset-week.csv")
     assert found.duty.balance.yearly_net_energy > 0
+
+
+def test_wirings_are_searched_over_a_log_too() -> None:
+    log = (
+        "hours [h], hot.inlet_temperature [degC], hot.mass_flow [kg/s]\n2000, 440, 0.09\n3000, 330, 0.06\n1000, 60, 0\n"
+    )
+    axes = ["size.rows=[6]", "size.columns=[3]", "size.layers=[4]", 'size.objective="yearly energy"']
+    given, searched = (
+        size(load_case(EXAMPLES / "genset-exhaust.toml", [*axes, f'size.wiring="{wiring}"']), log=log)
+        for wiring in ("as given", "search")
+    )
+    assert given.duty is not None and searched.duty is not None
+    assert searched.duty.balance.net_energy >= given.duty.balance.net_energy * (1 - 1e-12)
+    again = duty(searched.best_case, log)
+    assert again.net_energy == searched.duty.balance.net_energy
+    assert searched.arrangement.net_power == pytest.approx(again.mean_net_power, rel=1e-12)
