@@ -8,18 +8,18 @@ from typing import Any
 import numpy as np
 
 from harvest.model.case import DECLARATIONS, Case
-from harvest.model.results import SCALARS
+from harvest.model.results import OF_SEARCHES, SCALARS
 from harvest.quantities import unit_of
 from harvest.report.tables import FLAG, TEXT, WHOLE, Column, Table, write_table
 from harvest.study.duty import STATES, DutyBalance
 
-OWN_RESULTS = {
-    "auxiliary_power": ("power", "Power of the auxiliaries."),
-    "standby_power": ("power", "Power that the converter takes always."),
-    "hottest_junction_temperature": ("temperature", "Highest hot junction temperature at the chosen load."),
-    "warmest_cold_face_temperature": ("temperature", "Highest cold face temperature at the chosen load."),
+RESULTS: dict[str, Any] = {
+    **SCALARS,
+    **OF_SEARCHES,
+    "auxiliary_power": {"kind": "power", "meaning": "Power of the auxiliaries."},
+    "standby_power": {"kind": "power", "meaning": "Power that the converter takes always."},
 }
-"""Results that an estimate has not by these names, with their kind and meaning."""
+"""Kind and meaning of each result."""
 
 
 def duty_table(case: Case, found: DutyBalance, command: str = "") -> tuple[Table, dict[str, Any]]:
@@ -38,8 +38,7 @@ def duty_table(case: Case, found: DutyBalance, command: str = "") -> tuple[Table
         rows.state
     ]
     for name, values in rows.results.items():
-        kind, meaning = OWN_RESULTS.get(name) or (SCALARS[name]["kind"], SCALARS[name]["meaning"])
-        columns[Column(name, meaning, unit_of(kind))] = values
+        columns[Column(name, RESULTS[name]["meaning"], unit_of(RESULTS[name]["kind"]))] = values
     columns[Column("valid", "Whether the reading has an answer.", form=FLAG)] = rows.problem == ""
     columns[Column("problem", "Why the reading has no answer.", form=TEXT)] = rows.problem
     about = {

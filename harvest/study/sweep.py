@@ -24,7 +24,7 @@ from harvest.model.checks import FAIL, WARN
 from harvest.model.design import BETWEEN
 from harvest.model.estimate import SEARCHED, estimate_batch, search_batch
 from harvest.model.reading import NUMBERS, replace
-from harvest.model.results import SCALARS
+from harvest.model.results import OF_SEARCHES, SCALARS
 from harvest.model.study_sections import MOST_COMBINATIONS
 from harvest.physics.arrays import FloatArray, IntArray, ObjectArray
 from harvest.version import VERSION
@@ -49,9 +49,8 @@ STRUCTURAL = frozenset(
 """Numbers that belong to the base case of a batch, so that each value of them is a structure of its own."""
 
 WARMEST_COLD_FACE = "warmest_cold_face_temperature"
-_FACE = {"kind": "temperature", "meaning": "Highest cold face temperature at the chosen load."}
-RESULTS: dict[str, Any] = {name: SCALARS.get(name, _FACE) for name in SEARCHED}
-FULL_RESULTS: dict[str, Any] = {**SCALARS, WARMEST_COLD_FACE: _FACE}
+RESULTS: dict[str, Any] = {name: {**SCALARS, **OF_SEARCHES}[name] for name in SEARCHED}
+FULL_RESULTS: dict[str, Any] = {**SCALARS, WARMEST_COLD_FACE: OF_SEARCHES[WARMEST_COLD_FACE]}
 CHECK_TEXTS = {
     "failed_checks": "Names of the checks that fail, with semicolons between them.",
     "warned_checks": "Names of the checks that warn, with semicolons between them.",
