@@ -93,6 +93,9 @@ def test_every_number_gives_what_single_cases_give(name: str) -> None:
                 continue
             assert not found.problem[place], (path, values[place], found.problem[place])
             for result, expected in single.scalars.items():
+                if result not in found.numbers:  # costs without prices
+                    assert np.isnan(expected).all()
+                    continue
                 got = found.numbers[result][place]
                 # sums along the rows of one case alone run in another order than those of many side by side
                 near = pytest.approx(expected[0], rel=1e-12, abs=1e-12, nan_ok=True)
@@ -242,6 +245,24 @@ def test_a_whole_estimate_has_all_results_and_names_its_checks() -> None:
         coldest = single.rows.cold_face_temperature.max()
         assert found.numbers["warmest_cold_face_temperature"][place] == pytest.approx(coldest, rel=1e-12)
     assert "back pressure" in found.texts["failed_checks"][2]
+
+
+def test_prices_and_results_without_load_are_there_where_a_case_asks_for_them() -> None:
+    case = load_case(EXAMPLES / "bakery-flue.toml", ['sweep.hot.inlet_temperature=["260 degC"]'])
+    found = solved(planned(with_axes(case, {"hot.duct.gap": [0.05, 0.07], "cost.module": [5.0, 14.0]})))
+    for place, (gap, price) in enumerate(itertools.product((0.05, 0.07), (5.0, 14.0))):
+        single = estimate(replace(case, {"cost.module": price, "hot.duct.gap": gap}))
+        for name in ("building_cost", "payback_years", "open_circuit_face_temperature"):
+            near = pytest.approx(getattr(single, name), rel=1e-12, nan_ok=True)
+            assert found.numbers[name][place] == near, name
+    assert np.isfinite(found.numbers["highest_open_circuit_voltage"]).all()
+    bare = planned(with_axes(load_case(EXHAUST), {"hot.mass_flow": [0.08]}))
+    assert not {"building_cost", "highest_open_circuit_voltage"} & {*bare.results}
+    cheap, dear = (
+        planned(with_axes(replace(case, {"cost.module": price}), {"hot.duct.gap": [0.05, 0.07]}))
+        for price in (5.0, 14.0)
+    )
+    assert cheap.digest() != dear.digest()
 
 
 @settings(max_examples=200, deadline=None)

@@ -334,6 +334,14 @@ def test_the_command_tells_what_it_found(tmp_path: Path) -> None:
     assert found["best"]["hot.mass_flow"] == 0.12
 
 
+def test_a_sweep_without_any_answer_says_so(tmp_path: Path) -> None:
+    path, plot = tmp_path / "out.csv", tmp_path / "map.svg"
+    told = run("--vary", "stack.layers=3, 5", "-o", str(path), "--plot", str(plot))
+    assert told.exit_code == 1
+    assert "no combination has an answer: stack.layers: ducts that serve two layers need an even number" in told.stderr
+    assert len(path.read_text().splitlines()) == 3 and not plot.exists()
+
+
 def test_the_case_written_beside_the_table_gives_it_again(tmp_path: Path) -> None:
     first, second, case = tmp_path / "first.csv", tmp_path / "second.csv", tmp_path / "again.toml"
     run("--set", "stack.rows=14", "--vary", "hot.mass_flow=0.06 kg/s:0.12 kg/s:3", "-o", str(first))

@@ -10,7 +10,7 @@ from typing import Any
 import click
 
 from harvest.cli.program import case_arguments, cli, read_case_of
-from harvest.errors import InputError
+from harvest.errors import InputError, NoAnswerError
 
 
 @cli.command()
@@ -28,7 +28,7 @@ from harvest.errors import InputError
 @click.option(
     "-o", "--output", default=None, type=click.Path(dir_okay=False), help="Table to write: .csv, .parquet or .nc."
 )
-@click.option("--full", is_flag=True, help="All results and checks of an estimate, in some four times the time.")
+@click.option("--full", is_flag=True, help="All results and checks of an estimate, in some six times the time.")
 @click.option("--plot", default=None, type=click.Path(dir_okay=False), help="Draw net power (.svg, .png, .pdf).")
 @click.option("--jobs", type=click.IntRange(1, 256), default=1, show_default=True, help="Processes.")
 @click.option("--scheduler", default=None, metavar="ADDRESS", help="Solve on the workers of a dask scheduler.")
@@ -96,7 +96,7 @@ def sweep(
         except KeyboardInterrupt:
             click.echo(f"\nharvest: interrupted; finished chunks are kept, --resume goes on with {path}", err=True)
             raise
-    if plot is not None:
+    if plot is not None and found.valid:
         from harvest.report.plots import write_figure
         from harvest.report.sweep_plots import sweep_figure
 
@@ -110,3 +110,5 @@ def sweep(
         from harvest.report.sweep_sheet import sweep_report
 
         click.echo(sweep_report(plan, found))
+    if not found.valid:
+        raise NoAnswerError(f"no combination has an answer: {'; '.join(found.reasons)}")

@@ -685,7 +685,8 @@ def _swept(path: str) -> Declaration:
         raise QuantityError("stands in a list of tables; write each module as a record and vary module.use")
     if path.startswith("limits."):
         raise QuantityError("a limit changes no result, so a sweep cannot vary it; --plot draws the limits of the case")
-    if declaration.descriptive and path != "module.use":
+    shapes = path == "module.use" or (path.startswith("cost.") and declaration.form in NUMBERS)
+    if declaration.descriptive and not shapes:
         raise QuantityError("changes no result, so a sweep cannot vary it; leave it out")
     return declaration
 

@@ -65,8 +65,12 @@ def _drawn_axes(plan: SweepPlan) -> list[str]:
 
 
 def _limits(plan: SweepPlan) -> dict[str, tuple[str, float]]:
-    """Limits that the case has, with the results they bound."""
-    return {name: bound for name, bound in LIMITS.items() if np.isfinite(limit_of(plan.case, name))}
+    """Limits that the case has, with the results they bound, where the sweep has them."""
+    return {
+        name: bound
+        for name, bound in LIMITS.items()
+        if np.isfinite(limit_of(plan.case, name)) and bound[0] in plan.results
+    }
 
 
 def sweep_figure(plan: SweepPlan, kept: dict[str, FloatArray]) -> Figure:

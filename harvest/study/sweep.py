@@ -22,11 +22,12 @@ from harvest.model.case_rules import ALTERNATIVES
 from harvest.model.case_text import toml_value
 from harvest.model.checks import FAIL, WARN
 from harvest.model.design import BETWEEN
-from harvest.model.estimate import SEARCHED, estimate_batch, search_batch
+from harvest.model.estimate import SEARCHED, SEARCHED_WITHOUT_LOAD, estimate_batch, search_batch
 from harvest.model.reading import NUMBERS, replace
 from harvest.model.results import OF_SEARCHES, SCALARS
 from harvest.model.study_sections import MOST_COMBINATIONS
 from harvest.physics.arrays import FloatArray, IntArray, ObjectArray
+from harvest.study.limits import asks_without_load
 from harvest.version import VERSION
 
 CHUNK_CELLS = 25_000
@@ -49,8 +50,13 @@ STRUCTURAL = frozenset(
 """Numbers that belong to the base case of a batch, so that each value of them is a structure of its own."""
 
 WARMEST_COLD_FACE = "warmest_cold_face_temperature"
-RESULTS: dict[str, Any] = {name: {**SCALARS, **OF_SEARCHES}[name] for name in SEARCHED}
-FULL_RESULTS: dict[str, Any] = {**SCALARS, WARMEST_COLD_FACE: OF_SEARCHES[WARMEST_COLD_FACE]}
+RESULTS: dict[str, Any] = {
+    **SCALARS,
+    **OF_SEARCHES,
+    "highest_open_circuit_voltage": {"kind": "voltage", "meaning": "Highest voltage of any string without load."},
+}
+"""Every result that a sweep may have, with its kind of unit and its meaning."""
+COSTS = tuple(name for name in SCALARS if "cost" in name or "payback" in name)
 CHECK_TEXTS = {
     "failed_checks": "Names of the checks that fail, with semicolons between them.",
     "warned_checks": "Names of the checks that warn, with semicolons between them.",
@@ -95,8 +101,12 @@ class SweepPlan:
 
     @property
     def results(self) -> dict[str, Any]:
-        """Names of the results with their kinds of unit and meanings."""
-        return FULL_RESULTS if self.full else RESULTS
+        """Names of the results with their kinds of unit and meanings: those without load and costs where asked for."""
+        names = (*SCALARS, WARMEST_COLD_FACE) if self.full else SEARCHED
+        if not self.full and asks_without_load(self.case):
+            names += SEARCHED_WITHOUT_LOAD
+        priced = any(isinstance(base, Case) and base.cost is not None for base in self.bases)
+        return {name: RESULTS[name] for name in names if priced or name not in COSTS}
 
     @property
     def check_texts(self) -> dict[str, str]:
@@ -150,13 +160,13 @@ class SweepPlan:
                 continue
             try:
                 batch = Batch(base, len(which), {path: number[which] for path, number in varied.items()})
-                found = _full(batch) if self.full else _lean(batch)
+                found = _full(batch) if self.full else _lean(batch, asks_without_load(self.case))
             except InputError as error:
                 problem[which] = str(error)
                 continue
             problem[which] = found.problem
-            for name, results in found.numbers.items():
-                numbers[name][which] = results
+            for name, number in numbers.items():
+                number[which] = found.numbers[name]
             for name, words in found.texts.items():
                 texts[name][which] = words
         return SweepPart(numbers, texts, problem)
@@ -170,7 +180,7 @@ class SweepPlan:
             self.chunk_cases,
             [(path, repr(axis.values), axis.labels, axis.between) for path, axis in self.axes.items()],
             (section.sample, section.sequence, section.seed),
-            [base if isinstance(base, str) else case_hash(base) for base in self.bases],
+            [base if isinstance(base, str) else (case_hash(base), repr((base.cost, base.site))) for base in self.bases],
         )
         return hashlib.sha256(json.dumps(content).encode()).hexdigest()
 
@@ -365,9 +375,9 @@ def _is_given(case: Case, path: str) -> bool:
     return table is not None
 
 
-def _lean(batch: Batch) -> SweepPart:
-    """Results at the case's own load."""
-    found = search_batch(batch)
+def _lean(batch: Batch, without_load: bool) -> SweepPart:
+    """Results at the case's own load, and some without any."""
+    found = search_batch(batch, without_load=without_load)
     return SweepPart(found.scalars, {}, found.problem)
 
 
