@@ -23,6 +23,8 @@ if TYPE_CHECKING:
     from harvest.report.sweep_files import sweep
     from harvest.study.bench_record import fit_bench_record, read_bench_record
     from harvest.study.doubt import Doubt, doubt
+    from harvest.study.duty import DutyBalance, duty
+    from harvest.study.duty_log import DutyLog, read_duty_log
     from harvest.study.modules import load_module
     from harvest.study.screen import Screening, screen
     from harvest.study.size import Sizing, size
@@ -57,6 +59,10 @@ _HOMES = {
     "WhatIf": "harvest.study.what_if",
     "WhatIfOptions": "harvest.study.what_if",
     "what_if": "harvest.study.what_if",
+    "DutyBalance": "harvest.study.duty",
+    "DutyLog": "harvest.study.duty_log",
+    "duty": "harvest.study.duty",
+    "read_duty_log": "harvest.study.duty_log",
     "Sizing": "harvest.study.size",
     "size": "harvest.study.size",
     "screen": "harvest.study.screen",
@@ -68,6 +74,8 @@ __all__ = [
     "Case",
     "CaseError",
     "Doubt",
+    "DutyBalance",
+    "DutyLog",
     "Estimate",
     "Estimates",
     "HarvestError",
@@ -81,6 +89,7 @@ __all__ = [
     "WhatIfOptions",
     "__version__",
     "doubt",
+    "duty",
     "estimate",
     "estimate_batch",
     "fit_bench_record",
@@ -90,6 +99,7 @@ __all__ = [
     "load_streams",
     "module_curve",
     "read_bench_record",
+    "read_duty_log",
     "replace",
     "screen",
     "size",

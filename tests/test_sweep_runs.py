@@ -182,7 +182,7 @@ def test_files_are_the_same_after_an_interruption(suffix: str, tmp_path: Path, m
         write_sweep(small_plan(31), broken)
     again = write_sweep(plan, broken, command="as typed, with other words")
     assert broken.read_bytes() == whole.read_bytes()
-    assert again == found
+    assert str(again) == str(found)  # some results are NaN, which equals nothing
     assert not journal_path(broken).exists()
     assert is_finished(plan, broken, resume=True)
     with pytest.raises(InputError, match="exists already"):

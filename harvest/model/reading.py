@@ -490,7 +490,7 @@ class _Reading:
             return _integer(declaration, raw)
         if form == "choice":
             return _choice(declaration, raw)
-        if form == "text":
+        if form in ("text", "log"):
             return _text(raw)
         if form == "file":
             return _file(_text(raw), kind, self.record_folders.get(path, self.folder))

@@ -62,7 +62,7 @@ def case_text(case: Case) -> str:
         for parent in parents:
             table = table.get(parent) if isinstance(table, dict) else None
         value = table.get(name) if isinstance(table, dict) else None
-        if declaration.form not in ("file", "fluid table") or not isinstance(value, str):
+        if declaration.form not in ("file", "fluid table", "log") or not isinstance(value, str):
             continue
         if (case.folder / value).is_file():
             table[name] = str((case.folder / value).resolve())

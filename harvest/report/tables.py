@@ -206,6 +206,17 @@ def _add_attributes(file: Any, table: Table) -> None:
     file.Conventions = CONVENTIONS
 
 
+def write_table(path: Path, table: Table, columns: Columns) -> None:
+    """Write a table that is whole in memory, in the format of the suffix; raises InputError and MissingExtraError."""
+    suffix = table_suffix(path)
+    if suffix == ".csv":
+        write_csv(path, table, [csv_rows(table, columns).encode()])
+    elif suffix == ".parquet":
+        write_parquet(path, table, [columns])
+    else:
+        write_netcdf(path, table, [columns])
+
+
 def _describe(variable: Any, column: Column) -> None:
     variable.long_name = column.meaning
     if column.unit:

@@ -24,7 +24,7 @@ from harvest.model.checks import FAIL, WARN
 from harvest.model.design import BETWEEN
 from harvest.model.estimate import SEARCHED, SEARCHED_WITHOUT_LOAD, estimate_batch, search_batch
 from harvest.model.reading import NUMBERS, replace
-from harvest.model.results import SCALARS
+from harvest.model.results import OF_SEARCHES, SCALARS
 from harvest.model.study_sections import MOST_COMBINATIONS
 from harvest.physics.arrays import FloatArray, IntArray, ObjectArray
 from harvest.study.limits import asks_without_load
@@ -52,7 +52,7 @@ STRUCTURAL = frozenset(
 WARMEST_COLD_FACE = "warmest_cold_face_temperature"
 RESULTS: dict[str, Any] = {
     **SCALARS,
-    WARMEST_COLD_FACE: {"kind": "temperature", "meaning": "Highest cold face temperature at the chosen load."},
+    **OF_SEARCHES,
     "highest_open_circuit_voltage": {"kind": "voltage", "meaning": "Highest voltage of any string without load."},
 }
 """Every result that a sweep may have, with its kind of unit and its meaning."""
