@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 
@@ -17,6 +17,7 @@ from harvest.quantities import format_quantity
 
 COOLER = "cooler ratings"
 GENERATOR = "generator ratings"
+FACTORS = ("module.seebeck_factor", "module.resistance_factor", "module.conductance_factor")
 LARGEST_DISAGREEMENT = 0.05
 """Relative disagreement of a module's data that is worth a warning."""
 SLENDERNESS = (0.3, 5.0)
@@ -58,7 +59,14 @@ def described_module(batch: Batch) -> DescribedModule:
         from harvest.model.rated_module import of_cooler_ratings, of_generator_ratings
 
         build = of_cooler_ratings if module.cooler_rating is not None else of_generator_ratings
-    return build(batch)
+    described = build(batch)
+    factors = np.stack([batch.number(path, 1.0) for path in FACTORS])
+    if np.all(factors == 1.0):
+        return described
+    from harvest.physics.ratings import ScaledModule
+
+    scaled = ScaledModule(described.model, factors)
+    return replace(described, model=scaled, provenance=f"{described.provenance}, times the stated factors")
 
 
 def footprint_area(batch: Batch) -> FloatArray:

@@ -89,7 +89,7 @@ def rated_film(batch: Batch, stream: Stream, mass_flow: FloatArray, faults: Faul
     rows = block_rows(batch, side)
     found = RatedFilm(
         flow=flow,
-        film_conductance=conductance,
+        film_conductance=batch.number(f"{side}.duct.film_factor", 1.0) * conductance,
         solid_resistance=solid,
         modules=batch.number(f"{side}.duct.modules_per_block"),
         in_series=batch.number("stack.rows") / rows,
@@ -149,7 +149,7 @@ def _rated_faults(
             ),
         )
     capacity = film.flow * film.rated_density * heat_capacity
-    impossible = ~outside & ~(film.film_conductance > 0)
+    impossible = ~outside & np.isfinite(film.flow) & ~(film.film_conductance > 0)
     by_inlet = given.duct.resistance_refers_to == "inlet"
     least = (1.0 if by_inlet else 0.5) / capacity
     solid = film.solid_resistance

@@ -324,7 +324,12 @@ def check_report(case: Case) -> str:
     given, of_record = [], []
     for path, declaration in DECLARATIONS.items():
         value = value_at(case, path)
-        if declaration.section is not None or value is None or path.startswith(("size.", "sweep.")):
+        if (
+            declaration.section is not None
+            or value is None
+            or path == "uncertainty"
+            or path.startswith(("size.", "sweep."))
+        ):
             continue
         line = wrapped(f"  {path} = ", display(value, declaration), rest="      ")
         if _stands_in(case.given, path):
