@@ -432,6 +432,28 @@ def test_what_is_given_wrongly_is_named(options: tuple[str, ...], message: str) 
     assert message in told.stderr
 
 
+def test_choices_within_the_limits_are_told_and_a_fault_without_load_has_its_remedy() -> None:
+    """A hot face that only fails without load is no limit of a search, and its check says how to make it one."""
+    axes = ("--set", "size.rows=[10, 14, 20]", "--set", 'size."hot.duct.fin_pitch"=["3 mm", "5 mm"]')
+    report = " ".join(run(str(EXAMPLES / "genset-exhaust.toml"), *axes).stdout.split())
+    assert "Not acceptable as it stands: hot face without load." in report
+    assert "limits.hot_face_temperature_without_load keeps a sizing below" in report
+    document = json.loads(run(str(EXAMPLES / "genset-exhaust.toml"), *axes, "--json").stdout)
+    beyond, within = document["choices_beyond_limits"], document["choices_within_limits"]
+    assert list(beyond) == ["hot_face_temperature"]
+    assert within + sum(beyond.values()) == document["choices_tried"] == 6
+    assert f"{within} of those tried keep to every limit" in report
+
+
+def test_a_long_title_is_not_cut_off_and_no_formula(tmp_path: Path) -> None:
+    title = "Two prices, $50 and $60 a module, " * 4
+    plot = tmp_path / "best.svg"
+    told = run(str(JACKET), "--set", "size.rows=[4, 8]", "--set", f'title="{title}"', "--plot", str(plot))
+    assert told.exit_code == 0, told.output
+    lines = [line for line in plot.read_text().splitlines() if "$50" in line or "best arrangement" in line]
+    assert len(lines) > 1 and max(map(len, lines)) < 250
+
+
 def test_files_are_judged_before_the_search(tmp_path: Path) -> None:
     there = tmp_path / "there.toml"
     there.write_text("")

@@ -8,15 +8,18 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from harvest.model.case import DECLARATIONS, Case, display
+from harvest.model.checks import SHOCK_VOLTAGE
 from harvest.model.study_sections import OBJECTIVES
-from harvest.quantities import format_quantity
+from harvest.quantities import format_quantity, significant
 from harvest.report.cost_sheet import cost_sentence
 from harvest.report.duty_sheet import hours, kilowatt_hours, worth
 from harvest.report.layout import WIDTH, heading, table, wrapped
 from harvest.report.terminal import counted, stack_sentence, title, verdict
 from harvest.study.limits import limit_path
+from harvest.study.wirings import own_wiring
 
 if TYPE_CHECKING:
+    from harvest.model.results import Estimate
     from harvest.study.size import Arrangement, AtBound, BindingLimit, CostFront, SizedDuty, Sizing
     from harvest.study.wirings import Wiring
 
@@ -24,6 +27,8 @@ MOST_LINES = 14
 BAR = 16
 MANY_MODULES = 1000
 ROW_BLOCKS = "electrical.row_blocks"
+WITHOUT_LOAD = "hot face without load"
+"""Check of a hot face when the load is lost, which a search looks at only where it has a limit of its own."""
 WORTH_TELLING = 0.001
 """Share of the net power from which another wiring, or a wider window, is worth a sentence."""
 
@@ -132,6 +137,15 @@ def _at_bounds(found: tuple[AtBound, ...]) -> list[str]:
     ]
 
 
+def _beyond_without_load(best: Estimate) -> list[str]:
+    """Say how to keep a sizing from what only the checks look at."""
+    if not any(check.name == WITHOUT_LOAD and check.status == "fail" for check in best.checks):
+        return []
+    return [
+        "limits.hot_face_temperature_without_load keeps a sizing below a hot face temperature when the load is lost."
+    ]
+
+
 def _limit(found: BindingLimit) -> str:
     name = found.limit if " " in found.limit else limit_path(found.limit)
     change = "more" if found.net_power_gain >= 0 else "less"
@@ -159,7 +173,7 @@ def _v(value: float) -> str:
 
 def _wirings(case: Case, found: Sizing) -> list[str]:
     """What other groupings of the best design's modules would give, one for each number of row blocks."""
-    own = _own_wiring(found)
+    own = own_wiring(found.best_case, found.wirings)
     usable = [each for each in found.wirings if not each.problem]
     first: dict[int, Wiring] = {}
     for each in usable:
@@ -187,7 +201,7 @@ def _wirings(case: Case, found: Sizing) -> list[str]:
         f"{len(usable)} of {len(found.wirings)} groupings keep to every limit"
         + (f" with a converter from {_v(window[0])} to {_v(window[1])}" if window else "")
         + "; the best with each number of row blocks is told. Lost is what it generates less than every row with a "
-        "load of its own."
+        "load of its own." + (" All at the case's own streams, not over the log." if found.duty is not None else "")
     )
     lines = [heading("Wiring of the best design"), wrapped("  ", text), *table(header, rows)]
     if found.net_power_without_window is not None:
@@ -207,20 +221,25 @@ def _wirings(case: Case, found: Sizing) -> list[str]:
                 "limits.maximum_open_circuit_voltage keeps a sizing below a voltage.",
             )
         )
+    safe = min(SHOCK_VOLTAGE, highest)
+    safer = next((each for each in usable if each.open_circuit_voltage <= safe), None)
+    if own.open_circuit_voltage > safe and safer is not None and _gives_as_much(safer, own):
+        lines.append(
+            wrapped(
+                "  ",
+                f"{counted(safer.strings, 'string')} of {_in_series(safer)} in series (across "
+                f"{safer.strings_across}, layers {safer.layers_in_series}, row blocks {_blocks(safer)}) give "
+                f"{_w(safer.net_power)} too and stand at {_v(safer.open_circuit_voltage)} without load.",
+            )
+        )
     if usable and usable[0].net_power - own.net_power > WORTH_TELLING * abs(own.net_power):
         lines.append(wrapped("  ", 'Another wiring gives more: try size.wiring = "search".'))
     return lines
 
 
-def _own_wiring(found: Sizing) -> Wiring:
-    """The grouping that the best design has."""
-    electrical = found.best_case.electrical
-    own = (
-        electrical.strings_across,
-        electrical.layers_in_series,
-        electrical.row_blocks or (found.best_case.stack.rows,),
-    )
-    return next(each for each in found.wirings if (each.strings_across, each.layers_in_series, each.row_blocks) == own)
+def _gives_as_much(one: Wiring, other: Wiring) -> bool:
+    """Whether a wiring gives another's net power but for what is not worth telling."""
+    return one.net_power >= other.net_power - WORTH_TELLING * abs(other.net_power)
 
 
 def _front(front: CostFront, currency: str) -> list[str]:
@@ -228,7 +247,7 @@ def _front(front: CostFront, currency: str) -> list[str]:
         (
             f"{front.building_cost[i]:,.0f}",
             _w(front.net_power[i]),
-            f"{front.building_cost[i] / front.net_power[i]:.4g}",
+            significant(front.building_cost[i] / front.net_power[i], 4),
             f"{front.module_count[i]:,}",
             f"{front.rows_count[i]} x {front.columns_count[i]} x {front.layers_count[i]}",
         )
@@ -256,7 +275,8 @@ def _over_log(found: SizedDuty) -> str:
     return (
         f"Net {kilowatt_hours(balance.yearly_net_energy)} in a year{worth(balance)}: "
         f"{kilowatt_hours(balance.net_energy)} in the {hours(balance.answered_time)} of {balance.log.label}, of which "
-        f"it is off for {hours(off)}. Powers below are means over the log."
+        f"it is off for {hours(off)}. Powers of arrangements below are means over the log; the wiring and the checks "
+        "are told at the case's own streams."
     )
 
 
@@ -290,7 +310,7 @@ def size_report(case: Case, found: Sizing) -> str:
         wrapped("", stack_sentence(found.best_case, found.best) + "."),
         wrapped("", verdict(found.best)),
     ]
-    lines += [wrapped("Note: ", text) for text in _at_bounds(found.at_bounds)]
+    lines += [wrapped("Note: ", text) for text in (*_at_bounds(found.at_bounds), *_beyond_without_load(found.best))]
     lines += _curve(found)
     if found.front is not None and len(found.front.net_power):
         lines += _front(found.front, found.best.currency)
@@ -306,6 +326,8 @@ def size_report(case: Case, found: Sizing) -> str:
     refined = f", and {found.choices_refined:,} more around the best" if found.choices_refined else ""
     wired = ", each wiring counted" if found.wiring == "search" else ""
     lines.append(f"  {found.choices_tried:,} tried{wired}{refined}")
+    if found.choices_beyond_limits:
+        lines.append(f"  {found.choices_within_limits:,} of those tried keep to every limit; one may break several")
     lines += [f"  {count:,} beyond {limit_path(name)}" for name, count in found.choices_beyond_limits.items()]
     lines += [wrapped(f"  {count:,} without an answer: ", text) for text, count in found.choices_invalid.items()]
     return "\n".join(lines)

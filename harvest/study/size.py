@@ -26,7 +26,17 @@ from harvest.study.duty import DutyBalance, case_log, duty
 from harvest.study.duty_log import DutyLog
 from harvest.study.duty_search import DutyMeasure
 from harvest.study.limits import asks_without_load, bounded_results, broken_limits, limit_path
-from harvest.study.wirings import MOST_BLOCKS, WIRING, Wiring, even_blocks, groupings, wired, wirings
+from harvest.study.wirings import (
+    MOST_BLOCKS,
+    WIRING,
+    Wiring,
+    compared,
+    even_blocks,
+    groupings,
+    own_wiring,
+    wired,
+    wirings,
+)
 
 MOST_CHOICES = 2_000_000
 REFINED_POINTS = 5
@@ -151,6 +161,7 @@ class Sizing:
     choices_refined: int = 0
     choices_invalid: dict[str, int] = field(default_factory=dict)
     choices_beyond_limits: dict[str, int] = field(default_factory=dict)
+    choices_within_limits: int = 0
     binding_limits: tuple[BindingLimit, ...] = ()
     limits_together: BindingLimit | None = None
     at_bounds: tuple[AtBound, ...] = ()
@@ -540,6 +551,7 @@ def size(case: Case, progress: Progress | None = None, *, log: DutyLog | str | P
     if not found.numbers or not len(found.numbers["net_power"]):
         raise NoAnswerError("\n".join(["no choice has an answer", *_said(tally)]))
     beyond = {name: int(wrong.sum()) for name, wrong in found.beyond.items() if wrong.any()}
+    within_limits = int(found.allowed().sum())
     refined = _refine(tally, axes)
     found = tally.all()
     order = found.order(found.allowed())
@@ -587,6 +599,7 @@ def size(case: Case, progress: Progress | None = None, *, log: DutyLog | str | P
         choices_refined=refined,
         choices_invalid=dict(tally.reasons.values()),
         choices_beyond_limits=beyond,
+        choices_within_limits=within_limits,
         binding_limits=single,
         limits_together=together,
         at_bounds=_at_bounds(axes, chosen),
@@ -605,23 +618,55 @@ def _over_whole_log(
     """
     balances: dict[int, DutyBalance] = {}
     binned = found.numbers["net_power"].copy()
+
+    def answer(place: int) -> None:
+        balance = duty(designed(case, found.values(place, axes)), log)
+        if any(balance.time_beyond_limits.values()):
+            found.numbers["net_power"][place] = -np.inf
+            return
+        balances[place] = balance
+        for name, value in _means(balance).items():
+            found.numbers[name][place] = value
+
     answered = 0
     for place in order[:MOST_WITHOUT_ESTIMATE].tolist():
         answered += 1
-        balance = duty(designed(case, found.values(place, axes)), log)
-        kept = not any(balance.time_beyond_limits.values())
-        found.numbers["net_power"][place] = balance.mean_net_power if kept else -np.inf
-        if kept:
-            balances[place] = balance
+        answer(place)
         if len(balances) == FINALISTS:
             break
     if not balances:
         raise NoAnswerError(f"the {answered} best choices break a limit at a reading of the log")
+    finalists = len(balances)
     best = max(balances, key=lambda place: balances[place].mean_net_power)
+    chosen = found.values(best, axes)
+    if BLOCKS in chosen:
+        alike = found.with_wiring(best, _alike_wiring(designed(case, chosen)))
+        if alike not in balances:
+            answer(alike)
+        if alike in balances and compared(balances[alike].mean_net_power) >= compared(balances[best].mean_net_power):
+            best = alike
     struck = np.isneginf(found.numbers["net_power"][order])
     rest = order[~struck & (order != best)]
-    sized = SizedDuty(balances[best], balances[best].conditions, len(measure.share), float(binned[best]), len(balances))
+    sized = SizedDuty(balances[best], balances[best].conditions, len(measure.share), float(binned[best]), finalists)
     return np.concatenate([[best], rest]), sized
+
+
+def _alike_wiring(case: Case) -> Wiring:
+    """Of the wirings that give a design's net power at its own streams, the one to be preferred."""
+    every = wirings(case)
+    own = own_wiring(case, every)
+    return next((each for each in every if compared(each.net_power) == compared(own.net_power)), own)
+
+
+def _means(balance: DutyBalance) -> dict[str, float]:
+    """Results of a choice at every reading, in place of those over the bins."""
+    drives = balance.hot_drive_energy + balance.cold_drive_energy
+    return {
+        "net_power": balance.mean_net_power,
+        "generated_power": balance.generated_energy / balance.answered_time,
+        "drive_power": drives / balance.answered_time,
+        "building_cost": balance.building_cost,
+    }
 
 
 def _without_window(case: Case, best: Estimate) -> float | None:
