@@ -268,12 +268,12 @@ def _at_its_streams(case: Case, found: Sizing) -> list[str]:
     ]
 
 
-def _over_log(found: SizedDuty) -> str:
+def _over_log(case: Case, found: SizedDuty) -> str:
     """What the best gives over the log."""
     balance = found.balance
     off = sum(balance.time_off.values())
     return (
-        f"Net {kilowatt_hours(balance.yearly_net_energy)} in a year{worth(balance)}: "
+        f"Net {kilowatt_hours(balance.yearly_net_energy)} in a year{worth(case, balance)}: "
         f"{kilowatt_hours(balance.net_energy)} in the {hours(balance.answered_time)} of {balance.log.label}, of which "
         f"it is off for {hours(off)}. Powers of arrangements below are means over the log; the wiring and the checks "
         "are told at the case's own streams."
@@ -304,7 +304,7 @@ def size_report(case: Case, found: Sizing) -> str:
         *(
             _at_its_streams(case, found)
             if found.duty is None
-            else [wrapped("", _over_log(found.duty)), wrapped("", _bins(found.duty))]
+            else [wrapped("", _over_log(case, found.duty)), wrapped("", _bins(found.duty))]
         ),
         *_flatness(found),
         wrapped("", stack_sentence(found.best_case, found.best) + "."),
