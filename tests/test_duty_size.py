@@ -250,3 +250,15 @@ def test_the_report_says_which_powers_are_means_and_which_wiring_gives_as_much()
     assert "Powers of arrangements below are means over the log" in said
     assert "All at the case's own streams, not over the log." in said
     assert "32 strings of 16 in series (across 4, layers 1, row blocks 1) give 163.1 W too and stand at 38.29 V" in said
+
+
+def test_another_goal_is_not_given_up_for_a_log_in_silence() -> None:
+    week, log = str(EXAMPLES / "genset-week.toml"), str(EXAMPLES / "genset-week.csv")
+    goal = ("--set", 'size.objective="cost per kilowatt-hour"')
+    refused = CliRunner().invoke(cli, ["size", week, *goal, "--duty", log])
+    assert refused.exit_code == 2
+    assert 'size.objective: "cost per kilowatt-hour" is not looked for over a log; set it to' in refused.output
+    power = CliRunner().invoke(
+        cli, ["size", week, "--set", 'size.objective="net power"', "--set", "size.rows=[4]", "--duty", log, "--json"]
+    )
+    assert json.loads(power.stdout)["objective"] == "yearly energy"

@@ -27,6 +27,7 @@ from harvest.model.case import Case
 from harvest.model.estimate import SEARCHED, estimate, estimate_batch, search_batch
 from harvest.model.reading import load_case, read_case, replace
 from harvest.report.files import case_text
+from harvest.report.size_sheet import size_report
 from harvest.study import size as sizing
 from harvest.study.limits import LIMITS, WINDOW
 from harvest.study.size import marginal_power, row_blocks, size
@@ -443,6 +444,27 @@ def test_choices_within_the_limits_are_told_and_a_fault_without_load_has_its_rem
     assert list(beyond) == ["hot_face_temperature"]
     assert within + sum(beyond.values()) == document["choices_tried"] == 6
     assert f"{within} of those tried keep to every limit" in report
+
+
+def test_each_line_of_curve_and_front_can_be_built_again() -> None:
+    """With a field varied, arrangement and field of a line give its net power in an estimate of their own."""
+    axes = ["size.rows=[4, 8, 12]", 'size."hot.duct.gap"=["2 mm", "3 mm"]', "cost.module=15", 'cost.currency="EUR"']
+    found = size(load_case(JACKET, axes))
+    assert found.front is not None
+    for told in (found.curve, found.front):
+        for place, gap in enumerate(told.fields["hot.duct.gap"]):
+            alone = estimate(
+                load_case(JACKET, [f"stack.rows={told.rows_count[place]}", f'hot.duct.gap="{float(gap)!r} m"'])
+            )
+            assert alone.net_power == pytest.approx(told.net_power[place], rel=1e-9)
+    assert "Each has its own hot.duct.gap, told by --json." in size_report(load_case(JACKET, axes), found)
+
+
+def test_one_choice_is_singular() -> None:
+    told = run(str(JACKET), "--set", "size.columns=[1, 2, 3]", "--set", "size.rows=[4]")
+    assert told.exit_code == 1
+    assert "with an answer: 1 choice" in told.stderr and "1 choice: beyond" in told.stderr
+    assert "2 choices: electrical.strings_across: must divide columns" in told.stderr
 
 
 def test_a_long_title_is_not_cut_off_and_no_formula(tmp_path: Path) -> None:

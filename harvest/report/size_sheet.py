@@ -19,7 +19,10 @@ from harvest.study.limits import limit_path
 from harvest.study.wirings import own_wiring
 
 if TYPE_CHECKING:
+    from collections.abc import Mapping
+
     from harvest.model.results import Estimate
+    from harvest.physics.arrays import FloatArray
     from harvest.study.size import Arrangement, AtBound, BindingLimit, CostFront, SizedDuty, Sizing
     from harvest.study.wirings import Wiring
 
@@ -85,7 +88,12 @@ def _curve(found: Sizing) -> list[str]:
             )
         )
     header = ("modules", "arrangement", "generated", "drives", "net", "a module adds", "")
-    return [heading("Best arrangement at each number of modules"), *table(header, rows)]
+    return [heading("Best arrangement at each number of modules"), *table(header, rows), *_varied(curve.fields)]
+
+
+def _varied(fields: Mapping[str, FloatArray]) -> list[str]:
+    """Say what else differs between the lines of a table."""
+    return [wrapped("  ", f"Each has its own {' and '.join(fields)}, told by --json.")] if fields else []
 
 
 def _flatness(found: Sizing) -> list[str]:
@@ -257,6 +265,7 @@ def _front(front: CostFront, currency: str) -> list[str]:
     return [
         heading("Net power against cost: nothing is both cheaper and stronger"),
         *table((head, "net", "cost per watt", "modules", "rows x columns x layers"), rows),
+        *_varied(front.fields),
     ]
 
 
@@ -273,8 +282,8 @@ def _over_log(case: Case, found: SizedDuty) -> str:
     balance = found.balance
     off = sum(balance.time_off.values())
     return (
-        f"Net {kilowatt_hours(balance.yearly_net_energy)} in a year{worth(case, balance)}: "
-        f"{kilowatt_hours(balance.net_energy)} in the {hours(balance.answered_time)} of {balance.log.label}, of which "
+        f"Net {kilowatt_hours(balance.yearly_net_energy)} in a year{worth(case, balance)}. The log gives "
+        f"{kilowatt_hours(balance.net_energy)} in {hours(balance.answered_time)} ({balance.log.label}), of which "
         f"it is off for {hours(off)}. Powers of arrangements below are means over the log; the wiring and the checks "
         "are told at the case's own streams."
     )
@@ -286,9 +295,10 @@ def _bins(found: SizedDuty) -> str:
         return f"Every choice was answered in each of the log's {found.conditions:,} conditions."
     mean = found.balance.mean_net_power
     apart = abs(found.binned_net_power / mean - 1.0) if mean else 0.0
+    finalists = "best was" if found.finalists == 1 else f"{found.finalists} best were"
     return (
-        f"The search took {found.bins} bins for the log's {found.conditions:,} conditions, and the {found.finalists} "
-        f"best were answered in each of them: the bins gave {_w(found.binned_net_power)} on average and the log gives "
+        f"The search took {found.bins} bins for the log's {found.conditions:,} conditions, and the {finalists} "
+        f"answered in each of them: the bins gave {_w(found.binned_net_power)} on average and the log gives "
         f"{_w(mean)}, {100 * apart:.2g} % apart."
     )
 

@@ -81,7 +81,8 @@ class Arrangement:
 class SizeCurve:
     """The arrangement with the most net power at each number of modules, ascending; arrays (counts,).
 
-    `marginal_power` [W] is what a module adds between this count and the one before on the upper hull of the curve.
+    `marginal_power` [W] is what a module adds between this count and the one before on the upper hull of the curve;
+    `fields` are the SI values of the further fields that were varied.
     """
 
     module_count: IntArray
@@ -92,6 +93,7 @@ class SizeCurve:
     drive_power: FloatArray
     net_power: FloatArray
     marginal_power: FloatArray
+    fields: dict[str, FloatArray] = field(default_factory=dict)
 
 
 @dataclass(frozen=True)
@@ -104,6 +106,7 @@ class CostFront:
     rows_count: IntArray
     columns_count: IntArray
     layers_count: IntArray
+    fields: dict[str, FloatArray] = field(default_factory=dict)
 
 
 @dataclass(frozen=True)
@@ -400,6 +403,12 @@ def _whole(found: _Found, name: str, places: IntArray) -> IntArray:
     return found.numbers[name][places].astype(np.int64)
 
 
+def _fields(found: _Found, places: IntArray) -> dict[str, FloatArray]:
+    """Further fields that were varied, by path, (places,)."""
+    varied = found.case.size.fields or {} if found.case.size else {}
+    return {path: found.numbers[path][places] for path in varied}
+
+
 def _curve(found: _Found, among: BoolArray) -> tuple[SizeCurve, IntArray]:
     """Strongest choice at each number of modules, and their places."""
     places = np.flatnonzero(among)
@@ -418,6 +427,7 @@ def _curve(found: _Found, among: BoolArray) -> tuple[SizeCurve, IntArray]:
         found.numbers["drive_power"][chosen],
         net,
         marginal_power(counts, net),
+        _fields(found, chosen),
     )
     return curve, chosen
 
@@ -449,11 +459,15 @@ def _front(found: _Found, among: BoolArray) -> CostFront | None:
     order = np.lexsort((-net, cost))
     before = np.concatenate([[-np.inf], np.maximum.accumulate(net[order])])[: len(order)]
     chosen = places[order[net[order] > before]]
+    rows, columns, layers = (_whole(found, path, chosen) for path in COUNTS)
     return CostFront(
         found.numbers["building_cost"][chosen],
         found.numbers["net_power"][chosen],
         _whole(found, "module_count", chosen),
-        *(_whole(found, path, chosen) for path in COUNTS),
+        rows,
+        columns,
+        layers,
+        _fields(found, chosen),
     )
 
 
@@ -525,6 +539,16 @@ def _binding(found: _Found, order: IntArray) -> tuple[tuple[BindingLimit, ...], 
 
     single = tuple(each for name in found.beyond if (each := without(name, (name,))) is not None)
     return single, None if single else without("all limits together", tuple(found.beyond))
+
+
+def for_yearly_energy(case: Case) -> Case:
+    """The case with the objective "yearly energy"; raises InputError where it asks for a goal of its own."""
+    objective = case.size.objective if case.size is not None else YEARLY_ENERGY
+    if objective not in ("net power", YEARLY_ENERGY):
+        raise InputError(
+            f'size.objective: "{objective}" is not looked for over a log; set it to "{YEARLY_ENERGY}", or give no log'
+        )
+    return replace(case, {"size.objective": YEARLY_ENERGY})
 
 
 def size(case: Case, progress: Progress | None = None, *, log: DutyLog | str | Path | None = None) -> Sizing:
@@ -680,15 +704,19 @@ def _without_window(case: Case, best: Estimate) -> float | None:
 
 
 def _said(tally: _Tally) -> list[str]:
-    return [f"{count:,} choices: {text}" for text, count in tally.reasons.values()]
+    return [f"{_choices(count)}: {text}" for text, count in tally.reasons.values()]
+
+
+def _choices(count: int) -> str:
+    return f"{count:,} choice{'s' * (count != 1)}"
 
 
 def _none_meets(found: _Found, beyond: dict[str, int], tally: _Tally) -> list[str]:
     """Why no choice is left."""
-    lines = [f"no choice keeps to the limits: {len(found.numbers['net_power']):,} have an answer"]
+    lines = [f"no choice keeps to the limits; with an answer: {_choices(len(found.numbers['net_power']))}"]
     if found.allowed().any():
         lines = [f"no choice meets the objective; the most net power within the limits is {_most(found):.6g} W"]
-    return [*lines, *(f"{count:,} choices: beyond {limit_path(name)}" for name, count in beyond.items()), *_said(tally)]
+    return [*lines, *(f"{_choices(count)}: beyond {limit_path(name)}" for name, count in beyond.items()), *_said(tally)]
 
 
 def _most(found: _Found) -> float:
