@@ -38,6 +38,7 @@ from harvest.study.duty import (
     exceeded,
 )
 from harvest.study.duty_log import NOTES, DutyLog, read_duty_log
+from harvest.study.size import size
 from harvest.study.time_stamps import read_time_stamps
 
 EXAMPLES = Path(__file__).parents[1] / "examples"
@@ -731,3 +732,19 @@ def test_a_payback_beyond_the_years_of_use_or_with_interest_says_so() -> None:
 def test_one_is_singular() -> None:
     text = said(run("duty", str(JACKET), "-", text="time [h], hot.inlet_temperature [degC]\n0, 90\n1, bad\n2, 90\n"))
     assert "The log has 1 odd reading; what was done" in text and "unreadable, 1 time: left out" in text
+
+
+@pytest.mark.parametrize("drives", ["when worth it", "always on"])
+def test_a_converter_below_its_window_is_off_and_breaks_no_limit(drives: str) -> None:
+    """At 35 to 45 degC the week's stack has at most 9 V without load; its converter begins at 12 V."""
+    log = "hours [h], hot.inlet_temperature [degC]\n100, 33\n100, 37\n100, 40\n100, 45\n100, 90\n"
+    free = {"hot.drive": "free", "cold.drive": "free", "hot.drive_efficiency": None, "cold.drive_efficiency": None}
+    case = replace(load_case(WEEK), {**free, "duty.drives": drives, "electrical.converter_standby_power": "1 W"})
+    found = duty(case, log)
+    assert found.time_on == 100 * HOUR
+    assert found.time_off == {"the stack gives nothing, or less than its drives would take": 400 * HOUR}
+    assert not any(found.time_beyond_limits.values())
+    alone = estimate(replace(case, {"hot.inlet_temperature": "90 degC"}))
+    assert found.net_energy == pytest.approx(100 * HOUR * alone.net_power - 400 * HOUR, rel=1e-9)
+    wanted = {"size.objective": "yearly energy", "size.rows": [4, 8], "size.columns": [4], "size.layers": [6]}
+    assert size(replace(case, wanted), log=log).arrangement.rows_count == 8

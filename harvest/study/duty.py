@@ -24,6 +24,8 @@ from harvest.study.limits import asks_without_load, bounded_results, broken_limi
 from harvest.version import VERSION
 
 YEAR = 8760.0 * 3600.0
+NO_POWER = 1e-9
+"""What is left of a solution without current [W]."""
 CURVE_POINTS = 101
 
 ON, NO_FLOW, NOT_HOTTER, NOT_WORTH_IT, NO_ANSWER, NOT_COVERED = range(6)
@@ -31,7 +33,7 @@ STATES = (
     "on",
     "a stream stands",
     "the hot stream is not hotter than the cold one",
-    "the drives would take more than the stack gives",
+    "the stack gives nothing, or less than its drives would take",
     "no answer",
     "not covered by the log",
 )
@@ -274,13 +276,16 @@ def _stands(values: Mapping[str, FloatArray], side: str, count: int) -> BoolArra
 def _switched(batch: Batch, found: dict[str, FloatArray], state: IntArray, always: bool) -> dict[str, FloatArray]:
     """Results with everything off where the stack is off; `state` becomes so where the stack is not worth its drives.
 
-    Auxiliaries go with the drives; the converter takes its standby power always.
+    Auxiliaries go with the drives; the converter takes its standby power always. Below its window it is off.
     """
     standby = batch.number("electrical.converter_standby_power", 0.0)
     auxiliary = batch.number("electrical.auxiliary_power", 0.0)
     drives = found["hot_drive_power"] + found["cold_drive_power"] + auxiliary
+    nothing = found["converted_power"] <= NO_POWER
     if not always:
-        state[(state == ON) & (found["converted_power"] < drives)] = NOT_WORTH_IT
+        state[(state == ON) & (nothing | (found["converted_power"] < drives))] = NOT_WORTH_IT
+    elif batch.base.electrical.converter_window is not None:
+        state[(state == ON) & nothing] = NOT_WORTH_IT
     on = state == ON
     results = {name: np.where(on, numbers, np.nan) for name, numbers in found.items()}
     for name in ("generated_power", "converted_power"):
