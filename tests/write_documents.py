@@ -14,6 +14,7 @@ from click.testing import CliRunner
 
 from harvest.cli import cli
 from harvest.physics.fluids import FluidBatch, FluidSpec, fluid_table
+from harvest.report.memo.reference import value_reference
 from harvest.report.reference import CheckedNumber, case_reference, check_list, result_reference
 from tests.test_published import SOURCES, as_argument
 
@@ -125,6 +126,7 @@ def documents() -> dict[Path, str]:
         ROOT / "README.md": readme(),
         DOCS / "case-file.md": case_reference(),
         DOCS / "results.md": result_reference(),
+        DOCS / "memo-values.md": value_reference(),
         DOCS / "command-line.md": command_line(),
         DOCS / "checks.md": check_list(checked_numbers()),
     }

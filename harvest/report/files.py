@@ -70,3 +70,10 @@ def write_new(path: Path, content: str) -> None:
     if path.exists():
         raise InputError(f"{path}: exists already; remove it or choose another name")
     write_whole(path, content)
+
+
+def case_source(case: Case) -> str:
+    """A case as TOML text as it was given, paths as they were written."""
+    import tomli_w
+
+    return tomli_w.dumps(case.given)
