@@ -5,6 +5,7 @@ from __future__ import annotations
 import itertools
 import json
 import os
+import pty
 import signal
 import subprocess
 import sys
@@ -22,11 +23,11 @@ from harvest.cli import cli
 from harvest.errors import CaseError, NoAnswerError
 from harvest.model.batch import Batch
 from harvest.model.case import Case
-from harvest.model.costs import annuity_factor
 from harvest.model.estimate import SEARCHED, estimate, estimate_batch, search_batch
 from harvest.model.reading import load_case, read_case, replace
 from harvest.report.files import case_text
 from harvest.study import size as sizing
+from harvest.study.limits import LIMITS, WINDOW
 from harvest.study.size import marginal_power, row_blocks, size
 
 EXAMPLES = Path(__file__).parents[1] / "examples"
@@ -150,13 +151,15 @@ BRUTE = {
 
 
 def sized(name: str, axes: dict[str, list[int]], *more: str) -> Case:
-    return load_case(EXAMPLES / name, [f"size.{each}={values}" for each, values in axes.items()] + [*more])
+    return load_case(
+        EXAMPLES / name, [f"size.{each}={values}" for each, values in axes.items()] + ["size.wiring=as given", *more]
+    )
 
 
 def keeps_to_limits(case: Case) -> tuple[bool, float]:
     """Whether an estimate on its own is valid and passes the checks of the limits, and its net power."""
     answer = estimate(case)
-    names = {name.replace("_", " ") for name in sizing.LIMITS}
+    names = {name.replace("_", " ") for name in (*LIMITS, WINDOW)}
     failed = any(check.name in names and check.status == "fail" for check in answer.checks)
     return answer.valid and not failed, answer.net_power
 
@@ -221,7 +224,8 @@ def test_wider_bounds_never_worsen_and_a_limit_never_improves(most: int, more: i
 
 
 def test_choices_without_an_answer_are_counted_by_reason_and_never_as_zero() -> None:
-    case = load_case(JACKET, ["size.rows=[1, 2]", "size.layers=[3, 5, 6]", "hot.drive_efficiency=0.001"])
+    wide = 'electrical.converter_window=["1 V", "60 V"]'
+    case = load_case(JACKET, ["size.rows=[1, 2]", "size.layers=[3, 5, 6]", "hot.drive_efficiency=0.001", wide])
     found = size(case)
     assert found.best.net_power < 0.0  # an invalid choice that counted as zero would win
     assert found.choices_tried == 6
@@ -232,7 +236,7 @@ def test_choices_without_an_answer_are_counted_by_reason_and_never_as_zero() -> 
 
 
 def test_a_limit_that_binds_is_told_with_what_it_costs() -> None:
-    axes = ["size.rows={from=1,to=40}", "size.columns=[2,4]"]
+    axes = ["size.rows={from=1,to=40}", "size.columns=[2,4]", 'electrical.converter_window=["1 V", "60 V"]']
     found = size(load_case(JACKET, [*axes, "limits.hot_pressure_drop=4 kPa"]))
     free = size(load_case(JACKET, [*axes, "limits.hot_pressure_drop=400 kPa"]))
     names = [each.limit for each in found.binding_limits]
@@ -307,18 +311,15 @@ def test_objectives() -> None:
     front = cheap.front
     assert front is not None
     paying = front.net_power > 0
-    assert cheap.cost_per_net_watt == pytest.approx((front.cost / front.net_power)[paying].min(), rel=1e-12)
+    assert cheap.best.cost_per_net_watt == pytest.approx(
+        (front.building_cost / front.net_power)[paying].min(), rel=1e-12
+    )
     chosen = cheap.arrangement
-    assert chosen.cost == 20 * chosen.module_count + 2000 + 15 * chosen.layers_count
+    assert chosen.building_cost == 20 * chosen.module_count + 2000 + 15 * chosen.layers_count
     hours = 2.88e7 / 3600.0
     yearly_energy = cheap.arrangement.net_power / 1000.0 * hours
-    assert cheap.cost_per_kilowatt_hour == pytest.approx(chosen.cost / 8 / yearly_energy, rel=1e-12)
-    assert np.all(np.diff(front.cost) > 0) and np.all(np.diff(front.net_power) > 0)
-
-
-def test_annuity() -> None:
-    assert annuity_factor(0.0, 10.0) == 0.1
-    assert annuity_factor(0.05, 10.0) == pytest.approx(0.05 / (1 - 1.05**-10), rel=1e-12)
+    assert cheap.best.cost_per_kilowatt_hour == pytest.approx(chosen.building_cost / 8 / yearly_energy, rel=1e-12)
+    assert np.all(np.diff(front.building_cost) > 0) and np.all(np.diff(front.net_power) > 0)
 
 
 @settings(max_examples=100, deadline=None)
@@ -446,6 +447,21 @@ def test_sizing_changes_no_hash_and_objects_are_library_names() -> None:
     plain, asked = load_case(JACKET), load_case(JACKET, ["size.rows=[3, 4]", "cost.module=3"])
     assert estimate(plain).case_hash == estimate(asked).case_hash
     assert harvest.size is size
+
+
+@pytest.mark.parametrize("terminal", [True, False])
+def test_progress_is_told_at_a_terminal_only(terminal: bool) -> None:
+    command = [sys.executable, "-m", "harvest", "size", str(JACKET), "--set", "size.rows={from=1,to=5}"]
+    ours, theirs = pty.openpty() if terminal else os.pipe()
+    done = subprocess.run(command, stdout=subprocess.PIPE, stderr=theirs, env={**os.environ}, check=True)
+    os.close(theirs)
+    try:
+        told = os.read(ours, 10_000).decode()
+    except OSError:  # a terminal whose other end is closed with nothing left to read
+        told = ""
+    os.close(ours)
+    assert ("5 of 5 choices" in told) if terminal else told == ""
+    assert b"choices\r" not in done.stdout
 
 
 def test_an_interrupted_search_leaves_no_file(tmp_path: Path) -> None:

@@ -140,6 +140,8 @@ def _of_temperatures(solved: Solved, scalars: dict[str, FloatArray]) -> Iterator
     of_case = batch.number("limits.hot_face_temperature")
     of_module = batch.number("module.maximum_hot_face_temperature")
     limit = np.fmin(of_case, of_module)
+    own = batch.number("limits.hot_face_temperature_without_load")
+    limit_opened = np.fmin(np.where(np.isfinite(own), own, of_case), of_module)
     hottest, opened = scalars["hottest_face_temperature"], scalars["open_circuit_face_temperature"]
     if np.isfinite(limit).any():
         yield BatchCheck(
@@ -150,15 +152,16 @@ def _of_temperatures(solved: Solved, scalars: dict[str, FloatArray]) -> Iterator
             graded(hottest > limit),
             lambda i: f"The hottest module face is at {celsius(hottest[i])}; allowed is {celsius(limit[i])}.",
         )
+    if np.isfinite(limit_opened).any():
         yield BatchCheck(
             "hot face without load",
             "temperature",
             opened,
-            limit,
-            graded(opened > limit),
+            limit_opened,
+            graded(opened > limit_opened),
             lambda i: (
                 f"If the load is lost, the hot face rises by {opened[i] - hottest[i]:.0f} K to {celsius(opened[i])}, "
-                "because the current no longer carries heat away."
+                f"because the current no longer carries heat away; allowed is {celsius(limit_opened[i])}."
             ),
         )
     of_cold = batch.number("limits.cold_face_temperature")
@@ -264,8 +267,7 @@ def _of_expansion(solved: Solved) -> Iterator[BatchCheck]:
 
 
 def _of_electricity(solved: Solved, scalars: dict[str, FloatArray]) -> Iterator[BatchCheck]:
-    strings = solved.open_circuit.state.string_voltage
-    highest = np.abs(strings).max(axis=0)
+    highest = np.abs(solved.open_circuit.state.string_voltage).max(axis=0)
     yield BatchCheck(
         "open-circuit voltage",
         "voltage",
@@ -281,6 +283,9 @@ def _of_electricity(solved: Solved, scalars: dict[str, FloatArray]) -> Iterator[
             )
         ),
     )
+    allowed = solved.made.batch.number("limits.maximum_open_circuit_voltage")
+    if np.isfinite(allowed).any():
+        yield _limit_check("maximum open circuit voltage", "voltage", highest, allowed, "at most")
     window = solved.made.batch.base.electrical.converter_window
     if window is not None:
         voltage = scalars["voltage"]

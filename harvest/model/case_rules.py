@@ -442,6 +442,14 @@ def prices_are_given(values: Values) -> Faults:
         yield "size.objective", f'"{objective}" needs prices; give [cost] with module and more'
 
 
+def wiring_is_searched_once(values: Values) -> Faults:
+    """Require that what a sizing groups by itself is not listed too."""
+    fields = values["size.fields"] or {}
+    listed = [path for path in ("electrical.strings_across", "electrical.layers_in_series") if path in fields]
+    if values["size.wiring"] == "search" and listed:
+        yield f"size.{listed[0]}", 'is listed beside wiring = "search", which tries all; leave one out'
+
+
 SIDE_RULES: tuple[Callable[[str, Values], Faults], ...] = (
     flow_is_given_once,
     glycol_fraction_is_given_once,
@@ -466,6 +474,7 @@ RULES: tuple[Callable[[Values], Faults], ...] = (
     own_converters_suit_the_load,
     prices_are_in_one_currency,
     prices_are_given,
+    wiring_is_searched_once,
     limits_can_be_judged,
     module_range_is_ordered,
     legs_fit_the_footprint,

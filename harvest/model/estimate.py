@@ -11,6 +11,7 @@ from harvest.model.assessment import assess
 from harvest.model.batch import Batch
 from harvest.model.case import Case, case_hash
 from harvest.model.checks import PASS, BatchCheck
+from harvest.model.costs import costs
 from harvest.model.design import BETWEEN, Design, Stream, design, maximum_power_load
 from harvest.model.driven_flow import driven_batch
 from harvest.model.loads import MATCHED, MAXIMUM_POWER, OPEN_CIRCUIT
@@ -407,6 +408,7 @@ def _scalars(solved: Solved) -> dict[str, FloatArray]:
         "coolant_lost_face_temperature": solved.coolant_lost.hot_face,
         "energy_closure": unclosed / chosen.heat_scale,
         "entropy_generation": entropy,
+        **costs(batch, powers),
     }
 
 
@@ -547,29 +549,39 @@ SEARCHED = (
     "stack_width",
     "stack_height",
     "module_mass",
+    "building_cost",
+    "cost_per_net_watt",
+    "cost_per_kilowatt_hour",
+    "payback_years",
+    "discounted_payback_years",
 )
 
 
-def search_batch(batch: Batch) -> Outcomes:
+SEARCHED_WITHOUT_LOAD = ("open_circuit_face_temperature", "highest_open_circuit_voltage")
+
+
+def search_batch(batch: Batch, *, without_load: bool = False) -> Outcomes:
     """Answer a batch at its own load only, without checks: the numbers in `SEARCHED`, as an estimate has them.
 
-    A case without an answer is NaN throughout and says why in `problem`. Raises InputError for faults of all.
+    Parameters: `batch`; `without_load`, whether to solve without current too, for `SEARCHED_WITHOUT_LOAD`. A case
+    without an answer is NaN throughout and says why in `problem`. Raises InputError for faults of all.
     """
     with np.errstate(all="ignore"):
         driven = driven_batch(batch)
         made = design(driven)
         wanting = made.faults.valid
         if not wanting.all():
-            scalars = {name: np.full(batch.cases, np.nan) for name in SEARCHED}
+            names = SEARCHED + SEARCHED_WITHOUT_LOAD * without_load
+            scalars = {name: np.full(batch.cases, np.nan) for name in names}
             problem = made.faults.text.copy()
             if wanting.any():
                 which = np.flatnonzero(wanting)
-                found = search_batch(driven.take(which))
+                found = search_batch(driven.take(which), without_load=without_load)
                 problem[which] = found.problem
                 for name, values in found.scalars.items():
                     scalars[name][which] = values
             return Outcomes(scalars, problem)
-        state = solve_stack(made.problem, maximum_power_load(driven))
+        best = state = solve_stack(made.problem, maximum_power_load(driven))
         if made.load.mode != MAXIMUM_POWER:  # the same road to other loads as in an estimate
             state = solve_stack(made.problem, Load(MATCHED), state)
         if made.load.mode not in (MAXIMUM_POWER, MATCHED):
@@ -579,9 +591,11 @@ def search_batch(batch: Batch) -> Outcomes:
         for stream, boundaries in ((made.hot, state.hot_stream), (made.cold, state.cold_stream)):
             _flag_range(made, stream, boundaries)
         hot_drop, cold_drop = _pressure_drops(made, chosen)
+        powers = _powers(made, chosen, hot_drop, cold_drop)
         scalars = {
-            **_powers(made, chosen, hot_drop, cold_drop),
-            "voltage": state.string_voltage[0],
+            **powers,
+            **costs(driven, powers),
+            "voltage": np.where(made.problem.circuit.independent, np.nan, state.string_voltage[0]),
             "hot_outlet_temperature": chosen.hot_outlet,
             "cold_outlet_temperature": chosen.cold_outlet,
             "hot_pressure_drop": hot_drop.total,
@@ -589,11 +603,23 @@ def search_batch(batch: Batch) -> Outcomes:
             "hottest_face_temperature": chosen.largest(chosen.hot_face),
             "warmest_cold_face_temperature": chosen.largest(chosen.cold_face),
             **_measures(made),
+            **(_without_load(made, best) if without_load else {}),
         }
         lost = ~np.isfinite(scalars["net_power"]) & made.faults.valid
         made.faults.add(lost, "the result is not a finite number")
     valid = made.faults.valid
     return Outcomes({name: np.where(valid, value, np.nan) for name, value in scalars.items()}, made.faults.text)
+
+
+def _without_load(made: Design, start: StackState) -> dict[str, FloatArray]:
+    """Results of a stack without current by name, (cases,), solved on the road of an estimate."""
+    opened = solve_stack(made.problem, Load(OPEN_CIRCUIT), start)
+    made.faults.add(~opened.converged & made.faults.valid, "no solution found without current")
+    solution = unfold(made, made.problem, opened)
+    return {
+        "open_circuit_face_temperature": solution.largest(solution.hot_face),
+        "highest_open_circuit_voltage": np.abs(opened.string_voltage).max(axis=0),
+    }
 
 
 def _among(answers: Estimates, which: IntArray, problem: ObjectArray, batch: Batch) -> Estimates:
@@ -643,6 +669,7 @@ def estimate(case: Case) -> Estimate:
     }
     return Estimate(
         **{name: float(value[0]) for name, value in answers.scalars.items()},
+        currency=case.cost.currency if case.cost is not None else "",
         rows=Rows(**rows),
         checks=tuple(check.of(0) for check in answers.checks) if valid else (),
         valid=valid,

@@ -94,7 +94,19 @@ class Estimate:
     )
     energy_closure: float = _result("dimensionless", "Unclosed part of the heat flow, from the reported outlets.")
     entropy_generation: float = _result("conductance", "Entropy that the stack generates per time.")
+    building_cost: float = _result("dimensionless", "Cost of building [currency]; NaN without prices, as all costs.")
+    cost_per_net_watt: float = _result("dimensionless", "Cost of building over net power [currency/W].")
+    cost_per_kilowatt_hour: float = _result(
+        "dimensionless", "Cost of building as an annuity over the net energy of a year [currency/kWh]."
+    )
+    payback_years: float = _result(
+        "dimensionless", "Years of net energy at the site's electricity_value that make up the cost of building [a]."
+    )
+    discounted_payback_years: float = _result(
+        "dimensionless", "The same with each year's worth discounted [a]; infinite if they never do."
+    )
 
+    currency: str
     rows: Rows
     checks: tuple[Check, ...]
     valid: bool

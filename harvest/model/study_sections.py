@@ -25,6 +25,11 @@ class Limits:
     """What the design must keep to; an estimate checks it, a sizing obeys it."""
 
     hot_face_temperature: float | None = _limit("temperature", "Highest allowed temperature of a module's hot face.")
+    hot_face_temperature_without_load: float | None = _limit(
+        "temperature",
+        "Highest allowed temperature of a module's hot face when the load is lost; unless given, an estimate judges by "
+        "hot_face_temperature, and a sizing does not look at it.",
+    )
     cold_face_temperature: float | None = _limit("temperature", "Highest allowed temperature of a module's cold face.")
     hot_pressure_drop: float | None = _limit("pressure difference", "Highest allowed pressure drop on the hot side.")
     cold_pressure_drop: float | None = _limit("pressure difference", "Highest allowed pressure drop on the cold side.")
@@ -34,6 +39,9 @@ class Limits:
     )
     maximum_cold_outlet_temperature: float | None = _limit(
         "temperature", "Highest allowed outlet temperature of the cold stream."
+    )
+    maximum_open_circuit_voltage: float | None = _limit(
+        "voltage", "Highest allowed voltage of a string without load, temperatures settled."
     )
     maximum_length: float | None = _limit("length", "Longest plates allowed along the flow.")
     maximum_width: float | None = _limit("length", "Widest plates allowed across the flow.")
@@ -46,6 +54,12 @@ OBJECTIVES = {
     "fewest modules": "the fewest modules that give target_net_power",
     "cost per net watt": "the least cost of building over net power; needs [cost]",
     "cost per kilowatt-hour": "the least cost of a net kilowatt-hour over the years of use; needs [cost]",
+}
+
+
+WIRINGS = {
+    "as given": "that of [electrical], with row blocks as even as can be and no longer than the longest given",
+    "search": "every grouping of columns and layers into strings, and up to 6 even blocks of rows",
 }
 
 
@@ -79,6 +93,7 @@ class Size:
         maximum=1e6,
         descriptive=True,
     )
+    wiring: str = choice(WIRINGS, "Which wiring each choice has.", default="as given", descriptive=True)
     fields: dict[str, tuple[float, ...]] | None = other(
         "axes",
         'Further fields to try, written in [size] by their whole names in quotes, such as "hot.duct.gap" = '

@@ -133,6 +133,10 @@ SIZE_KINDS = {
     "last_module_power": "power",
     "least_net_watts_per_module": "power",
     "net_power_gain": "power",
+    "net_power_without_window": "power",
+    "wirings.voltage": "voltage",
+    "wirings.open_circuit_voltage": "voltage",
+    "wirings.net_power": "power",
 }
 
 
@@ -140,9 +144,9 @@ def size_document(found: Sizing) -> dict[str, Any]:
     """A sizing: the best with its arrangement, the curve, what was tried and what binds; costs are in `currency`."""
     document: dict[str, Any] = plain(found)
     arrangement = document.pop("arrangement")
-    best = {**estimate_document(found.best), **{name: arrangement[name] for name in arrangement if name != "net_power"}}
+    best = {**arrangement, **estimate_document(found.best)}
     units = {name: unit_of(kind) for name, kind in SIZE_KINDS.items()}
-    return {**document, "best": best, "units": units, "version": VERSION}
+    return {**document, "best": best, "wirings": plain(found.wirings), "units": units, "version": VERSION}
 
 
 def fluid_document(sheet: FluidSheet) -> dict[str, Any]:

@@ -75,9 +75,9 @@ def size_figure(title: str, found: Sizing) -> Figure:
     panels[0].plot(best.module_count, best.net_power, "o", color="black", fillstyle="none", label="best")
     panels[0].set(xlabel="modules", ylabel="power [W]")
     if front is not None:
-        panels[1].step(front.cost, front.net_power, color=BLUE, where="post", label="front")
-        panels[1].plot(best.cost, best.net_power, "o", color="black", fillstyle="none", label="best")
-        panels[1].set(xlabel=f"cost of building [{found.currency or 'currency'}]", ylabel="net power [W]")
+        panels[1].step(front.building_cost, front.net_power, color=BLUE, where="post", label="front")
+        panels[1].plot(best.building_cost, best.net_power, "o", color="black", fillstyle="none", label="best")
+        panels[1].set(xlabel=f"cost of building [{found.best.currency or 'currency'}]", ylabel="net power [W]")
     for axes in panels:
         axes.grid(color="0.85", linewidth=0.6)
         axes.legend(frameon=False)

@@ -10,15 +10,21 @@ import numpy as np
 from harvest.model.case import DECLARATIONS, Case, display
 from harvest.model.study_sections import OBJECTIVES
 from harvest.quantities import format_quantity
+from harvest.report.cost_sheet import cost_sentence
 from harvest.report.layout import WIDTH, heading, table, wrapped
 from harvest.report.terminal import stack_sentence, title, verdict
+from harvest.study.limits import limit_path
 
 if TYPE_CHECKING:
-    from harvest.study.size import Arrangement, BindingLimit, CostFront, Sizing
+    from harvest.study.size import Arrangement, AtBound, BindingLimit, CostFront, Sizing
+    from harvest.study.wirings import Wiring
 
 MOST_LINES = 14
 BAR = 16
 MANY_MODULES = 1000
+ROW_BLOCKS = "electrical.row_blocks"
+WORTH_TELLING = 0.001
+"""Share of the net power from which another wiring, or a wider window, is worth a sentence."""
 
 
 def _w(value: float) -> str:
@@ -72,7 +78,7 @@ def _curve(found: Sizing) -> list[str]:
                 f"{'#' * round(BAR * share):{BAR}}  {marked.get(int(curve.module_count[i]), ''):17}",
             )
         )
-    header = ("modules", "arrangement", "generated", "drives", "net", "per module", "")
+    header = ("modules", "arrangement", "generated", "drives", "net", "a module adds", "")
     return [heading("Best arrangement at each number of modules"), *table(header, rows)]
 
 
@@ -80,8 +86,8 @@ def _flatness(found: Sizing) -> list[str]:
     lines = []
     if found.fewest_within_1_percent is not None:
         lines.append(
-            f"{found.fewest_within_1_percent:,} modules come within 1 % of the most net power, "
-            f"{found.fewest_within_5_percent:,} within 5 %."
+            f"{_fewest(found.fewest_arrangement_within_1_percent)} come within 1 % of the most net power, "
+            f"{_fewest(found.fewest_arrangement_within_5_percent)} within 5 %."
         )
     lines.append(f"The last module of the best adds {_w(found.last_module_power)}.")
     worth = found.least_net_watts_per_module
@@ -92,16 +98,41 @@ def _flatness(found: Sizing) -> list[str]:
             if found.worthwhile is not None
             else f"No module is worth {_w(worth)} here."
         )
-    elif found.arrangement.module_count >= MANY_MODULES:
+    elif found.objective == "net power" and found.arrangement.module_count >= MANY_MODULES:
+        priced = (
+            'or take size.objective = "cost per kilowatt-hour".' if found.front is not None else "or prices in [cost]."
+        )
         lines.append(
             "That many modules are best only where modules cost nothing; state what one must bring by "
-            "size.least_net_watts_per_module, or prices in [cost]."
+            f"size.least_net_watts_per_module, {priced}"
         )
     return [wrapped("", " ".join(lines))]
 
 
+def _fewest(found: Arrangement | None) -> str:
+    """Say the fewest modules with how they stand."""
+    assert found is not None
+    return f"{found.module_count:,} modules ({found.rows_count} x {found.columns_count} x {found.layers_count})"
+
+
+def _at_bounds(found: tuple[AtBound, ...]) -> list[str]:
+    """Say at which ends of what was tried the best lies."""
+    ends = [
+        f"the {each.end} {each.field}, {display(each.value, DECLARATIONS[each.field])}"
+        for each in found
+        if each.field != ROW_BLOCKS
+    ]
+    notes = [f"the best lies at {'; '.join(ends)}; a wider search may find a better one."] if ends else []
+    return notes + [
+        f"the best has {each.value:g} row blocks, the most that are tried; more may be better: list more in "
+        'electrical.row_blocks, with size.wiring = "as given".'
+        for each in found
+        if each.field == ROW_BLOCKS
+    ]
+
+
 def _limit(found: BindingLimit) -> str:
-    name = found.limit if " " in found.limit else f"limits.{found.limit}"
+    name = found.limit if " " in found.limit else limit_path(found.limit)
     change = "more" if found.net_power_gain >= 0 else "less"
     return wrapped(
         f"  {name}: ",
@@ -111,31 +142,100 @@ def _limit(found: BindingLimit) -> str:
     )
 
 
+def _blocks(wiring: Wiring) -> str:
+    lengths = wiring.row_blocks
+    return "1" if len(lengths) == 1 else f"{len(lengths)}: {'+'.join(map(str, lengths))}"
+
+
+def _in_series(wiring: Wiring) -> str:
+    least, most = wiring.modules_in_series
+    return f"{most}" if least == most else f"{least} or {most}"
+
+
+def _v(value: float) -> str:
+    return format_quantity(value, "voltage") if math.isfinite(value) else "-"
+
+
+def _wirings(case: Case, found: Sizing) -> list[str]:
+    """What other groupings of the best design's modules would give, one for each number of row blocks."""
+    own = _own_wiring(found)
+    usable = [each for each in found.wirings if not each.problem]
+    shown = list({len(each.row_blocks): each for each in reversed(usable)}.values())[::-1]
+    shown += [own] * (own not in shown)
+    window = case.electrical.converter_window
+    header = ("strings", "in series", "across", "layers", "row blocks", "at load", "no load", "net", "lost", "")
+    rows = [
+        (
+            f"{each.strings:,}",
+            _in_series(each),
+            f"{each.strings_across}",
+            f"{each.layers_in_series}",
+            _blocks(each),
+            _v(each.voltage),
+            _v(each.open_circuit_voltage),
+            _w(each.net_power),
+            f"{100 * each.loss:.1f} %" if math.isfinite(each.loss) else "-",
+            ("chosen" if case.size is not None and case.size.wiring == "search" else "as given") * (each is own)
+            + (f"  {each.problem}" if each.problem else ""),
+        )
+        for each in shown
+    ]
+    text = (
+        f"{len(usable)} of {len(found.wirings)} groupings keep to every limit"
+        + (f" with a converter from {_v(window[0])} to {_v(window[1])}" if window else "")
+        + "; the best with each number of row blocks is told. Lost is what it generates less than every row with a "
+        "load of its own."
+    )
+    lines = [heading("Wiring of the best design"), wrapped("  ", text), *table(header, rows)]
+    if found.net_power_without_window is not None:
+        lines.append(
+            wrapped(
+                "  ",
+                f"The converter's window holds the voltage at {_v(own.voltage)}; without it this wiring would give "
+                f"{_w(found.net_power_without_window)} net.",
+            )
+        )
+    highest = window[1] if window else math.inf
+    if own.open_circuit_voltage > highest and case.limits.maximum_open_circuit_voltage is None:
+        lines.append(
+            wrapped(
+                "  ",
+                f"Without load it stands at {_v(own.open_circuit_voltage)}, above the converter's {_v(highest)}; "
+                "limits.maximum_open_circuit_voltage keeps a sizing below a voltage.",
+            )
+        )
+    if usable and usable[0].net_power - own.net_power > WORTH_TELLING * abs(own.net_power):
+        lines.append(wrapped("  ", 'Another wiring gives more: try size.wiring = "search".'))
+    return lines
+
+
+def _own_wiring(found: Sizing) -> Wiring:
+    """The grouping that the best design has."""
+    electrical = found.best_case.electrical
+    own = (
+        electrical.strings_across,
+        electrical.layers_in_series,
+        electrical.row_blocks or (found.best_case.stack.rows,),
+    )
+    return next(each for each in found.wirings if (each.strings_across, each.layers_in_series, each.row_blocks) == own)
+
+
 def _front(front: CostFront, currency: str) -> list[str]:
     rows = [
         (
-            f"{front.cost[i]:,.0f}",
+            f"{front.building_cost[i]:,.0f}",
             _w(front.net_power[i]),
-            f"{front.cost[i] / front.net_power[i]:.4g}" if front.net_power[i] > 0 else "-",
+            f"{front.building_cost[i] / front.net_power[i]:.4g}",
             f"{front.module_count[i]:,}",
             f"{front.rows_count[i]} x {front.columns_count[i]} x {front.layers_count[i]}",
         )
-        for i in _shown(len(front.cost), [])
+        for i in _shown(len(front.building_cost), [])
     ]
     head = f"cost [{currency or 'currency'}]"
     return [
         heading("Net power against cost: nothing is both cheaper and stronger"),
         *table((head, "net", "cost per watt", "modules", "rows x columns x layers"), rows),
     ]
-
-
-def _costs(found: Sizing) -> str:
-    currency = found.currency or "(currency)"
-    text = (
-        f"It costs {found.arrangement.cost:,.0f} {currency}: {found.cost_per_net_watt:.4g} {currency} a net watt, "
-        f"{found.cost_per_kilowatt_hour:.4g} {currency} a kilowatt-hour"
-    )
-    return text + (f", paid back in {found.payback_years:.3g} years." if math.isfinite(found.payback_years) else ".")
 
 
 def size_report(case: Case, found: Sizing) -> str:
@@ -147,31 +247,17 @@ def size_report(case: Case, found: Sizing) -> str:
         "",
         wrapped("", f"Best for {OBJECTIVES[found.objective].partition(';')[0]}: {_arranged(found.arrangement)}."),
         f"Net power {_w(found.best.net_power)} of {_w(found.best.generated_power)} generated.",
-        *([wrapped("", _costs(found))] if found.front is not None else []),
+        *([wrapped("", cost_sentence(case, found.best))] if case.cost is not None else []),
         *_flatness(found),
         wrapped("", stack_sentence(found.best_case, found.best) + "."),
         wrapped("", verdict(found.best)),
     ]
-    if found.net_power_without_window is not None:
-        lines.append(
-            wrapped(
-                "Note: ",
-                f"the converter's window holds the voltage at {format_quantity(found.best.voltage, 'voltage')}; "
-                f"without it this design would give {_w(found.net_power_without_window)} net. Try other wiring by "
-                '"electrical.strings_across" and "electrical.layers_in_series" in [size].',
-            )
-        )
-    for each in found.at_bounds:
-        lines.append(
-            wrapped(
-                "Note: ",
-                f"the best lies at the {each.end} {each.field} that was tried, "
-                f"{display(each.value, DECLARATIONS[each.field])}; a wider search may find a better one.",
-            )
-        )
+    lines += [wrapped("Note: ", text) for text in _at_bounds(found.at_bounds)]
     lines += _curve(found)
-    if found.front is not None:
-        lines += _front(found.front, found.currency)
+    if found.front is not None and len(found.front.net_power):
+        lines += _front(found.front, found.best.currency)
+    if found.wirings:
+        lines += _wirings(case, found)
     lines.append(heading("Limits"))
     lines += [_limit(each) for each in found.binding_limits]
     if found.limits_together is not None:
@@ -180,7 +266,8 @@ def size_report(case: Case, found: Sizing) -> str:
         lines.append("  None keeps the best from being better.")
     lines.append(heading("Choices"))
     refined = f", and {found.choices_refined:,} more around the best" if found.choices_refined else ""
-    lines.append(f"  {found.choices_tried:,} tried{refined}")
-    lines += [f"  {count:,} beyond limits.{name}" for name, count in found.choices_beyond_limits.items()]
+    wired = ", each wiring counted" if found.wiring == "search" else ""
+    lines.append(f"  {found.choices_tried:,} tried{wired}{refined}")
+    lines += [f"  {count:,} beyond {limit_path(name)}" for name, count in found.choices_beyond_limits.items()]
     lines += [wrapped(f"  {count:,} without an answer: ", text) for text, count in found.choices_invalid.items()]
     return "\n".join(lines)

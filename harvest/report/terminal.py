@@ -12,6 +12,7 @@ from harvest.model.results import Estimate
 from harvest.model.stream_sections import HEAT_SINK, StreamSide
 from harvest.quantities import format_quantity, one_line
 from harvest.report.cautions import cautions
+from harvest.report.cost_sheet import cost_lines
 from harvest.report.layout import WIDTH, heading, pairs, table, wrapped
 from harvest.version import VERSION
 
@@ -43,7 +44,7 @@ def title(case: Streams) -> str:
 
 
 def _count(number: int, noun: str) -> str:
-    return f"{number} {noun}" + "s" * (number != 1)
+    return f"{number:,} {noun}" + "s" * (number != 1)
 
 
 def stack_sentence(case: Case, answer: Estimate) -> str:
@@ -271,6 +272,7 @@ def estimate_report(case: Case, answer: Estimate) -> str:
         *_temperatures(answer),
         heading("To build"),
         *pairs(_to_build(answer)),
+        *([heading("Cost"), *pairs(cost_lines(case, answer))] if case.cost is not None else []),
         heading("Checks"),
         *_checks(answer.checks),
         heading("Assumed, because not given"),

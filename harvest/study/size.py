@@ -2,7 +2,9 @@
 
 from __future__ import annotations
 
+import copy
 import dataclasses
+import functools
 import re
 from collections.abc import Callable, Iterator
 from dataclasses import dataclass, field
@@ -14,12 +16,13 @@ from harvest.errors import InputError, NoAnswerError
 from harvest.model.batch import Batch
 from harvest.model.case import DECLARATIONS, Case
 from harvest.model.case_fields import MOST_MODULES
-from harvest.model.costs import building_cost, cost_per_kilowatt_hour
 from harvest.model.design import BETWEEN
 from harvest.model.estimate import Outcomes, estimate, search_batch
 from harvest.model.reading import replace
 from harvest.model.results import Estimate
 from harvest.physics.arrays import BoolArray, FloatArray, IntArray
+from harvest.study.limits import asks_without_load, bounded_results, broken_limits, limit_path
+from harvest.study.wirings import MOST_BLOCKS, WIRING, Wiring, even_blocks, groupings, wired, wirings
 
 SEARCH_CELLS = 200_000
 """Rows times cases that are prepared and solved at a time, so that memory does not grow with the choices."""
@@ -33,20 +36,10 @@ MOST_WITHOUT_ESTIMATE = 20
 """Best choices in turn that may lack a full estimate before the search gives up."""
 
 COUNTS = ("stack.rows", "stack.columns", "stack.layers")
-LIMITS = {
-    "hot_face_temperature": ("hottest_face_temperature", 1.0),
-    "cold_face_temperature": ("warmest_cold_face_temperature", 1.0),
-    "hot_pressure_drop": ("hot_pressure_drop", 1.0),
-    "cold_pressure_drop": ("cold_pressure_drop", 1.0),
-    "back_pressure": ("hot_pressure_drop", 1.0),
-    "minimum_hot_outlet_temperature": ("hot_outlet_temperature", -1.0),
-    "maximum_cold_outlet_temperature": ("cold_outlet_temperature", 1.0),
-    "maximum_length": ("stack_length", 1.0),
-    "maximum_width": ("stack_width", 1.0),
-    "maximum_height": ("stack_height", 1.0),
-    "maximum_module_mass": ("module_mass", 1.0),
-}
-"""Limits of the case with the result they bound, from above (1) or below (-1)."""
+BLOCKS = "row blocks"
+"""Name under which a choice keeps the number of its row blocks, where the wiring is searched."""
+KEPT = ("net_power", "building_cost", "cost_per_net_watt", "cost_per_kilowatt_hour")
+"""Results of every choice that objectives and the front of cost look at."""
 
 Progress = Callable[[int, int], None]
 
@@ -60,7 +53,10 @@ class Arrangement:
     columns_count: int
     layers_count: int
     net_power: float
-    cost: float
+    building_cost: float
+    strings_across: int
+    layers_in_series: int
+    row_blocks: tuple[int, ...] | None
     fields: dict[str, float]
 
 
@@ -83,9 +79,9 @@ class SizeCurve:
 
 @dataclass(frozen=True)
 class CostFront:
-    """Choices of which none is both cheaper and stronger; arrays, rising in cost."""
+    """Choices with net power of which none is both cheaper and stronger; arrays, rising in cost."""
 
-    cost: FloatArray
+    building_cost: FloatArray
     net_power: FloatArray
     module_count: IntArray
     rows_count: IntArray
@@ -116,6 +112,7 @@ class Sizing:
     """The best design of all choices, and how the choice stands among the others."""
 
     objective: str
+    wiring: str
     best: Estimate
     arrangement: Arrangement
     best_case: Case = field(compare=False)
@@ -123,6 +120,8 @@ class Sizing:
     most_net_power: float = np.nan
     fewest_within_1_percent: int | None = None
     fewest_within_5_percent: int | None = None
+    fewest_arrangement_within_1_percent: Arrangement | None = None
+    fewest_arrangement_within_5_percent: Arrangement | None = None
     last_module_power: float = np.nan
     least_net_watts_per_module: float | None = None
     worthwhile: Arrangement | None = None
@@ -135,10 +134,13 @@ class Sizing:
     at_bounds: tuple[AtBound, ...] = ()
     net_power_without_window: float | None = None
     front: CostFront | None = None
-    cost_per_net_watt: float = np.nan
-    cost_per_kilowatt_hour: float = np.nan
-    payback_years: float = np.nan
-    currency: str = ""
+
+    @functools.cached_property
+    def wirings(self) -> tuple[Wiring, ...]:
+        """Every wiring of the best where something bounds a voltage or wiring was searched; solved when asked for."""
+        electrical, limits = self.best_case.electrical, self.best_case.limits
+        bounded = electrical.converter_window is not None or limits.maximum_open_circuit_voltage is not None
+        return wirings(self.best_case) if bounded or self.wiring == "search" else ()
 
 
 class _Axes:
@@ -148,6 +150,7 @@ class _Axes:
         size = case.size
         if size is None:
             raise InputError("size: the section [size] is missing; write it with rows = { from = 1, to = 40 } and more")
+        self.size = size
         given = (size.rows, size.columns, size.layers)
         stated = (case.stack.rows, case.stack.columns, case.stack.layers)
         self.values: dict[str, FloatArray] = {
@@ -156,12 +159,29 @@ class _Axes:
         self.values.update({path: np.array(axis) for path, axis in (size.fields or {}).items()})
         self.shape = tuple(len(axis) for axis in self.values.values())
         self.choices = int(np.prod(self.shape, dtype=float))
-        if self.choices > MOST_CHOICES:
-            raise InputError(f"size: {self.choices:,} choices; at most {MOST_CHOICES:,} are tried, so use longer steps")
+        self.wirings = self._most_wirings() if size.wiring == "search" else 1
+        if self.choices * self.wirings > MOST_CHOICES:
+            each = f" with up to {self.wirings} wirings each" if self.wirings > 1 else ""
+            raise InputError(
+                f"size: {self.choices:,} choices{each}; at most {MOST_CHOICES:,} are tried, so use longer steps"
+            )
         if len(self.continuous) > MOST_REFINED:
             raise InputError(
                 f"size: {len(self.continuous)} fields with a unit are varied; at most {MOST_REFINED} can be refined"
             )
+
+    def _most_wirings(self) -> int:
+        """Wirings that an arrangement can have at most."""
+        columns, layers = (np.unique(self.values[path]).astype(int).tolist() for path in COUNTS[1:])
+        return MOST_BLOCKS * max(len(groupings(across, high)) for across in columns for high in layers)
+
+    def at_values(self, fixed: dict[str, FloatArray]) -> _Axes:
+        """The same axes, some of them with other values."""
+        other = copy.copy(self)
+        other.values = {**self.values, **fixed}
+        other.shape = tuple(len(axis) for axis in other.values.values())
+        other.choices = int(np.prod(other.shape, dtype=float))
+        return other
 
     @property
     def continuous(self) -> tuple[str, ...]:
@@ -173,11 +193,12 @@ class _Axes:
     def chunks(self, segments: int) -> Iterator[IntArray]:
         """Places of the choices, a bearable number at a time."""
         rows, inner = self.values["stack.rows"], self.choices // self.shape[0]
+        cells = SEARCH_CELLS / (segments * self.wirings)
         first = 0
         while first < self.choices:
-            after = first + max(1, int(SEARCH_CELLS / (rows[first // inner] * segments)))
+            after = first + max(1, int(cells / rows[first // inner]))
             most = rows[min(after, self.choices) // inner if after < self.choices else -1]
-            after = min(first + max(1, int(SEARCH_CELLS / (most * segments))), self.choices)
+            after = min(first + max(1, int(cells / most)), self.choices)
             yield np.arange(first, after)
             first = after
 
@@ -193,15 +214,13 @@ class _Tally:
     def __init__(self, case: Case) -> None:
         self.case = case
         self.parts: list[dict[str, FloatArray]] = []
-        self.limits = {
-            name: (result, sign) for name, (result, sign) in LIMITS.items() if np.isfinite(_limit(case, name))
-        }
+        self.kept = sorted({*KEPT, *bounded_results(case)})
+        self.searches_wiring = case.size is not None and case.size.wiring == "search"
         self.reasons: dict[str, tuple[str, int]] = {}
         self.choices = 0
 
     def add(self, values: dict[str, FloatArray], *, counted: bool = True) -> None:
         """Solve choices and keep their numbers; with `counted` their faults are counted too."""
-        cases = len(values["stack.rows"])
         counts = values["stack.rows"] * values["stack.columns"] * values["stack.layers"]
         bearable = counts <= MOST_MODULES
         if not bearable.all():
@@ -211,35 +230,48 @@ class _Tally:
             if bearable.any():
                 self.add({path: each[bearable] for path, each in values.items()}, counted=counted)
             return
-        rows = values["stack.rows"]
-        if self.case.electrical.row_blocks is not None and np.ptp(rows) > 0:  # blocks are of one structure in a batch
-            for each in np.unique(rows):
-                self.add({path: value[rows == each] for path, value in values.items()}, counted=counted)
+        if self.searches_wiring and BLOCKS not in values:
+            for part in wired(values, BLOCKS):
+                self.add(part, counted=counted)
             return
-        blocks = row_blocks(self.case, int(rows[0]))
-        base = dataclasses.replace(self.case, electrical=dataclasses.replace(self.case.electrical, row_blocks=blocks))
-        batch = Batch(base, cases, values)
-        found = search_batch(batch)
-        if counted:
-            self.choices += cases
-            for problem in found.problem[found.problem != ""]:
-                self.note(problem.split(BETWEEN)[0], 1)
-        self.keep(batch, values, found)
+        for blocks, which in self.structures(values):
+            part = {path: each[which] for path, each in values.items()}
+            base = dataclasses.replace(
+                self.case, electrical=dataclasses.replace(self.case.electrical, row_blocks=blocks)
+            )
+            batch = Batch(base, len(part["stack.rows"]), {path: each for path, each in part.items() if path != BLOCKS})
+            found = search_batch(batch, without_load=asks_without_load(self.case))
+            if counted:
+                self.choices += batch.cases
+                for problem in found.problem[found.problem != ""]:
+                    self.note(problem.split(BETWEEN)[0], 1)
+            self.keep(part, found)
 
-    def keep(self, batch: Batch, values: dict[str, FloatArray], found: Outcomes) -> None:
+    def structures(self, values: dict[str, FloatArray]) -> Iterator[tuple[tuple[int, ...] | None, BoolArray]]:
+        """Row blocks and where choices have them, for a batch has one structure."""
+        rows = values["stack.rows"]
+        counts = values.get(BLOCKS)
+        if counts is None and self.case.electrical.row_blocks is None:
+            yield None, np.ones(len(rows), dtype=bool)
+            return
+        single = np.zeros(len(rows), dtype=bool) if counts is None else counts == 1
+        if single.any():
+            yield None, single
+        several = np.column_stack([rows, rows if counts is None else counts])
+        for each in np.unique(several[~single], axis=0):
+            count = None if counts is None else int(each[1])
+            yield row_blocks(self.case, int(each[0]), count), ~single & (several == each).all(axis=1)
+
+    def keep(self, values: dict[str, FloatArray], found: Outcomes) -> None:
         """Keep the choices that have an answer."""
         valid = found.problem == ""
         scalars = found.scalars
-        cost = building_cost(batch, scalars)
         part = {
             **values,
             "module_count": values["stack.rows"] * values["stack.columns"] * values["stack.layers"],
             "generated_power": scalars["generated_power"],
             "drive_power": scalars["hot_drive_power"] + scalars["cold_drive_power"],
-            "net_power": scalars["net_power"],
-            "cost": cost,
-            "cost_per_kilowatt_hour": cost_per_kilowatt_hour(batch, cost, scalars["net_power"]),
-            **{name: scalars[result] for name, (result, _) in self.limits.items()},
+            **{name: scalars[name] for name in self.kept},
         }
         self.parts.append({name: np.asarray(each)[valid] for name, each in part.items()})
 
@@ -253,20 +285,7 @@ class _Tally:
         """Every choice with an answer so far."""
         names = self.parts[0] if self.parts else {}
         numbers = {name: np.concatenate([part[name] for part in self.parts]) for name in names}
-        beyond = {
-            name: sign * numbers[name] > sign * _limit(self.case, name) for name, (_, sign) in self.limits.items()
-        }
-        return _Found(self.case, numbers, beyond)
-
-
-def _limit(case: Case, name: str) -> float:
-    """A limit in SI; NaN where the case has none. Faces obey the module's limit too."""
-    given = getattr(case.limits, name)
-    limit = np.nan if given is None else float(given)
-    if name == "hot_face_temperature":
-        of_module = case.module.maximum_hot_face_temperature
-        return float(np.fmin(limit, np.nan if of_module is None else of_module))
-    return limit
+        return _Found(self.case, numbers, broken_limits(self.case, numbers) if numbers else {})
 
 
 @dataclass(frozen=True)
@@ -289,17 +308,14 @@ class _Found:
         """Places of choices that meet the objective, the best first; of equals the one with fewer modules."""
         size = self.case.size
         assert size is not None
-        net, count, cost = (self.numbers[name] for name in ("net_power", "module_count", "cost"))
+        net, count = self.numbers["net_power"], self.numbers["module_count"]
         if size.objective == "fewest modules":
             reached = among & (net >= float(size.target_net_power or 0.0))
             keys: tuple[FloatArray, ...] = (-net, count)
         elif size.objective == "net power":
             reached, keys = among, (count, -net)
         else:
-            reached = among & (net > 0)
-            with np.errstate(all="ignore"):
-                each = cost / net if size.objective == "cost per net watt" else self.numbers["cost_per_kilowatt_hour"]
-            keys = (count, each)
+            reached, keys = among & (net > 0), (count, self.numbers[size.objective.replace(" ", "_").replace("-", "_")])
         places = np.flatnonzero(reached)
         return places[np.lexsort(tuple(key[places] for key in keys))]
 
@@ -308,9 +324,36 @@ class _Found:
         numbers = {name: float(each[place]) for name, each in self.numbers.items()}
         fields = {path: numbers[path] for path in (self.case.size.fields or {} if self.case.size else {})}
         rows, columns, layers = (int(numbers[path]) for path in COUNTS)
+        electrical = self.case.electrical
+        count = int(numbers[BLOCKS]) if BLOCKS in numbers else None
         return Arrangement(
-            int(numbers["module_count"]), rows, columns, layers, numbers["net_power"], numbers["cost"], fields
+            module_count=int(numbers["module_count"]),
+            rows_count=rows,
+            columns_count=columns,
+            layers_count=layers,
+            net_power=numbers["net_power"],
+            building_cost=numbers["building_cost"],
+            strings_across=int(numbers.get(WIRING[0], electrical.strings_across)),
+            layers_in_series=int(numbers.get(WIRING[1], electrical.layers_in_series)),
+            row_blocks=row_blocks(self.case, rows, count),
+            fields=fields,
         )
+
+    def values(self, place: int, axes: _Axes) -> dict[str, float]:
+        """What one choice varies, its wiring too where that was searched."""
+        paths = (*axes.values, *((*WIRING, BLOCKS) if BLOCKS in self.numbers else ()))
+        return {path: float(self.numbers[path][place]) for path in paths}
+
+    def with_wiring(self, place: int, wiring: Wiring) -> int:
+        """Place of the same arrangement with another wiring; the place itself where it was not searched."""
+        same = self.allowed()
+        for name in (*COUNTS, *(self.case.size.fields or {} if self.case.size else {})):
+            same &= self.numbers[name] == self.numbers[name][place]
+        wanted = (wiring.strings_across, wiring.layers_in_series, len(wiring.row_blocks))
+        for name, value in zip((*WIRING, BLOCKS), wanted, strict=True):
+            same &= self.numbers[name] == value
+        found = np.flatnonzero(same)
+        return int(found[0]) if len(found) else place
 
 
 def _no_curve() -> SizeCurve:
@@ -322,8 +365,8 @@ def _whole(found: _Found, name: str, places: IntArray) -> IntArray:
     return found.numbers[name][places].astype(np.int64)
 
 
-def _curve(found: _Found, among: BoolArray) -> SizeCurve:
-    """Strongest choice at each number of modules."""
+def _curve(found: _Found, among: BoolArray) -> tuple[SizeCurve, IntArray]:
+    """Strongest choice at each number of modules, and their places."""
     places = np.flatnonzero(among)
     net, count = found.numbers["net_power"][places], found.numbers["module_count"][places]
     order = np.lexsort((-net, count))
@@ -331,7 +374,7 @@ def _curve(found: _Found, among: BoolArray) -> SizeCurve:
     chosen = places[order[first]]
     net = found.numbers["net_power"][chosen]
     rows, columns, layers = (_whole(found, path, chosen) for path in COUNTS)
-    return SizeCurve(
+    curve = SizeCurve(
         counts.astype(np.int64),
         rows,
         columns,
@@ -341,6 +384,7 @@ def _curve(found: _Found, among: BoolArray) -> SizeCurve:
         net,
         marginal_power(counts, net),
     )
+    return curve, chosen
 
 
 def marginal_power(counts: FloatArray, net_power: FloatArray) -> FloatArray:
@@ -362,16 +406,16 @@ def marginal_power(counts: FloatArray, net_power: FloatArray) -> FloatArray:
 
 
 def _front(found: _Found, among: BoolArray) -> CostFront | None:
-    """Choices that nothing beats in both cost and net power; None without prices."""
+    """Choices with net power that nothing beats in both cost and net power; None without prices."""
     if found.case.cost is None:
         return None
-    places = np.flatnonzero(among)
-    cost, net = found.numbers["cost"][places], found.numbers["net_power"][places]
+    places = np.flatnonzero(among & (found.numbers["net_power"] > 0))
+    cost, net = found.numbers["building_cost"][places], found.numbers["net_power"][places]
     order = np.lexsort((-net, cost))
-    before = np.concatenate([[-np.inf], np.maximum.accumulate(net[order])[:-1]])
+    before = np.concatenate([[-np.inf], np.maximum.accumulate(net[order])])[: len(order)]
     chosen = places[order[net[order] > before]]
     return CostFront(
-        found.numbers["cost"][chosen],
+        found.numbers["building_cost"][chosen],
         found.numbers["net_power"][chosen],
         _whole(found, "module_count", chosen),
         *(_whole(found, path, chosen) for path in COUNTS),
@@ -390,7 +434,7 @@ def _refine(tally: _Tally, axes: _Axes) -> int:
         order = found.order(found.allowed())
         if not len(order):
             return tried
-        best = {path: float(found.numbers[path][order[0]]) for path in axes.values}
+        best = found.values(int(order[0]), axes)
         around = []
         for path in fields:
             ends = axes.values[path][[0, -1]]
@@ -411,28 +455,25 @@ def _counts_again(tally: _Tally, axes: _Axes, fields: tuple[str, ...]) -> int:
     """Try everything that has no unit at the best values of the fields that have one."""
     found = tally.all()
     place = found.order(found.allowed())[0]
-    whole = _Axes.__new__(_Axes)
-    whole.values = {
-        path: found.numbers[path][[place]] if path in fields else axis for path, axis in axes.values.items()
-    }
-    whole.shape = tuple(len(axis) for axis in whole.values.values())
-    whole.choices = int(np.prod(whole.shape, dtype=float))
+    whole = axes.at_values({path: found.numbers[path][[place]] for path in fields})
     for places in whole.chunks(tally.case.stack.segments):
         tally.add(whole.at(places), counted=False)
     return whole.choices
 
 
-def _at_bounds(axes: _Axes, arrangement: dict[str, float]) -> tuple[AtBound, ...]:
+def _at_bounds(axes: _Axes, chosen: dict[str, float]) -> tuple[AtBound, ...]:
     """Axes at whose end the best lies; below one of a whole number there is nothing."""
     found = []
     for path, axis in axes.values.items():
-        value = arrangement[path]
+        value = chosen[path]
         if len(axis) < 2:
             continue
         if value >= axis[-1]:
             found.append(AtBound(path, "highest", value))
         elif value <= axis[0] and not (DECLARATIONS[path].form == "integer" and value <= 1):
             found.append(AtBound(path, "lowest", value))
+    if chosen.get(BLOCKS) == MOST_BLOCKS < chosen["stack.rows"]:
+        found.append(AtBound("electrical.row_blocks", "highest", float(MOST_BLOCKS)))
     return tuple(found)
 
 
@@ -458,6 +499,7 @@ def size(case: Case, progress: Progress | None = None) -> Sizing:
     for what concerns all choices, NoAnswerError where no choice has an answer within the limits.
     """
     axes, tally = _Axes(case), _Tally(case)
+    wanted = axes.size
     for places in axes.chunks(case.stack.segments):
         tally.add(axes.at(places))
         if progress is not None:
@@ -472,34 +514,39 @@ def size(case: Case, progress: Progress | None = None) -> Sizing:
     if not len(order):
         raise NoAnswerError("\n".join(_none_meets(found, beyond, tally)))
     for place in order[:MOST_WITHOUT_ESTIMATE]:
-        chosen = {path: float(found.numbers[path][place]) for path in axes.values}
+        chosen = found.values(int(place), axes)
+        wired_alike = found.with_wiring(int(place), wirings(designed(case, chosen))[0]) if BLOCKS in chosen else place
+        chosen = found.values(int(wired_alike), axes)
         best_case = designed(case, chosen)
         best = estimate(best_case)
         if best.valid:
             break
         tally.note(best.problem.split(BETWEEN)[0], 1)
-        found.numbers["net_power"][place] = -np.inf
+        found.numbers["net_power"][wired_alike] = -np.inf
     else:
         raise NoAnswerError(f"the best choices have no estimate: {best.problem}")
     order = order[np.flatnonzero(order == place)[0] :]
     allowed = found.allowed() & np.isfinite(found.numbers["net_power"])
-    curve = _curve(found, allowed)
+    curve, of_curve = _curve(found, allowed)
     most = float(curve.net_power.max())
-    arrangement = found.arrangement(int(order[0]))
+    arrangement = found.arrangement(int(wired_alike))
     single, together = _binding(found, order)
-    worth = case.size.least_net_watts_per_module if case.size is not None else None
+    within = {share: _fewest(found, curve, of_curve, (1.0 - share) * most) for share in (0.01, 0.05)}
     return Sizing(
-        objective=case.size.objective if case.size is not None else "",
+        objective=wanted.objective,
+        wiring=wanted.wiring,
         best=best,
         arrangement=arrangement,
         best_case=best_case,
         curve=curve,
         most_net_power=most,
-        fewest_within_1_percent=_fewest(curve, 0.99 * most),
-        fewest_within_5_percent=_fewest(curve, 0.95 * most),
+        fewest_within_1_percent=within[0.01].module_count if within[0.01] else None,
+        fewest_within_5_percent=within[0.05].module_count if within[0.05] else None,
+        fewest_arrangement_within_1_percent=within[0.01],
+        fewest_arrangement_within_5_percent=within[0.05],
         last_module_power=float(curve.marginal_power[np.searchsorted(curve.module_count, arrangement.module_count)]),
-        least_net_watts_per_module=worth,
-        worthwhile=_worthwhile(found, allowed, worth),
+        least_net_watts_per_module=wanted.least_net_watts_per_module,
+        worthwhile=_worthwhile(found, allowed, wanted.least_net_watts_per_module),
         choices_tried=tally.choices,
         choices_refined=refined,
         choices_invalid=dict(tally.reasons.values()),
@@ -509,7 +556,6 @@ def size(case: Case, progress: Progress | None = None) -> Sizing:
         at_bounds=_at_bounds(axes, chosen),
         net_power_without_window=_without_window(best_case, best),
         front=_front(found, allowed),
-        **_worth_of(case, arrangement),
     )
 
 
@@ -523,23 +569,6 @@ def _without_window(case: Case, best: Estimate) -> float | None:
     return float(found.scalars["net_power"][0])
 
 
-def _worth_of(case: Case, best: Arrangement) -> dict[str, Any]:
-    """Costs of the best against what it gives; payback where electricity has a price in the same currency."""
-    if case.cost is None:
-        return {}
-    net = np.array([best.net_power])
-    each = float(cost_per_kilowatt_hour(Batch(case), np.array([best.cost]), net)[0])
-    price = case.site.electricity_value
-    one_currency = price is not None and price.currency == case.cost.currency
-    yearly = price.amount * best.net_power * case.site.yearly_operation if price is not None and one_currency else 0.0
-    return {
-        "cost_per_net_watt": best.cost / best.net_power if best.net_power > 0 else np.inf,
-        "cost_per_kilowatt_hour": each,
-        "payback_years": best.cost / yearly if yearly > 0 else np.nan,
-        "currency": case.cost.currency,
-    }
-
-
 def _said(tally: _Tally) -> list[str]:
     return [f"{count:,} choices: {text}" for text, count in tally.reasons.values()]
 
@@ -549,17 +578,17 @@ def _none_meets(found: _Found, beyond: dict[str, int], tally: _Tally) -> list[st
     lines = [f"no choice keeps to the limits: {len(found.numbers['net_power']):,} have an answer"]
     if found.allowed().any():
         lines = [f"no choice meets the objective; the most net power within the limits is {_most(found):.6g} W"]
-    return [*lines, *(f"{count:,} choices: beyond limits.{name}" for name, count in beyond.items()), *_said(tally)]
+    return [*lines, *(f"{count:,} choices: beyond {limit_path(name)}" for name, count in beyond.items()), *_said(tally)]
 
 
 def _most(found: _Found) -> float:
     return float(found.numbers["net_power"][found.allowed()].max())
 
 
-def _fewest(curve: SizeCurve, net_power: float) -> int | None:
-    """Fewest modules that give a net power [W]; None where the most there is is a loss."""
+def _fewest(found: _Found, curve: SizeCurve, of_curve: IntArray, net_power: float) -> Arrangement | None:
+    """Arrangement of fewest modules that gives a net power [W]; None where the most there is is a loss."""
     enough = np.flatnonzero(curve.net_power >= net_power)
-    return int(curve.module_count[enough[0]]) if net_power > 0 and len(enough) else None
+    return found.arrangement(int(of_curve[enough[0]])) if net_power > 0 and len(enough) else None
 
 
 def _worthwhile(found: _Found, among: BoolArray, worth: float | None) -> Arrangement | None:
@@ -571,22 +600,28 @@ def _worthwhile(found: _Found, among: BoolArray, worth: float | None) -> Arrange
     return found.arrangement(place) if surplus[place] > 0 else None
 
 
-def row_blocks(case: Case, rows: int) -> tuple[int, ...] | None:
-    """Blocks of a stack with other rows: as even as can be, none longer than the longest given, short ones first."""
+def row_blocks(case: Case, rows: int, count: int | None = None) -> tuple[int, ...] | None:
+    """Row blocks of a stack with other rows, as even as can be, short ones first.
+
+    So many as `count`; unless given, as few as leave none longer than the longest of the case.
+    """
     given = case.electrical.row_blocks
+    if count is not None:
+        return even_blocks(rows, count) if count > 1 or given is not None else None
     if given is None or rows == case.stack.rows:
         return given
-    count = -(-rows // max(given))
-    length, longer = divmod(rows, count)
-    return (length,) * (count - longer) + (length + 1,) * longer
+    return even_blocks(rows, -(-rows // max(given)))
 
 
 def designed(case: Case, values: dict[str, float]) -> Case:
     """Case of one choice, without [size], as it would be read from a file."""
     whole: dict[str, Any] = {
-        path: int(value) if DECLARATIONS[path].form == "integer" else value for path, value in values.items()
+        path: int(value) if DECLARATIONS[path].form == "integer" else value
+        for path, value in values.items()
+        if path != BLOCKS
     }
-    if case.electrical.row_blocks is not None:
-        whole["electrical.row_blocks"] = row_blocks(case, whole["stack.rows"])
+    blocks = row_blocks(case, whole["stack.rows"], int(values[BLOCKS]) if BLOCKS in values else None)
+    if blocks is not None:
+        whole["electrical.row_blocks"] = blocks
     bare = dataclasses.replace(case, given={name: each for name, each in case.given.items() if name != "size"})
     return replace(bare, whole)
