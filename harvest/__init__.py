@@ -22,6 +22,7 @@ if TYPE_CHECKING:
     from harvest.model.results import Estimate, Estimates
     from harvest.report.memo.compose import Memo, memo
     from harvest.study.bench_record import fit_bench_record, read_bench_record
+    from harvest.study.doubt import Doubt, doubt
     from harvest.study.modules import load_module
     from harvest.study.screen import Screening, screen
     from harvest.study.size import Sizing, size
@@ -33,6 +34,8 @@ _HOMES = {
     "Batch": "harvest.model.batch",
     "Case": "harvest.model.case",
     "CaseError": "harvest.errors",
+    "Doubt": "harvest.study.doubt",
+    "doubt": "harvest.study.doubt",
     "Estimate": "harvest.model.results",
     "Estimates": "harvest.model.results",
     "HarvestError": "harvest.errors",
@@ -65,6 +68,7 @@ __all__ = [
     "Batch",
     "Case",
     "CaseError",
+    "Doubt",
     "Estimate",
     "Estimates",
     "HarvestError",
@@ -78,6 +82,7 @@ __all__ = [
     "WhatIf",
     "WhatIfOptions",
     "__version__",
+    "doubt",
     "estimate",
     "estimate_batch",
     "fit_bench_record",

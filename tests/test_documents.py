@@ -19,7 +19,7 @@ from harvest.report.memo.reference import value_reference
 from harvest.report.reference import CheckedNumber, case_reference, check_list, result_reference
 from harvest.study.screen import NUMBERS
 from tests.test_published import CHECKS
-from tests.write_documents import DOCS, ROOT, checked_numbers, command_line, readme
+from tests.write_documents import DOCS, ROOT, checked_numbers, command_line, method, readme
 
 PAGES = [ROOT / "README.md", ROOT / "DEVELOPERS.md", *sorted(DOCS.rglob("*.md"))]
 SECTIONS = {path.partition(".")[0] for path in DECLARATIONS if "." in path}
@@ -54,6 +54,10 @@ def assert_same_to_the_last_digits(found: str, made: str) -> None:
 
 def test_readme_shows_what_the_program_prints() -> None:
     assert_same_to_the_last_digits((ROOT / "README.md").read_text(encoding="utf-8"), readme())
+
+
+def test_table_of_common_tolerances_is_up_to_date() -> None:
+    assert (DOCS / "method.md").read_text(encoding="utf-8") == method(), REGENERATE
 
 
 def test_page_of_checks_is_up_to_date() -> None:

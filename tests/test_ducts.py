@@ -30,7 +30,8 @@ def measures(cases: int = 1, **changed: FloatArray | float) -> DuctMeasures:
     values: dict[str, FloatArray | float] = {
         "mass_flow": 0.05, "gap": GAP, "faces": 2.0, "length": 0.48, "duct_width": WIDTH, "passages": 1.0,
         "passage_width": WIDTH, "area_ratio": 1.0, "place_area": PLACE, "fouling": 0.0, "roughness": 0.0,
-        "fin_pitch": PITCH, "fin_thickness": THICKNESS, "fin_conductivity": 200.0, "strip_length": STRIP,
+        "film_factor": 1.0, "fin_pitch": PITCH, "fin_thickness": THICKNESS, "fin_conductivity": 200.0,
+        "strip_length": STRIP,
     }  # fmt: skip
     values.update(changed)
     return DuctMeasures(**{name: np.broadcast_to(value, (cases,)).astype(float) for name, value in values.items()})

@@ -13,15 +13,18 @@ import numpy as np
 from click.testing import CliRunner
 
 from harvest.cli import cli
+from harvest.model.case import DECLARATIONS
 from harvest.physics.fluids import FluidBatch, FluidSpec, fluid_table
 from harvest.report.memo.reference import value_reference
 from harvest.report.reference import CheckedNumber, case_reference, check_list, result_reference
+from harvest.study.common_tolerances import COMMON_TOLERANCES
 from tests.test_published import SOURCES, as_argument
 
 ROOT = Path(__file__).parent.parent
 DOCS = ROOT / "docs"
 EXAMPLE = "examples/genset-jacket-water.toml"
 OUTPUT_MARK = "<!-- estimate output -->\n"
+TOLERANCES_MARK = "<!-- common tolerances -->\n"
 FIRST_HEADING_LEFT_OUT = "\nAlong the stack\n"
 ORIGINS = {
     "read": "read in the source",
@@ -54,6 +57,23 @@ def readme() -> str:
     assert mark, f"README.md has no line {OUTPUT_MARK!r}"
     rest = after.removeprefix("```text\n").partition("\n```\n")[2]
     return f"{before}{mark}```text\n{estimate_output()}```\n{rest}"
+
+
+def method() -> str:
+    """The page of the method with its table of common tolerances as it should be."""
+    before, mark, after = (DOCS / "method.md").read_text(encoding="utf-8").partition(TOLERANCES_MARK)
+    assert mark, f"method.md has no line {TOLERANCES_MARK!r}"
+    return f"{before}{mark}{common_tolerance_table()}\n{after.partition(chr(10) * 2)[2]}"
+
+
+def common_tolerance_table() -> str:
+    """Rows of the tolerances that a study of doubt takes where the case states none."""
+    lines = ["| field | tolerance | where | source |", "|---|---|---|---|"]
+    for each in COMMON_TOLERANCES:
+        names = ", ".join(f"`{path}`" for path in each.fields if not path.startswith("cold."))
+        kind = DECLARATIONS[each.fields[0]].kind
+        lines.append(f"| {names} | {each.tolerance.text(kind)} | {each.where} | {each.source} |")
+    return "\n".join([*lines, ""])
 
 
 def command_line() -> str:
@@ -124,6 +144,7 @@ def documents() -> dict[Path, str]:
     """Every generated file with what should stand in it."""
     return {
         ROOT / "README.md": readme(),
+        DOCS / "method.md": method(),
         DOCS / "case-file.md": case_reference(),
         DOCS / "results.md": result_reference(),
         DOCS / "memo-values.md": value_reference(),

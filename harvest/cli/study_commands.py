@@ -69,5 +69,35 @@ def size(case: str, overrides: tuple[str, ...], as_json: bool, plot: str | None,
         click.echo(size_report(loaded, found))
 
 
+@cli.command()
+@case_arguments
+@click.option("--samples", default=4096, show_default=True, help="Cases drawn for the percentiles, a power of two.")
+@click.option("--seed", default=1, show_default=True, help="Seed of the sample; the same one draws the same cases.")
+@click.option("--plot", default=None, type=click.Path(dir_okay=False), help="Draw net power and inputs (.svg, ...).")
+def doubt(case: str, overrides: tuple[str, ...], as_json: bool, samples: int, seed: int, plot: str | None) -> None:
+    """How sure the net power is: its band from the tolerances of the inputs, and which to measure."""
+    loaded = read_case_of(case, overrides)
+    if plot is not None:
+        from harvest.report.plots import can_plot
+
+        can_plot(Path(plot))
+    from harvest.study.doubt import doubt as doubt_case
+
+    found = doubt_case(loaded, samples, seed, _progress if sys.stderr.isatty() else None)
+    if plot is not None:
+        from harvest.report.doubt_plots import doubt_figure
+        from harvest.report.plots import write_figure
+
+        write_figure(Path(plot), doubt_figure(loaded.title, found))
+    from harvest.report.doubt_sheet import doubt_document, doubt_report
+
+    if as_json:
+        from harvest.report.documents import json_text
+
+        click.echo(json_text(doubt_document(found)))
+    else:
+        click.echo(doubt_report(loaded, found))
+
+
 def _progress(done: int, all_of_them: int) -> None:
-    click.echo(f"\r{done:,} of {all_of_them:,} choices", nl=done == all_of_them, err=True)
+    click.echo(f"\r{done:,} of {all_of_them:,}", nl=done == all_of_them, err=True)

@@ -11,14 +11,16 @@ import numpy as np
 from harvest.errors import InputError
 from harvest.model.case import DECLARATIONS, Case, Streams, nearest_field, value_at
 from harvest.physics.arrays import FloatArray, IntArray
+from harvest.quantities import STANDARD_VOLUME_FLOW, StandardVolumeFlow
 
 
 @dataclass(frozen=True)
 class StreamBatch:
     """The streams of a case and `varied`, SI numbers (cases,) by field path, that replace the base's.
 
-    All names, choices and the fields that are given at all are those of the base case. Raises InputError for a varied
-    field that is unknown, not a single number, absent in the base, or of another length.
+    A standard volume flow varies in its flow [m^3/s] at its stated reference. All names, choices and the fields that
+    are given at all are those of the base case. Raises InputError for a varied field that is unknown, not a single
+    number, absent in the base, or of another length.
     """
 
     base: Streams
@@ -32,7 +34,7 @@ class StreamBatch:
             if declaration is None:
                 raise InputError(f"{path}: unknown field; {nearest_field(path)}")
             many = isinstance(value_at(self.base, path), tuple)
-            if declaration.form not in ("quantity", "integer", "curve") or many:
+            if declaration.form not in ("quantity", "integer", "curve", STANDARD_VOLUME_FLOW) or many:
                 raise InputError(f"{path}: is not a single number, so it cannot vary within a batch")
             if value_at(self.base, path) is None:
                 raise InputError(f"{path}: the base case has none, or something else in its place; give it there first")
@@ -49,6 +51,8 @@ class StreamBatch:
         if path in self.varied:
             return np.asarray(self.varied[path], dtype=float)
         value = value_at(self.base, path)
+        if isinstance(value, StandardVolumeFlow):
+            value = value.volume_flow
         return np.full(self.cases, absent if value is None else float(value))
 
     def given(self, path: str) -> bool:

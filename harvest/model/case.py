@@ -27,6 +27,7 @@ from harvest.model.case_fields import (
 from harvest.model.stack_sections import Electrical, Module, Stack
 from harvest.model.stream_sections import Side, Site, StreamSide
 from harvest.model.study_sections import Cost, Limits, Size
+from harvest.model.tolerances import Tolerance
 from harvest.quantities import (
     KINDS,
     StandardVolumeFlow,
@@ -66,6 +67,13 @@ class Case(Streams):
     sweep: dict[str, Any] | None = other(
         "axes",
         "Fields that a sweep varies, by their whole names in quotes, as lists or { from = .., to = .., points = .. }.",
+        default=None,
+        descriptive=True,
+    )
+    uncertainty: dict[str, Tolerance] | None = other(
+        "tolerances",
+        'How far fields may be off, by their whole names in quotes: "hot.mass_flow" = "5 %", of which 95 of 100 values '
+        'keep within; or { uniform = ["-3 K", "3 K"] }, { factor = 1.5 }, or "none" for a field without doubt.',
         default=None,
         descriptive=True,
     )
@@ -154,7 +162,7 @@ def assumptions(case: Streams) -> list[Assumption]:
 def case_hash(case: Streams) -> str:
     """SHA-256 of what the result depends on, in SI with 12 digits: the same however the units were written.
 
-    Titles, descriptions, sizing and sweep are left out; a material that is a file counts by its bytes.
+    Titles, descriptions, sizing, sweep and tolerances are left out; a material that is a file counts by its bytes.
     """
     import hashlib
 

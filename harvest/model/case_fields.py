@@ -42,8 +42,9 @@ class Declaration:
     """One field: its form, unit, meaning, default with its reason, limits, choices and when it applies.
 
     `form` is one of quantity, standard volume flow, energy price, pair, curve, text, file, choice, integer, integers,
-    boolean, fluid table, axis, axes, section, tables (a list of sections). `applies` names a field beside or above
-    this one and its values for which this one is asked. A `reason` marks a default that is an assumption worth telling.
+    boolean, fluid table, axis, axes, tolerances, section, tables (a list of sections). `applies` names a field beside
+    or above this one and its values for which this one is asked. A `reason` marks a default that is an assumption worth
+    telling.
     """
 
     form: str

@@ -176,7 +176,7 @@ def stream_mass_flow(
         return batch.number(f"{side}.volume_flow") * inlet_density
     if given.standard_volume_flow is not None:
         standard = given.standard_volume_flow
-        moles = standard.volume_flow * standard.pressure / (GAS_CONSTANT * standard.temperature)
+        moles = batch.number(f"{side}.standard_volume_flow") * standard.pressure / (GAS_CONSTANT * standard.temperature)
         return np.asarray(moles * molar_mass / (1.0 - water if standard.basis == "dry" else 1.0))
     if given.drive_curve is not None:  # what the curve gives without the stack
         return batch.number(f"{side}.circuit_flow", given.drive_curve.flows[-1]) * inlet_density
@@ -263,6 +263,7 @@ def stream_film(
             area_ratio=batch.number(f"{side}.duct.area_ratio", 1.0),
             place_area=batch.number("stack.row_pitch") * batch.number("stack.column_pitch"),
             fouling=batch.number(f"{side}.fouling", 0.0),
+            film_factor=batch.number(f"{side}.duct.film_factor", 1.0),
             roughness=batch.number(f"{side}.duct.roughness", 0.0),
             fin_pitch=batch.number(f"{side}.duct.fin_pitch"),
             fin_thickness=batch.number(f"{side}.duct.fin_thickness"),

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 
@@ -113,7 +113,14 @@ def described_module(batch: Batch) -> DescribedModule:
         build = _of_cooler_ratings
     elif module.generator_rating is not None:
         build = _of_generator_ratings
-    return build(batch)
+    described = build(batch)
+    factors = np.stack(
+        [batch.number(f"module.{name}_factor", 1.0) for name in ("seebeck", "resistance", "conductance")]
+    )
+    if np.all(factors == 1.0):
+        return described
+    scaled = ScaledModule(described.model, factors)
+    return replace(described, model=scaled, provenance=f"{described.provenance}, times the stated factors")
 
 
 def footprint_area(batch: Batch) -> FloatArray:

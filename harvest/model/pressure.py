@@ -59,9 +59,10 @@ def pressure_drop(
     connections = batch.number(f"{side}.duct.connection_loss_coefficient", 0.0) * velocity_head(
         stream.mass_flow, pipe_area, density[0]
     )
+    factor = batch.number(f"{side}.duct.friction_loss_factor", 1.0)
     if isinstance(film, RatedFilm):
         local = film.local_pressure_drop(fluid.density(mean), fluid.viscosity(mean))
-        blocks = film.in_series * (local * active).sum(axis=0) / active.sum(axis=0)
+        blocks = factor * film.in_series * (local * active).sum(axis=0) / active.sum(axis=0)
         return PressureDrop(blocks, nothing, nothing, nothing, connections)
     reynolds = film.reynolds(fluid.viscosity(mean))
     head = 0.5 * film.mass_flux**2 / fluid.density(mean)
@@ -75,7 +76,7 @@ def pressure_drop(
     leaving = batch.number(f"{side}.duct.exit_loss_coefficient")
     leaving = np.where(np.isnan(leaving), exit_loss_coefficient(ratio, momentum[1]), leaving)
     return PressureDrop(
-        friction=(friction * active).sum(axis=0),
+        friction=factor * (friction * active).sum(axis=0),
         acceleration=2.0 * (end_heads[1] - end_heads[0]),
         ends=entrance * end_heads[0] + leaving * end_heads[1],
         fittings=batch.number(f"{side}.duct.minor_loss_coefficient", 0.0) * end_heads[0],

@@ -89,7 +89,7 @@ def rated_film(batch: Batch, stream: Stream, mass_flow: FloatArray, faults: Faul
     rows = block_rows(batch, side)
     found = RatedFilm(
         flow=flow,
-        film_conductance=conductance,
+        film_conductance=batch.number(f"{side}.duct.film_factor", 1.0) * conductance,
         solid_resistance=solid,
         modules=batch.number(f"{side}.duct.modules_per_block"),
         in_series=batch.number("stack.rows") / rows,

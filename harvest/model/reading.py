@@ -29,9 +29,11 @@ from harvest.model.case_rules import (
 )
 from harvest.model.case_text import bounded_text, key_lines, toml_document, toml_value
 from harvest.model.stream_sections import HEAT_SINK, Side, StreamSide
+from harvest.model.tolerances import FACTOR, Tolerance, parse_tolerance
 from harvest.quantities import (
     HIGHEST_DEGREE,
     KINDS,
+    STANDARD_VOLUME_FLOW,
     EnergyPrice,
     StandardVolumeFlow,
     example_of,
@@ -60,6 +62,8 @@ MOST_CURVE_POINTS = 1000
 MOST_SUGGESTIONS = 50
 LEG_MATERIALS = ("n_material", "p_material")
 LARGEST_EXPONENT = 4.0
+OPEN_TABLES = ("size.", "sweep.", "uncertainty.")
+"""Beginnings of paths that go on with the whole name of a field."""
 NOT_JUDGED: dict[type, type] = {Streams: Case, StreamSide: Side}
 """Sections that are read in part, with the section whose other fields may stand there without being judged."""
 AnyStreams = TypeVar("AnyStreams", bound=Streams)
@@ -197,10 +201,10 @@ def replace(case: AnyStreams, changes: Mapping[str, Any]) -> AnyStreams:
 
 
 def _put(document: dict[str, Any], path: str, value: Any) -> None:
-    """Set a value in a document; what is an alternative to it goes."""
-    if _PLACE.sub("", path) not in DECLARATIONS and not path.startswith(("size.", "sweep.")):
+    """Set a value in a document; what is an alternative to it goes, with its tolerance."""
+    if _PLACE.sub("", path) not in DECLARATIONS and not path.startswith(OPEN_TABLES):
         raise InputError(f"{one_line(path)}: unknown field; {nearest_field(path[:60])}")
-    *parents, name = path.split(".", 1) if path.startswith(("size.", "sweep.")) else path.split(".")
+    *parents, name = path.split(".", 1) if path.startswith(OPEN_TABLES) else path.split(".")
     table = document
     for parent in parents:
         if _PLACE.search(parent):
@@ -215,6 +219,8 @@ def _put(document: dict[str, Any], path: str, value: Any) -> None:
             for other in alternatives:
                 if other != path:
                     table.pop(other.rpartition(".")[2], None)
+                    if isinstance(tolerances := document.get("uncertainty"), dict):
+                        tolerances.pop(other, None)
 
 
 def _inside(document: Mapping[str, Any], *names: str) -> Any:
@@ -487,6 +493,8 @@ class _Reading:
             return _fluid_rows(raw, self.folder)
         if form == "axis":
             return self.axis(path, declaration, raw)
+        if form == "tolerances":
+            return self.tolerances(path, raw)
         return self.axes(path, raw)
 
     def number(self, path: str, declaration: Declaration, raw: Any) -> float:
@@ -513,6 +521,42 @@ class _Reading:
             ):
                 self.fault(f"{path}.{name}", "is neither a list nor { from = .., to = .., points = .. }")
         return dict(raw)
+
+    def tolerances(self, path: str, raw: Any) -> dict[str, Tolerance]:
+        """Tolerance of each field, by its whole name."""
+        if not isinstance(raw, Mapping):
+            raise QuantityError(f'is a section; write [{path}] and below it for example "hot.mass_flow" = "5 %"')
+        found = {}
+        for name, given in raw.items():
+            try:
+                found[name] = self.tolerance(name, given)
+            except QuantityError as error:
+                self.fault(f"{path}.{name}", str(error))
+            except UnknownValueError:
+                continue
+        return found
+
+    def tolerance(self, name: str, raw: Any) -> Tolerance:
+        """Tolerance of one field around its value; raises QuantityError or UnknownValueError."""
+        known = DECLARATIONS.get(name)
+        if isinstance(raw, Mapping) and known is not None and known.section is not None:
+            raise QuantityError('is a section; write the whole name of its field in quotes, "hot.mass_flow" = "5 %"')
+        if known is None or known.section is not None:
+            raise QuantityError(f"unknown field; {nearest_field(name[:60])}")
+        if name in CURVES or known.form == "flow curve":
+            near = {"seebeck", "resistance", "conductance"} & {name.rpartition(".")[2]}
+            factor = f"module.{near.pop()}_factor" if near else "the factors beside it, film_factor and its like,"
+            raise QuantityError(f"is a curve; give {factor} a tolerance instead")
+        if known.descriptive or name.startswith("limits.") or known.form not in ("quantity", STANDARD_VOLUME_FLOW):
+            raise QuantityError("is no number that a result depends on continuously, so it has no tolerance")
+        decided = applies(known, name, self.values)
+        value = self.values.get(name) if name not in self.values.faulty else self.values[name]
+        tolerance = parse_tolerance(raw, known.kind)
+        if decided is not None or value is None or isinstance(value, tuple):
+            raise QuantityError("has no value of its own in this case, so it has no tolerance; remove it")
+        if tolerance.distribution == FACTOR and not isinstance(value, StandardVolumeFlow) and value < 0:
+            raise QuantityError("is below zero, where a factor means nothing; give a difference")
+        return tolerance
 
     def size_fields(self, raw: Any) -> dict[str, tuple[float, ...]]:
         """Values of each further field of a sizing, by its whole name."""

@@ -42,9 +42,10 @@ def fin_arrangement(batch: Batch) -> tuple[FloatArray, FloatArray]:
 
 def room_sink(batch: Batch, air: FluidBatch, faults: Faults) -> RoomSink:
     """Sink of one module; faults of single cases are noted."""
+    factor = batch.number("cold.duct.film_factor", 1.0)
     if not has_fins(batch):
         return RatedSink(
-            resistance=batch.number(f"{SINK}_resistance"),
+            resistance=batch.number(f"{SINK}_resistance") / factor,
             rated_rise=batch.number(f"{SINK}_temperature_rise"),
             exponent=batch.number(f"{SINK}_exponent"),
         )
@@ -79,4 +80,5 @@ def room_sink(batch: Batch, air: FluidBatch, faults: Faults) -> RoomSink:
         fin_thickness=batch.number(f"{SINK}_fin_thickness"),
         fin_conductivity=batch.number(f"{SINK}_conductivity"),
         emissivity=batch.number(f"{SINK}_emissivity"),
+        film_factor=factor,
     )

@@ -4,6 +4,7 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
+from typing import Any
 
 from harvest.model.case_fields import (
     MOST_ROWS,
@@ -209,6 +210,16 @@ class GeneratorRating:
     )
 
 
+def _factor(parameter: str) -> Any:
+    return quantity(
+        "dimensionless",
+        f"Factor on the {parameter} that the module's data give: to fit a measurement, or to be in doubt about.",
+        default=1.0,
+        above=0.0,
+        maximum=100.0,
+    )
+
+
 @dataclass(frozen=True, kw_only=True)
 class Module:
     """One thermoelectric module."""
@@ -250,6 +261,9 @@ class Module:
         default=None,
         above=0.0,
     )
+    seebeck_factor: float = _factor("Seebeck coefficient")
+    resistance_factor: float = _factor("electrical resistance")
+    conductance_factor: float = _factor("thermal conductance")
     couples: int | None = integer(
         "Couples in the module, to judge the Seebeck coefficient per couple.", default=None, minimum=1, maximum=100_000
     )

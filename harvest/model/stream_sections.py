@@ -300,6 +300,23 @@ class Duct:
         maximum=1.0,
         applies=_SINK,
     )
+    film_factor: float = quantity(
+        "dimensionless",
+        "Factor on the film coefficient that the correlation, the rated curve or the sink's data give: to fit a "
+        "measurement, or to be in doubt about.",
+        default=1.0,
+        above=0.0,
+        maximum=100.0,
+        applies=("kind", (*PASSAGES, RATED, HEAT_SINK)),
+    )
+    friction_loss_factor: float = quantity(
+        "dimensionless",
+        "Factor on the friction along the duct, or on the pressure drop of a block by its rated curve.",
+        default=1.0,
+        above=0.0,
+        maximum=100.0,
+        applies=_CONNECTED,
+    )
     entrance: str = choice(
         ENTRANCES, "What is done about entrance effects.", default="fully developed", applies=_PASSAGE
     )

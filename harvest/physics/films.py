@@ -30,6 +30,7 @@ class DuctMeasures:
     area_ratio: FloatArray
     place_area: FloatArray
     fouling: FloatArray
+    film_factor: FloatArray
     roughness: FloatArray
     fin_pitch: FloatArray
     fin_thickness: FloatArray
@@ -42,7 +43,8 @@ class Film:
     """A film in rectangular passages; arrays (cases,).
 
     `flow_area` [m^2] of one duct, `prime_area` and `fin_area` [m^2] wetted in one place, `fin_height` [m] from the
-    root to the adiabatic tip; `fin_sheet` is fin conductivity times thickness [W/K].
+    root to the adiabatic tip; `fin_sheet` is fin conductivity times thickness [W/K]; `film_factor` [-] multiplies what
+    the correlation gives.
     """
 
     mass_flow: FloatArray
@@ -57,6 +59,7 @@ class Film:
     fin_sheet: FloatArray
     place_area: FloatArray
     fouling: FloatArray
+    film_factor: FloatArray
     relative_roughness: FloatArray
     developing: bool
     finned: bool
@@ -89,7 +92,8 @@ class Film:
         Parameters: fluid's `heat_capacity` [J/(kg K)], `viscosity` [Pa s], `conductivity` [W/(m K)], (rows, cases).
         """
         prandtl = heat_capacity * viscosity / conductivity
-        coefficient = self.nusselt(self.reynolds(viscosity), prandtl) * conductivity / self.hydraulic_diameter
+        nusselt = self.film_factor * self.nusselt(self.reynolds(viscosity), prandtl)
+        coefficient = nusselt * conductivity / self.hydraulic_diameter
         if self.fouled:
             coefficient = coefficient / (1.0 + coefficient * self.fouling)
         if not self.finned:
@@ -152,6 +156,7 @@ def smooth_duct(measures: DuctMeasures, developing: bool) -> Film:
         fin_sheet=zero,
         place_area=measures.place_area,
         fouling=measures.fouling,
+        film_factor=measures.film_factor,
         relative_roughness=measures.roughness / diameter,
         developing=developing,
         finned=False,
@@ -191,6 +196,7 @@ def plain_fin_duct(measures: DuctMeasures, developing: bool) -> Film:
         fin_sheet=measures.fin_conductivity * measures.fin_thickness,
         place_area=measures.place_area,
         fouling=measures.fouling,
+        film_factor=measures.film_factor,
         relative_roughness=measures.roughness / diameter,
         developing=developing,
         finned=True,

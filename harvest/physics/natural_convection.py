@@ -139,6 +139,7 @@ class FinnedSink:
 
     `fin_height` is from base to tip, `base_height` along the vertical. The channels convect as isothermal ones, the two
     outer sides as plates alone; tips are left out. The fins' efficiency is that of convection and radiation together.
+    `film_factor` [-] multiplies the film of convection, not the radiation.
     """
 
     air: FluidBatch
@@ -150,6 +151,7 @@ class FinnedSink:
     fin_thickness: FloatArray
     fin_conductivity: FloatArray
     emissivity: FloatArray
+    film_factor: FloatArray
 
     def conductance(self, wall_temperature: FloatArray, air_temperature: FloatArray) -> FloatArray:
         """Conductance from the base to the room [W/K]; temperatures [K], (rows, cases)."""
@@ -160,7 +162,8 @@ class FinnedSink:
         air = (film_temperature, self.air.density(film_temperature), heat_capacity, viscosity, conductivity)
         between = isothermal_channel_nusselt(channel_rayleigh_number(rise, spacing, height, *air))
         alone = isolated_plate_nusselt(channel_rayleigh_number(rise, height, height, *air)) / height
-        channel_film, outer_film = between * conductivity / spacing, alone * conductivity
+        convection = self.film_factor * conductivity
+        channel_film, outer_film = between * convection / spacing, alone * convection
         black = radiation_coefficient(wall_temperature, air_temperature)
         channels, side = self.fin_count - 1.0, self.fin_height * height
         bottom = spacing * height

@@ -22,6 +22,7 @@ WRITTEN = {
     "fluid table": "table or path",
     "axis": "list, or `{ from = .., to = .., step = .. }`",
     "axes": "table",
+    "tolerances": "table",
 }
 CASE_INTRODUCTION = """\
 # The case file

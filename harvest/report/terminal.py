@@ -323,7 +323,12 @@ def check_report(case: Case) -> str:
     given, of_record = [], []
     for path, declaration in DECLARATIONS.items():
         value = value_at(case, path)
-        if declaration.section is not None or value is None or path == "sweep" or path.startswith("size."):
+        if (
+            declaration.section is not None
+            or value is None
+            or path in ("sweep", "uncertainty")
+            or path.startswith("size.")
+        ):
             continue
         line = wrapped(f"  {path} = ", display(value, declaration), rest="      ")
         if _stands_in(case.given, path):

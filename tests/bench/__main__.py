@@ -1,8 +1,10 @@
-"""Speeds beside their yardsticks, measured in one run: `python -m tests.bench [solver] [checks] [start_up] [script]`.
+"""Speeds beside their yardsticks, measured in one run: `python -m tests.bench [PART ...]`.
 
-Solver: 10,000 random designs of 20 rows against one evaluation of both streams' properties and films over the same
-arrays; the time a design with the number of designs. Checks: what they add to a batch of estimates. Script: what an
-engineer would write, one design at a time. Start-up: the commands against importing what they cannot do without.
+PART is solver, checks, sizing, doubt, start_up or script; all of them without. Solver: 10,000 random designs of 20
+rows against one evaluation of both streams' properties and films over the same arrays; the time a design with the
+number of designs. Checks: what they add to a batch of estimates. Doubt: a sample and its indices against the solver
+alone. Script: what an engineer would write, one design at a time. Start-up: the commands against importing what they
+cannot do without.
 """
 
 from __future__ import annotations
@@ -21,10 +23,14 @@ import numpy as np
 from harvest.model import estimate as estimating
 from harvest.model.batch import Batch
 from harvest.model.design import Design, design, maximum_power_load
+from harvest.model.driven_flow import driven_batch, driven_sides
 from harvest.model.loads import MATCHED, MAXIMUM_POWER
 from harvest.model.reading import load_case, read_case
 from harvest.model.stack import Load, solve_stack
 from harvest.model.stack.solver import CHUNK_CELLS
+from harvest.physics.arrays import FloatArray
+from harvest.study import doubt as doubting
+from harvest.study.doubt import drawn_inputs
 from harvest.study.size import size
 from tests.bench.baseline import DEMO_DESIGNS, solve_plainly
 from tests.bench.random_designs import random_batch
@@ -166,6 +172,47 @@ def sizing() -> None:
     print(f"  {tried:,} choices: {time.perf_counter() - begun:.0f} s, {peak / 1024:.0f} MiB at most (gate 1024)")
 
 
+def doubt() -> None:
+    """A sample with its percentiles, and its indices with their intervals, against the solver alone."""
+    for name in ("genset-jacket-water", "genset-exhaust", "workshop-water-blocks"):
+        _doubt_of(EXAMPLE.with_name(f"{name}.toml"))
+
+
+def _doubt_of(path: Path) -> None:
+    case = load_case(path)
+    inputs, _ = drawn_inputs(case)
+    count, samples, base = len(inputs), doubting.SAMPLES, doubting.SAMPLES // doubting.INDEX_SHARE
+    asked = base * (count + 2)
+
+    def batch_of(points: FloatArray) -> Batch:
+        values = {each.path: each.values(row) for each, row in zip(inputs, points, strict=True)}
+        return Batch(case, points.shape[1], values)
+
+    def net_power(points: FloatArray) -> FloatArray:
+        return doubting.answered(case, inputs, np.stack([*batch_of(points).varied.values()])).scalars["net_power"]
+
+    def percentiles() -> None:
+        values = np.stack([*batch_of(doubting.probabilities(count, samples, 1)).varied.values()])
+        found = doubting.answered(case, inputs, values)
+        for result in doubting.RESULTS:
+            doubting.spread(0.0, found.scalars[result])
+
+    # the solver's share: as many designs of the same case at its own load, made ready beforehand
+    batch = batch_of(doubting.probabilities(count, 2 * samples, 5))
+    made = design(driven_batch(batch))
+    share = best(lambda: solve_stack(made.problem, made.load), 3) / batch.cases
+    if driven_sides(batch):  # a flow that follows from a curve is found by solving too
+        share += best(lambda: driven_batch(batch), 2) / batch.cases
+    of_sample = best(percentiles, 3)
+    of_indices = best(lambda: doubting.indices(net_power, count, base, 1), 2)
+    print(
+        f"doubt of {path.stem}, {count} inputs: {samples:,} cases {of_sample:.2f} s, "
+        f"{of_sample / (samples * share):.2f} times the solver's {1e6 * share:.1f} us a case (gate 3); "
+        f"indices of {asked:,} cases {of_indices:.2f} s, {of_indices / (asked * share):.2f} times (gate 3); "
+        f"the study {best(lambda: doubting.doubt(case), 2):.2f} s"
+    )
+
+
 def start_up() -> None:
     """Commands against the imports that they cannot do without."""
     python = sys.executable
@@ -195,6 +242,6 @@ def start_up() -> None:
 
 
 if __name__ == "__main__":
-    for part in (solver, checks, sizing, start_up, script):
+    for part in (solver, checks, sizing, doubt, start_up, script):
         if len(sys.argv) == 1 or part.__name__ in sys.argv[1:]:
             part()
