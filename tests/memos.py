@@ -16,15 +16,18 @@ from harvest.report.memo.compose import Memo, memo
 ROOT = Path(__file__).parent.parent
 CASES = [*sorted((ROOT / "examples").glob("*.toml")), *sorted((ROOT / "harvest/data/starters").glob("*.toml"))]
 DAY = "2026-01-31"
+QUICK = ("size", "doubt")
+"""Studies that are left out where a test does not look at them."""
 VOID = ("meta", "br", "hr", "img", "rect", "line", "polyline", "polygon", "path", "circle")
 LOWERED = str.maketrans("⁰¹²³⁴⁵⁶⁷⁸⁹⁻", "0123456789-")
 
 
 @functools.cache
-def memo_of(path: Path, template: str = "memo") -> Memo:
-    """Memo of a shipped case."""
+def memo_of(path: Path, template: str = "memo", *, whole: bool = False) -> Memo:
+    """Memo of a shipped case; unless `whole` without the studies that take long."""
     case, text = load_case(path), path.read_text("utf-8")
-    return memo(case, template=template, date=DAY, command="harvest memo", sources=(text,))
+    without = () if whole else ("doubt",) if case.size is None else ("doubt", "size")
+    return memo(case, template=template, date=DAY, command="harvest memo", sources=(text,), without=without)
 
 
 @dataclass

@@ -21,7 +21,7 @@ from harvest.report.memo.compose import Memo, memo
 from harvest.report.memo.contents import NOT_MODELLED
 from harvest.report.memo.templates import TEMPLATES
 from harvest.report.memo.values import Value
-from tests.memos import CASES, DAY, ROOT, Page, memo_of, read_number, result_at, shown_number
+from tests.memos import CASES, DAY, QUICK, ROOT, Page, memo_of, read_number, result_at, shown_number
 
 EXHAUST = ROOT / "examples/genset-exhaust.toml"
 WATER = ROOT / "examples/genset-jacket-water.toml"
@@ -60,6 +60,37 @@ def test_numbers_of_other_templates_are_results(template: str) -> None:
     assert assert_shows_results(memo_of(WATER, template)) > 20
 
 
+def test_a_whole_memo_with_its_range_and_costs() -> None:
+    made = memo_of(EXHAUST, whole=True)
+    assert_shows_results(made)
+    assert_no_number_stands_alone(made, EXHAUST)
+    net, text = made.results["doubt"]["results"]["net_power"], made.markdown()
+    assert net["p10"] < made.results["estimate"]["net_power"] < net["p90"]
+    assert "Range of the net power, P10 to P90" in text[: text.index("## Purpose")]
+    first = made.results["doubt"]["worth_measuring"][0]
+    assert f"`{first}`" in text[text.index("## What to measure next") :]
+
+
+@pytest.mark.slow
+@every_case
+def test_whole_memos_of_all_cases(path: Path) -> None:
+    made = memo_of(path, whole=True)
+    assert_shows_results(made)
+    assert_no_number_stands_alone(made, path)
+    assert_nothing_leaks(made)
+    again = memo(load_case(path), date=DAY, command="harvest memo", sources=(path.read_text("utf-8"),))
+    assert again.html() == made.html()
+
+
+def test_costs_and_payback_are_told() -> None:
+    prices = {"cost.currency": "EUR", "cost.module": 20.0, "site.electricity_value": "0.30 EUR/kWh"}
+    made = memo(replace(load_case(WATER), prices), date=DAY, without=QUICK)
+    assert_shows_results(made)
+    assert made.results["estimate"]["building_cost"] == pytest.approx(192 * 20.0)
+    assert "| Cost of building | 3,840 EUR |" in made.markdown().replace("\N{NO-BREAK SPACE}", " ")
+    assert made.results["payback"].startswith(significant(made.results["estimate"]["payback_years"], 3))
+
+
 def test_numbers_of_a_comparison_are_results() -> None:
     made = memo([load_case(path) for path in (EXHAUST, WATER, TEXTBOOK)], date=DAY)
     assert assert_shows_results(made) > 60
@@ -76,7 +107,10 @@ def test_results_of_a_memo_are_those_of_the_estimate(path: Path) -> None:
 
 @every_case
 def test_nothing_of_the_program_leaks(path: Path) -> None:
-    made = memo_of(path)
+    assert_nothing_leaks(memo_of(path))
+
+
+def assert_nothing_leaks(made: Memo) -> None:
     for text in (made.html(), made.markdown()):
         for word in (r"\bNone\b", r"\bnan\b", r"\binf\b", r"\{\{", r"\{%", r"Value\(", r"<harvest", "\ue000", "TODO"):
             assert not re.search(word, text), word
@@ -84,13 +118,17 @@ def test_nothing_of_the_program_leaks(path: Path) -> None:
 
 @every_case
 def test_no_number_stands_without_its_result(path: Path) -> None:
-    made = memo_of(path)
+    assert_no_number_stands_alone(memo_of(path), path)
+
+
+def assert_no_number_stands_alone(made: Memo, path: Path) -> None:
+    """No digit stands outside of marked numbers, inputs, method, sources and the case file."""
     allowed = {"pre", "code", "method", "facts", "repeat", "inputs", "tick", "title", "h1", "style"}
     literal = {load_case(path).title, "5 %", *(declaration.reason for declaration in DECLARATIONS.values())}
     for where, words in Page(made.html()).words:
         if allowed & set(where) or words.strip() in literal:
             continue
-        rest = re.sub(r"within 5 % of|\d+ % by (volume|mass)|IAPWS\S*", "", words)
+        rest = re.sub(r"within 5 % of|\d+ % by (volume|mass)|IAPWS\S*|\bP(10|90)|(80|90) of 100", "", words)
         row_number = "td" in where and rest.strip().isdigit()
         assert row_number or not re.search(r"\d", rest), (where, words)
 
@@ -125,7 +163,7 @@ def test_drawings_are_whole_and_their_patterns_defined(path: Path) -> None:
 
 
 def test_same_case_and_date_give_the_same_bytes() -> None:
-    first, again = (memo(load_case(WATER), date=DAY, command="x", sources=("y",)) for _ in range(2))
+    first, again = (memo(load_case(WATER), date=DAY, command="x", sources=("y",), without=QUICK) for _ in range(2))
     assert first.html() == again.html()
     assert first.markdown() == again.markdown()
 
@@ -142,7 +180,7 @@ def test_same_case_and_date_give_the_same_bytes() -> None:
     ],
 )
 def test_a_hostile_title_is_text(title: str) -> None:
-    made = memo(replace(load_case(TEXTBOOK), {"title": title}), date=DAY)
+    made = memo(replace(load_case(TEXTBOOK), {"title": title}), date=DAY, without=QUICK)
     clean = title.replace("\ue000", " ").replace("\ue001", " ")
     page = Page(made.html())
     assert "script" not in page.tags and "b" not in page.tags and "a" not in page.tags
@@ -155,7 +193,7 @@ def test_a_hostile_title_is_text(title: str) -> None:
 
 def test_a_case_that_fails_says_so_at_the_top(tmp_path: Path) -> None:
     case = replace(load_case(EXHAUST), {"limits.hot_face_temperature": 400.0})
-    text = memo(case, date=DAY).markdown()
+    text = memo(case, date=DAY, without=QUICK).markdown()
     assert text.index("not acceptable as it stands") < text.index("## Answer")
     assert "hot face temperature" in text[: text.index("## Answer")]
     assert text.index("### Failed") < text.index("### Warnings") < text.index("### Passed")
@@ -183,7 +221,18 @@ def test_a_case_without_an_answer_gives_reasons_and_no_file(tmp_path: Path) -> N
 
 def test_the_case_file_and_command_repeat_the_result(tmp_path: Path) -> None:
     out = tmp_path / "memo.html"
-    arguments = ["memo", str(WATER), "--date", DAY, "--set", "hot.inlet_temperature=95 degC", "-o", str(out)]
+    arguments = [
+        "memo",
+        str(WATER),
+        "--date",
+        DAY,
+        "--set",
+        "hot.inlet_temperature=95 degC",
+        "-o",
+        str(out),
+        "--without",
+        "doubt",
+    ]
     result = CliRunner().invoke(cli, [*arguments, "--json"])
     assert result.exit_code == 0, result.output
     page = Page(out.read_text("utf-8"))
@@ -246,7 +295,7 @@ def test_printing_of_numbers() -> None:
 
 
 def test_library_and_command(tmp_path: Path) -> None:
-    made = harvest.memo(harvest.load_case(WATER), date=DAY)
+    made = harvest.memo(harvest.load_case(TEXTBOOK), date=DAY, without=("doubt",))
     assert isinstance(made, harvest.Memo)
     made.write(tmp_path / "a memo (1).md")
     assert sorted(path.suffix for path in tmp_path.iterdir()) == [".md", ".svg", ".svg", ".svg", ".svg"]

@@ -17,7 +17,7 @@ from click.testing import CliRunner
 from harvest.cli import cli
 from harvest.model.reading import load_case, replace
 from harvest.report.memo.compose import memo
-from tests.memos import DAY, ROOT, memo_of
+from tests.memos import DAY, QUICK, ROOT, memo_of
 
 EXHAUST = ROOT / "examples/genset-exhaust.toml"
 TEXTBOOK = ROOT / "examples/textbook-array.toml"
@@ -46,7 +46,7 @@ def test_pdf_has_the_answer_and_the_same_bytes() -> None:
 def test_a_hostile_title_is_text_in_pdf_and_word() -> None:
     pytest.importorskip("typst")
     docx = pytest.importorskip("docx")
-    made = memo(replace(load_case(TEXTBOOK), {"title": HOSTILE}), template="data-sheet", date=DAY)
+    made = memo(replace(load_case(TEXTBOOK), {"title": HOSTILE}), template="data-sheet", date=DAY, without=QUICK)
     assert '#read("/etc/passwd")' in " ".join(text_of_pdf(made.pdf()).split())
     document = docx.Document(io.BytesIO(made.word()))
     assert document.paragraphs[0].text == HOSTILE
@@ -142,9 +142,9 @@ def test_a_browser_shows_it_without_overflow(kind: str, width: int, tmp_path: Pa
     if kind == "memo":
         made = memo_of(EXHAUST)
     elif kind == "comparison":
-        made = memo([load_case(EXHAUST), load_case(TEXTBOOK)], date=DAY)
+        made = memo([load_case(EXHAUST), load_case(TEXTBOOK)], date=DAY, without=QUICK)
     else:
-        made = memo(replace(load_case(TEXTBOOK), {"title": "W" * 190}), date=DAY, command="x" * 400)
+        made = memo(replace(load_case(TEXTBOOK), {"title": "W" * 190}), date=DAY, command="x" * 400, without=QUICK)
     content, window, beyond = measured(made.html(), width, tmp_path)
     assert window == width
     assert content <= width

@@ -20,7 +20,7 @@ from harvest.report.memo.contents import known_contents
 from harvest.report.memo.markup import Bullets, Code, Heading, Inserted, Paragraph, Span, Table, read_markup, words_of
 from harvest.report.memo.templates import SHIPPED, TEMPLATES, Rendering, find_template, shipped_text
 from harvest.report.memo.values import Group, Known, Value
-from tests.memos import CASES, DAY, ROOT, Page, memo_of
+from tests.memos import CASES, DAY, QUICK, ROOT, Page, memo_of
 
 CASE = load_case(ROOT / "examples/textbook-array.toml")
 
@@ -32,7 +32,7 @@ def written(folder: Path, text: str, name: str = "own.md.j2") -> Path:
 
 
 def markdown_of(folder: Path, text: str) -> str:
-    return memo(CASE, template=written(folder, text), date=DAY).markdown()
+    return memo(CASE, template=written(folder, text), date=DAY, without=QUICK).markdown()
 
 
 @pytest.fixture
@@ -84,7 +84,7 @@ def test_faults_are_found_before_computing(tmp_path: Path, text: str, words: str
     written(tmp_path, "root:x:0:0", "secret.txt")
     (folder / "link.md.j2").symlink_to(tmp_path / "secret.txt")
     with pytest.raises(InputError) as raised:
-        memo(CASE, template=written(folder, f"one\n{text}\n"), date=DAY)
+        memo(CASE, template=written(folder, f"one\n{text}\n"), date=DAY, without=QUICK)
     assert words in str(raised.value)
     assert "\n" not in str(raised.value) and len(str(raised.value)) < 400
     assert "root:x" not in str(raised.value)
@@ -117,7 +117,7 @@ def test_faults_are_found_before_computing(tmp_path: Path, text: str, words: str
 def test_hostile_or_faulty_work_ends_in_one_line(tmp_path: Path, text: str, words: str) -> None:
     start = time.monotonic()
     with pytest.raises(InputError) as raised:
-        memo(CASE, template=written(tmp_path, f"one\n{text}\n"), date=DAY)
+        memo(CASE, template=written(tmp_path, f"one\n{text}\n"), date=DAY, without=QUICK)
     assert words in str(raised.value) and "own.md.j2" in str(raised.value)
     assert "\n" not in str(raised.value)
     assert time.monotonic() - start < 20
@@ -137,25 +137,27 @@ def test_a_template_of_ones_own(tmp_path: Path) -> None:
 
 def test_a_template_of_html(tmp_path: Path) -> None:
     path = written(tmp_path, "<p>{{ title }}</p><b>{{ estimate.net_power }}</b>{{ drawings.stack }}", "own.html.j2")
-    case = memo(load_case(ROOT / "examples/textbook-array.toml"), template=path, date=DAY)
+    case = memo(load_case(ROOT / "examples/textbook-array.toml"), template=path, date=DAY, without=QUICK)
     page = Page(case.html())
     assert page.shown[0].attributes["data-value"] == "estimate.net_power"
     assert "svg" in page.tags and CASE.title in case.html()
     with pytest.raises(InputError, match="makes HTML"):
-        memo(CASE, template=path, date=DAY, form=".pdf")
+        memo(CASE, template=path, date=DAY, form=".pdf", without=QUICK)
 
 
 def test_a_folder_of_templates(tmp_path: Path) -> None:
     written(tmp_path, "# Ours: {{ title }}\n", "memo.md.j2")
     written(tmp_path, "<!DOCTYPE html><html><body><header>Firm & Co</header>{{ body }}</body></html>", "page.html.j2")
-    html = memo(CASE, template=tmp_path, date=DAY).html()
+    html = memo(CASE, template=tmp_path, date=DAY, without=QUICK).html()
     assert "Firm & Co" in html and "<h1>Ours: " in html
     with pytest.raises(InputError, match=r"holds no comparison\.md\.j2"):
-        memo([CASE, CASE], template=tmp_path, date=DAY)
+        memo([CASE, CASE], template=tmp_path, date=DAY, without=QUICK)
 
 
 def test_what_a_template_inserts_is_never_markup(tmp_path: Path) -> None:
-    made = memo(CASE, template=written(tmp_path, "{{ '**a** | # `b` ~c~' }}\n\n- {{ '- x' }}\n"), date=DAY)
+    made = memo(
+        CASE, template=written(tmp_path, "{{ '**a** | # `b` ~c~' }}\n\n- {{ '- x' }}\n"), date=DAY, without=QUICK
+    )
     assert [type(block) for block in made.blocks] == [Paragraph, Bullets]
     assert "<p>**a** | # `b` ~c~</p>" in made.html()
 
@@ -206,7 +208,7 @@ def test_every_declared_value_is_there(path: Path, monkeypatch: pytest.MonkeyPat
 
     memo_of(path)
     monkeypatch.setattr(Rendering, "text", keeping)
-    memo(load_case(path), date=DAY)
+    memo(load_case(path), date=DAY, without=QUICK)
     for name, known in known_contents(several=False).items():
         if name not in ("title", "date", "version", "case_hash"):
             assert_known(kept[name], known, name)

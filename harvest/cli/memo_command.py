@@ -19,6 +19,12 @@ from harvest.errors import CaseError, InputError
 @click.option("--template", default=None, help="A shipped template, a file, or a folder with memo.md.j2.")
 @click.option("--date", default=None, help="Date in the memo, such as 2026-01-31; today unless given.")
 @click.option(
+    "--without",
+    multiple=True,
+    type=click.Choice(["size", "doubt"]),
+    help="Leave out a study that takes long; repeatable.",
+)
+@click.option(
     "--set",
     "overrides",
     multiple=True,
@@ -33,6 +39,7 @@ def memo(
     output: str | None,
     template: str | None,
     date: str | None,
+    without: tuple[str, ...],
     overrides: tuple[str, ...],
     as_json: bool,
     list_templates: bool,
@@ -68,9 +75,10 @@ def memo(
             loaded,
             template=template,
             date=day,
-            command=_command(cases, output, template, day, overrides),
+            command=_command(cases, output, template, day, overrides, without),
             sources=texts,
             form=form,
+            without=without,
             progress=_progress if sys.stderr.isatty() else None,
         )
     except CaseError as error:
@@ -96,12 +104,19 @@ def _text(case: str) -> str:
 
 
 def _command(
-    cases: tuple[str, ...], output: str | None, template: str | None, date: str, overrides: tuple[str, ...]
+    cases: tuple[str, ...],
+    output: str | None,
+    template: str | None,
+    date: str,
+    overrides: tuple[str, ...],
+    without: tuple[str, ...],
 ) -> str:
     """The command that repeats the memo."""
     words = ["harvest", "memo", *cases, "--date", date]
     for override in overrides:
         words += ["--set", override]
+    for study in without:
+        words += ["--without", study]
     words += ["--template", template] if template is not None else []
     return shlex.join([*words, "-o", output] if output is not None else words)
 

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import datetime
-from collections.abc import Callable, Sequence
+from collections.abc import Callable, Collection, Sequence
 from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
@@ -13,7 +13,16 @@ from harvest.model.case import Case, case_hash
 from harvest.model.estimate import estimate
 from harvest.quantities import one_line
 from harvest.report.files import case_source, write_whole
-from harvest.report.memo.contents import Comparison, Computed, Contents, comparison, contents, known_contents, sizing_of
+from harvest.report.memo.contents import (
+    Comparison,
+    Computed,
+    Contents,
+    comparison,
+    contents,
+    doubt_of,
+    known_contents,
+    sizing_of,
+)
 from harvest.report.memo.html_page import PAGE_KNOWN, html_body, html_of
 from harvest.report.memo.markdown_text import drawing_file, drawings_in, markdown
 from harvest.report.memo.markup import Block, read_markup
@@ -27,6 +36,7 @@ FORMATS = {
     ".docx": "a Word document, by python-docx",
 }
 MOST_CASES = 8
+STUDIES = {"size": "the number of modules", "doubt": "how sure the net power is"}
 
 
 @dataclass(frozen=True)
@@ -99,12 +109,14 @@ def memo(
     command: str = "",
     sources: Sequence[str] = (),
     form: str = ".html",
+    without: Collection[str] = (),
     progress: Callable[[str], None] | None = None,
 ) -> Memo:
     """Work out a case, or compare several, and make the memo.
 
     Parameters: `template` a shipped name, a file or a folder; `date` YYYY-MM-DD, today unless given; `command` and
-    `sources`, the texts of the case files, for the reader who repeats it; `form` the suffix that will be written.
+    `sources`, the texts of the case files, for the reader who repeats it; `form` the suffix that will be written;
+    `without` names what is left out of STUDIES, each of which takes longer than the rest.
     Raises InputError for a wrong template before anything is computed, NoAnswerError for a case without an answer.
     """
     several = [cases] if isinstance(cases, Case) else list(cases)
@@ -116,7 +128,8 @@ def memo(
     rendering = Rendering(found, known_contents(len(several) > 1), html_of=html_of)
     day = _day(date)
     page = None if found.is_page else _page_around(found)
-    computed = [_computed(case, several=len(several) > 1, progress=progress) for case in several]
+    alone = len(several) == 1
+    computed = [_computed(case, without if alone else STUDIES, progress or _unheard) for case in several]
     texts = list(sources) or [case_source(case) for case in several]
     said = one_line(command, 500)
     values, results = _values(computed, day, said, texts)
@@ -151,18 +164,25 @@ def _day(date: str | None) -> str:
         raise InputError(f"date: {one_line(date)} is no date; write it as 2026-01-31") from None
 
 
-def _computed(case: Case, *, several: bool, progress: Callable[[str], None] | None) -> Computed:
+def _unheard(_: str) -> None:
+    """Tell nobody."""
+
+
+def _computed(case: Case, without: Collection[str], progress: Callable[[str], None]) -> Computed:
+    """What a memo needs of a case."""
     answer = estimate(case)
     if not answer.valid:
-        name = f"{one_line(case.title)}: " if several else ""
         if answer.bad_input:
-            raise CaseError([f"{name}{fault}" for fault in answer.faults])
-        raise NoAnswerError(f"{name}no valid answer: {answer.problem}")
-    if several:
-        return Computed(case, answer)
-    if progress is not None:
-        progress("numbers of modules")
-    return Computed(case, answer, sizing_of(case))
+            raise CaseError(answer.faults)
+        raise NoAnswerError(f"{one_line(case.title)}: no valid answer: {answer.problem}")
+    sizing = found = None
+    if "size" not in without:
+        progress(STUDIES["size"])
+        sizing = sizing_of(case)
+    if "doubt" not in without:
+        progress(STUDIES["doubt"])
+        found = doubt_of(case)
+    return Computed(case, answer, sizing, found)
 
 
 def _values(

@@ -12,7 +12,7 @@ from typing import Any
 
 import numpy as np
 
-from harvest.errors import NoAnswerError
+from harvest.errors import InputError, NoAnswerError
 from harvest.model.case import DECLARATIONS, Case, case_hash, display, value_at
 from harvest.model.case_fields import Declaration
 from harvest.model.checks import STATUS_NAMES, Check
@@ -21,7 +21,9 @@ from harvest.model.stream_sections import HEAT_SINK
 from harvest.model.study_sections import Size
 from harvest.quantities import one_line
 from harvest.report.cautions import cautions
+from harvest.report.cost_sheet import payback_words
 from harvest.report.documents import case_document, estimate_document, size_document
+from harvest.report.doubt_sheet import LITTLE, MEASUREMENTS, MOST_INPUTS, doubt_document
 from harvest.report.memo import drawings
 from harvest.report.memo.values import (
     CodeText,
@@ -38,6 +40,7 @@ from harvest.report.memo.values import (
     usual_digits,
 )
 from harvest.report.terminal import fluid_words, stack_sentence, title, verdict
+from harvest.study.doubt import Doubt, doubt
 from harvest.study.size import Sizing, size
 from harvest.version import VERSION
 
@@ -52,6 +55,8 @@ NOT_MODELLED = (
 )
 POINTS_OF_CURVE = 20
 LONGEST_GIVEN = 90
+SMALLEST_WHOLE_AMOUNT = 100.0
+"""Money from which no fractions are printed."""
 GIVEN, DEFAULT, DERIVED = "given", "default", "derived"
 
 
@@ -149,6 +154,64 @@ class SizeContents:
 
 
 @dataclass(frozen=True)
+class Costs:
+    """What the design costs by the prices of the case; amounts are in its currency."""
+
+    currency: str = told("Currency of the prices.")
+    building: Value = told("Cost of building.", unit="1")
+    per_net_watt: Value = told("Cost of building over net power, a watt.", unit="1")
+    per_kilowatt_hour: Value = told("Cost of a net kilowatt-hour.", unit="1")
+    payback_years: Value = told("Years after which electricity has paid the cost back.", unit="1")
+    payback: Said = told("Payback in words, or why it cannot be told.")
+
+
+@dataclass(frozen=True)
+class InputDoubt:
+    """One field that is not known exactly."""
+
+    field: str = told("Field of the case file.")
+    meaning: str = told("What the field is.")
+    nominal: Value = told("Its value.", unit="SI")
+    tolerance: Said = told("How far it may be off.")
+    origin: str = told("given in the case, or default.")
+    source: str = told("Where a default tolerance is from.")
+    first_order: Value = told("Share of the variance of net power that it brings alone.", unit="1")
+    total: Value = told("Its share with all its interactions.", unit="1")
+    swing: Value = told("Change of net power from its 10th to its 90th percentile.", unit="W")
+    narrowing: Value = told("By how much the band would be narrower if it were known exactly.", unit="1")
+    how: str = told("How it can be measured; empty where that is not told.")
+
+
+@dataclass(frozen=True)
+class LimitDoubt:
+    """How likely a limit is broken."""
+
+    limit: str = told("Name of the limit.")
+    value: Value = told("The limit.", unit="SI")
+    chance: Value = told("Share of the cases in which it is broken.", unit="1")
+
+
+@dataclass(frozen=True)
+class DoubtContents:
+    """How sure the net power is."""
+
+    p5: Value = told("Net power that 5 of 100 cases stay below.", unit="W")
+    p10: Value = told("Net power that 10 of 100 cases stay below.", unit="W")
+    p50: Value = told("Net power that half of the cases stay below.", unit="W")
+    p90: Value = told("Net power that 90 of 100 cases stay below.", unit="W")
+    p95: Value = told("Net power that 95 of 100 cases stay below.", unit="W")
+    chance_negative: Value = told("Share of the cases with a net power below zero.", unit="1")
+    samples: Value = told("Cases drawn.", unit="1")
+    valid: Value = told("Cases drawn that have an answer.", unit="1")
+    index_cases: Value = told("Further cases for the sensitivity indices.", unit="1")
+    seed: Value = told("Seed of the sequence.", unit="1")
+    inputs: tuple[InputDoubt, ...] = told("Fields in doubt, those that matter most first.", of=InputDoubt, many=True)
+    most: tuple[InputDoubt, ...] = told("Those of them that bring more than a trace.", of=InputDoubt, many=True)
+    measure: tuple[InputDoubt, ...] = told("Those of them that are worth measuring.", of=InputDoubt, many=True)
+    limits: tuple[LimitDoubt, ...] = told("Limits, at the chosen load.", of=LimitDoubt, many=True)
+
+
+@dataclass(frozen=True)
 class Drawings:
     """Drawings, each None where it does not apply."""
 
@@ -156,6 +219,8 @@ class Drawings:
     energy: Drawing | None = told("The path of the energy.", optional=True)
     temperatures: Drawing = told("Temperatures along the hot stream.")
     count: Drawing | None = told("Power against the number of modules.", optional=True)
+    distribution: Drawing | None = told("Net powers of the cases drawn.", optional=True)
+    sensitivity: Drawing | None = told("What each field in doubt does to the net power.", optional=True)
 
 
 def _known_fields() -> dict[str, Known]:
@@ -210,6 +275,8 @@ class Contents:
     cautions: tuple[Said, ...] = told("What can hurt somebody or the equipment.", many=True)
     sources: tuple[str, ...] = told("Sources of properties and module data.", many=True)
     size: SizeContents | None = told("How the number of modules was judged.", of=SizeContents, optional=True)
+    costs: Costs | None = told("Costs, where the case has prices.", of=Costs, optional=True)
+    doubt: DoubtContents | None = told("How sure the net power is.", of=DoubtContents, optional=True)
     drawings: Drawings = told("Drawings.", of=Drawings)
 
 
@@ -251,6 +318,7 @@ class Computed:
     case: Case
     estimate: Estimate
     sizing: Sizing | None = None
+    doubt: Doubt | None = None
 
     def document(self) -> dict[str, Any]:
         """Results by the paths that numbers of a memo carry."""
@@ -269,7 +337,9 @@ class Computed:
                 status: sum(check.status == status for check in self.estimate.checks) for status in STATUS_NAMES
             },
             "cautions": cautions(self.case, self.estimate),
+            "payback": None if self.case.cost is None else payback_words(self.case, self.estimate),
             "size": None if self.sizing is None else size_document(self.sizing),
+            "doubt": None if self.doubt is None else doubt_document(self.doubt),
         }
 
 
@@ -284,6 +354,14 @@ def sizing_of(case: Case) -> Sizing | None:
     try:
         return size(case)
     except NoAnswerError:
+        return None
+
+
+def doubt_of(case: Case) -> Doubt | None:
+    """How sure the net power is; None where nothing is in doubt or no drawn case has an answer."""
+    try:
+        return doubt(case)
+    except (InputError, NoAnswerError):
         return None
 
 
@@ -328,6 +406,8 @@ def contents(computed: Computed, *, date: str, command: str, source: str, prefix
         ),
         sources=tuple(one_line(source, 300) for source in answer.sources),
         size=_size(computed, f"{prefix}size"),
+        costs=_costs(case, answer, scalars, prefix),
+        doubt=_doubt(computed.doubt, f"{prefix}doubt"),
         drawings=_drawings(computed, scalars, fields, electricity),
     )
 
@@ -452,7 +532,7 @@ def _inputs(case: Case, scalars: Group, path: str) -> tuple[InputSection, ...]:
         value = value_at(case, field)
         if declaration.section is not None or value is None or field == "title":
             continue
-        if field == "sweep" or field.startswith("size."):
+        if declaration.form in ("axes", "tolerances") or field.startswith("size."):
             continue
         given = _given(case.given, field)
         if given is None and (declaration.descriptive or not _applies(case, field, declaration)):
@@ -563,6 +643,68 @@ def _size(computed: Computed, path: str) -> SizeContents | None:
     )
 
 
+def _costs(case: Case, answer: Estimate, scalars: Group, prefix: str) -> Costs | None:
+    if case.cost is None:
+        return None
+    many = scalars.building_cost.raw >= SMALLEST_WHOLE_AMOUNT
+    return Costs(
+        currency=one_line(answer.currency or "(currency)"),
+        building=dataclasses.replace(scalars.building_cost, style="whole" if many else "quantity"),
+        per_net_watt=scalars.cost_per_net_watt,
+        per_kilowatt_hour=scalars.cost_per_kilowatt_hour,
+        payback_years=scalars.payback_years,
+        payback=Said(_sentence(payback_words(case, answer)), f"{prefix}payback"),
+    )
+
+
+def _doubt(found: Doubt | None, path: str) -> DoubtContents | None:
+    if found is None:
+        return None
+    net = found.results["net_power"]
+
+    def power(name: str) -> Value:
+        return Value(getattr(net, name), "power", f"{path}.results.net_power.{name}")
+
+    def whole(name: str) -> Value:
+        return Value(float(getattr(found, name)), "dimensionless", f"{path}.{name}", style="whole")
+
+    def share(number: float, name: str, digits: int = 2) -> Value:
+        return Value(number, "dimensionless", f"{path}.{name}", digits, "percent")
+
+    lines = tuple(
+        InputDoubt(
+            field=each.field,
+            meaning=re.split("[;:,]", DECLARATIONS[each.field].meaning)[0].rstrip("."),
+            nominal=Value(each.nominal, each.kind, f"{path}.inputs[{i}].nominal", 4),
+            tolerance=Said(each.tolerance.replace("+-", "±"), f"{path}.inputs[{i}].tolerance"),
+            origin=each.origin,
+            source=each.source,
+            first_order=share(each.first_order, f"inputs[{i}].first_order"),
+            total=share(each.total, f"inputs[{i}].total"),
+            swing=Value(each.swing, "power", f"{path}.inputs[{i}].swing"),
+            narrowing=share(each.band_narrowing, f"inputs[{i}].band_narrowing"),
+            how=MEASUREMENTS.get(each.field.rpartition(".")[2], ""),
+        )
+        for i, each in enumerate(found.inputs)
+    )
+    return DoubtContents(
+        **{name: power(name) for name in ("p5", "p10", "p50", "p90", "p95")},
+        **{name: whole(name) for name in ("samples", "valid", "index_cases", "seed")},
+        chance_negative=share(found.chance_negative, "chance_negative", 3),
+        inputs=lines,
+        most=tuple(line for line in lines[:MOST_INPUTS] if max(line.first_order.raw, line.total.raw) > LITTLE),
+        measure=tuple(line for name in found.worth_measuring for line in lines if line.field == name),
+        limits=tuple(
+            LimitDoubt(
+                each.limit.replace("_", " "),
+                Value(each.value, DECLARATIONS[f"limits.{each.limit}"].kind, f"{path}.limits[{i}].value", 4),
+                share(each.chance, f"limits[{i}].chance", 3),
+            )
+            for i, each in enumerate(found.limits)
+        ),
+    )
+
+
 def _drawings(computed: Computed, scalars: Group, fields: Group, electricity: list[tuple[str, Value]]) -> Drawings:
     case, answer, found = computed.case, computed.estimate, computed.sizing
     inlets = (fields.hot.inlet_temperature, fields.cold.inlet_temperature)
@@ -577,6 +719,8 @@ def _drawings(computed: Computed, scalars: Group, fields: Group, electricity: li
         energy=drawings.energy_drawing(scalars, electricity),
         temperatures=drawings.temperature_drawing(case, answer),
         count=count,
+        distribution=None if computed.doubt is None else drawings.distribution_drawing(computed.doubt),
+        sensitivity=None if computed.doubt is None else drawings.sensitivity_drawing(computed.doubt),
     )
 
 

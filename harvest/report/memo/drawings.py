@@ -12,6 +12,7 @@ import numpy as np
 from harvest.model.case import Case
 from harvest.model.results import Estimate
 from harvest.model.stream_sections import HEAT_SINK, Side
+from harvest.physics.arrays import BoolArray, FloatArray
 from harvest.report.memo.svg import (
     BLUE,
     GREEN,
@@ -26,12 +27,14 @@ from harvest.report.memo.svg import (
     Canvas,
     Point,
     apart,
+    tick_text,
     ticks,
 )
-from harvest.report.memo.values import Drawing, Group, Value
+from harvest.report.memo.values import Drawing, Group, Said, Value
 from harvest.report.terminal import fluid_words
 
 if TYPE_CHECKING:
+    from harvest.study.doubt import Doubt
     from harvest.study.size import SizeCurve
 
 HOT_GROUND, COLD_GROUND, WALL, MODULE = "#fbe3d3", "#dcedf8", "#8c8c8c", "#333333"
@@ -340,13 +343,14 @@ def temperature_drawing(case: Case, answer: Estimate) -> Drawing:
 
 def count_drawing(curve: SizeCurve, designed: tuple[int, float], best: tuple[int, float]) -> Drawing | None:
     """Generated, drive and net power against the number of modules, with the design and the best of the curve."""
-    counts = curve.module_count.astype(float)
+    kept = _well_arranged(curve.net_power)
+    counts = curve.module_count[kept].astype(float)
     if len(counts) < 2:
         return None
     lines = (
-        ("generated", curve.generated_power, VERMILION, "6 3"),
-        ("net", curve.net_power, BLUE, ""),
-        ("drives", curve.drive_power, GREEN, "2 2"),
+        ("generated", curve.generated_power[kept], VERMILION, "6 3"),
+        ("net", curve.net_power[kept], BLUE, ""),
+        ("drives", curve.drive_power[kept], GREEN, "2 2"),
     )
     canvas = Canvas("count", 304)
     powers = [float(value) for _, values, _, _ in lines for value in values]
@@ -371,3 +375,80 @@ def count_drawing(curve: SizeCurve, designed: tuple[int, float], best: tuple[int
         canvas.text((WIDTH - 6, axes.bottom + 34), "● this design", size=10, anchor="end")
     canvas.text((WIDTH - 6, axes.bottom + 48), "○ best of the curve", size=10, anchor="end")
     return canvas.drawing("Generated, drive and net power against the number of modules")
+
+
+def _well_arranged(net_power: FloatArray) -> BoolArray:
+    """Counts to draw: none on the way up to the best gives less than a smaller one, none beyond less than a larger."""
+    from_below = np.maximum.accumulate(net_power)
+    from_above = np.maximum.accumulate(net_power[::-1])[::-1]
+    return np.asarray((net_power >= from_below) | (net_power >= from_above))
+
+
+BINS = 30
+MOST_BARS = 10
+
+
+def distribution_drawing(found: Doubt) -> Drawing:
+    """Share of the drawn cases by net power, with the percentiles and the case as it stands."""
+    net, sample = found.results["net_power"], found.net_power_sample
+    canvas = Canvas("distribution", 226)
+    across = ticks(float(sample[0]), float(sample[-1]), 8)
+    counts, edges = np.histogram(sample, BINS)
+    shares = 100.0 * counts / len(sample)
+    upward = ticks(0.0, float(shares.max()), 4)
+    axes = Axes(canvas, (64, 42, 500, 182), across, upward, ("net power [W]", "cases [%]"))
+    for share, left, right in zip(shares, edges[:-1], edges[1:], strict=True):
+        x, y = axes.place(float(left), float(share))
+        canvas.rectangle((x, y), (axes.place(float(right), 0.0)[0] - x, axes.bottom - y), PALE, GREY, 0.5)
+    marks = [("P10", net.p10, "6 3"), ("P50", net.p50, ""), ("P90", net.p90, "2 2")]
+    labels = apart([axes.place(value, 0.0)[0] for _, value, _ in marks], 66, 90, WIDTH - 40)
+    for (name, value, dashes), label in zip(marks, labels, strict=True):
+        x = axes.place(value, 0.0)[0]
+        canvas.line([(label, 30), (x, axes.top), (x, axes.bottom)], BLUE, 1.6, dashes)
+        shown = Value(value, "power", f"doubt.results.net_power.{name.lower()}")
+        canvas.text((label, 24), [f"{name}  ", shown], anchor="middle", bold=True)
+    if across[0] < 0 < across[-1]:
+        x = axes.place(0.0, 0.0)[0]
+        canvas.line([(x, axes.top), (x, axes.bottom)], INK, 1.4)
+    canvas.dot(axes.place(net.nominal, 0.0), 4.5, INK)
+    canvas.text((WIDTH - 20, axes.bottom + 34), "● as the case stands", size=10, anchor="end")
+    return canvas.drawing("Net power of the cases that were drawn from the tolerances of the inputs")
+
+
+def sensitivity_drawing(found: Doubt) -> Drawing:
+    """Net power with each field alone at its 10th and its 90th percentile, those that matter most first."""
+    bars = found.inputs[:MOST_BARS]
+    nominal = found.results["net_power"].nominal
+    top, step = 44.0, 22.0
+    bottom = top + step * len(bars)
+    canvas = Canvas("sensitivity", bottom + 40)
+    ends = [value for each in bars for value in (each.net_power_at_p10, each.net_power_at_p90)]
+    finite = [value for value in ends if math.isfinite(value)]
+    across = ticks(min([nominal, *finite]), max([nominal, *finite]), 5)
+    left, right = 208.0, 448.0
+
+    def place(value: float) -> float:
+        return left + (value - across[0]) / (across[-1] - across[0]) * (right - left)
+
+    for value in across:
+        canvas.line([(place(value), top - 4), (place(value), bottom)], PALE, 0.7)
+        canvas.text((place(value), bottom + 14), tick_text(value), size=10, anchor="middle", colour=GREY, mark="tick")
+    canvas.text(((left + right) / 2, bottom + 30), "net power [W], this field alone changed", anchor="middle")
+    low, high = canvas.hatch(VERMILION, "#ffffff"), BLUE
+    for x, fill, words in ((left, low, "at its P10"), (left + 90, high, "at its P90")):
+        canvas.rectangle((x, 10), (16, 11), fill, INK, 0.5)
+        canvas.text((x + 21, 19.5), words, size=10)
+    canvas.text((WIDTH - 8, top - 10), "share", size=10, anchor="end", colour=GREY)
+    for i, each in enumerate(bars):
+        y = top + step * i
+        canvas.text((left - 8, y + 7), each.field, size=10, anchor="end")
+        tolerance = Said(each.tolerance.replace("+-", "±"), f"doubt.inputs[{i}].tolerance")
+        canvas.text((left - 8, y + 17), tolerance, size=8.5, anchor="end", colour=GREY)
+        for value, fill in ((each.net_power_at_p10, low), (each.net_power_at_p90, high)):
+            if math.isfinite(value):
+                x1, x2 = sorted((place(nominal), place(value)))
+                canvas.rectangle((x1, y), (max(x2 - x1, 0.6), 15), fill, INK, 0.5)
+        share = Value(each.first_order, "dimensionless", f"doubt.inputs[{i}].first_order", 2, "percent")
+        canvas.text((WIDTH - 8, y + 11), share, size=10, anchor="end")
+    canvas.line([(place(nominal), top - 4), (place(nominal), bottom)], INK, 1.2)
+    return canvas.drawing("Net power with each field alone at its 10th and its 90th percentile")

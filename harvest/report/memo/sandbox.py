@@ -16,7 +16,7 @@ from jinja2.visitor import NodeTransformer
 
 from harvest.report.memo.values import CodeText, Drawing, Group, Said, Value
 
-MOST_WORK = 20_000_000
+MOST_WORK = 5_000_000
 """Loop passes, calls and signs that a template may take; the standard memo takes some ten thousand."""
 LONGEST = 10.0
 """Seconds that a template may take."""
@@ -39,6 +39,10 @@ class Budget:
     """Work that a template may still do."""
 
     def __init__(self) -> None:
+        self.begin()
+
+    def begin(self) -> None:
+        """Set the clock and the work to their full amount."""
         self.left = MOST_WORK
         self.until = time.monotonic() + LONGEST
 

@@ -6,7 +6,7 @@ import math
 from collections.abc import Sequence
 from xml.sax.saxutils import escape, quoteattr
 
-from harvest.report.memo.values import Drawing, Value
+from harvest.report.memo.values import Drawing, Said, Value
 
 WIDTH = 520.0
 FONT = "Helvetica, Arial, 'Liberation Sans', sans-serif"
@@ -99,7 +99,7 @@ class Canvas:
     def text(
         self,
         at: Point,
-        words: str | Value | Sequence[str | Value],
+        words: str | Value | Said | Sequence[str | Value | Said],
         *,
         size: float = 11.0,
         anchor: str = "start",
@@ -109,7 +109,7 @@ class Canvas:
         mark: str = "",
     ) -> None:
         """Words at the base line; values among them carry the result that they show."""
-        pieces = [words] if isinstance(words, str | Value) else words
+        pieces = [words] if isinstance(words, str | Value | Said) else words
         inside = "".join(
             escape(piece)
             if isinstance(piece, str)

@@ -132,6 +132,7 @@ class Rendering:
 
     def text(self, values: Mapping[str, Any]) -> str:
         """Text of the template with values; raises InputError."""
+        self.environment.budget.begin()
         return str(self._guarded(lambda: "".join(self.compiled.generate(**values))))
 
     def _guarded(self, work: Callable[[], Any]) -> Any:
