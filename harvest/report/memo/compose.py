@@ -14,6 +14,7 @@ from harvest.model.estimate import estimate
 from harvest.quantities import one_line
 from harvest.report.files import case_source, write_whole
 from harvest.report.memo.contents import (
+    LETTERS,
     Comparison,
     Computed,
     Contents,
@@ -35,7 +36,6 @@ FORMATS = {
     ".pdf": "pages, by typst",
     ".docx": "a Word document, by python-docx",
 }
-MOST_CASES = 8
 STUDIES = {"size": "the number of modules", "doubt": "how sure the net power is"}
 
 
@@ -120,8 +120,8 @@ def memo(
     Raises InputError for a wrong template before anything is computed, NoAnswerError for a case without an answer.
     """
     several = [cases] if isinstance(cases, Case) else list(cases)
-    if not 1 <= len(several) <= MOST_CASES:
-        raise InputError(f"memo: {len(several)} cases; a memo takes one, and a comparison at most {MOST_CASES}")
+    if not 1 <= len(several) <= len(LETTERS):
+        raise InputError(f"memo: {len(several)} cases; a memo takes one, and a comparison at most {len(LETTERS)}")
     found = find_template(template, len(several) > 1)
     if found.is_page and form != ".html":
         raise InputError(f"template: {found.name} makes HTML, which cannot be written as {form}; use a .md.j2 template")
@@ -192,7 +192,7 @@ def _values(
         values = contents(computed[0], date=date, command=command, source=texts[0])
         return values, computed[0].document()
     each = [
-        contents(one, date=date, command=command, source=text, prefix=f"cases[{i}].")
+        contents(one, date=date, command=command, source=text, prefix=f"cases[{i}].", letter=LETTERS[i])
         for i, (one, text) in enumerate(zip(computed, texts, strict=True))
     ]
     together = comparison(each, [one.case for one in computed], date=date, command=command)

@@ -54,6 +54,8 @@ NOT_MODELLED = (
     "ageing",
 )
 POINTS_OF_CURVE = 20
+LETTERS = ("A", "B", "C", "D", "E", "F", "G", "H")
+"""Names of compared cases, as many as can be compared."""
 LONGEST_GIVEN = 90
 SMALLEST_WHOLE_AMOUNT = 100.0
 """Money from which no fractions are printed."""
@@ -365,8 +367,10 @@ def doubt_of(case: Case) -> Doubt | None:
         return None
 
 
-def contents(computed: Computed, *, date: str, command: str, source: str, prefix: str = "") -> Contents:
-    """Everything that templates of one case can name; `prefix` stands before the paths of its results."""
+def contents(
+    computed: Computed, *, date: str, command: str, source: str, prefix: str = "", letter: str = ""
+) -> Contents:
+    """Everything that templates of one case can name; in a comparison `prefix` begins paths, `letter` names the case."""
     case, answer = computed.case, computed.estimate
     scalars = scalars_of(answer, f"{prefix}estimate")
     fields = _fields(case, f"{prefix}case")
@@ -408,7 +412,7 @@ def contents(computed: Computed, *, date: str, command: str, source: str, prefix
         size=_size(computed, f"{prefix}size"),
         costs=_costs(case, answer, scalars, prefix),
         doubt=_doubt(computed.doubt, f"{prefix}doubt"),
-        drawings=_drawings(computed, scalars, fields, electricity),
+        drawings=_drawings(computed, scalars, fields, electricity, f"{letter.lower()}-" if letter else ""),
     )
 
 
@@ -553,7 +557,9 @@ def _inputs(case: Case, scalars: Group, path: str) -> tuple[InputSection, ...]:
             value = dataclasses.replace(flow, digits=6, style="si")
             meaning = SCALARS[f"{side}_mass_flow"]["meaning"].partition(";")[0].rstrip(".") + "."
             sections[side].append(InputLine(f"{side}.mass_flow", meaning, "", (value,), DERIVED, ""))
-    return tuple(InputSection(name, DECLARATIONS[name].meaning, tuple(lines)) for name, lines in sections.items())
+    return tuple(
+        InputSection(name, DECLARATIONS[name].meaning.rstrip("."), tuple(lines)) for name, lines in sections.items()
+    )
 
 
 def _applies(case: Case, path: str, declaration: Declaration) -> bool:
@@ -705,7 +711,9 @@ def _doubt(found: Doubt | None, path: str) -> DoubtContents | None:
     )
 
 
-def _drawings(computed: Computed, scalars: Group, fields: Group, electricity: list[tuple[str, Value]]) -> Drawings:
+def _drawings(
+    computed: Computed, scalars: Group, fields: Group, electricity: list[tuple[str, Value]], prefix: str
+) -> Drawings:
     case, answer, found = computed.case, computed.estimate, computed.sizing
     inlets = (fields.hot.inlet_temperature, fields.cold.inlet_temperature)
     count = None
@@ -715,9 +723,9 @@ def _drawings(computed: Computed, scalars: Group, fields: Group, electricity: li
             found.curve, design, (found.arrangement.module_count, found.arrangement.net_power)
         )
     return Drawings(
-        stack=drawings.stack_drawing(case, answer, scalars, inlets),
-        energy=drawings.energy_drawing(scalars, electricity),
-        temperatures=drawings.temperature_drawing(case, answer),
+        stack=drawings.stack_drawing(case, answer, scalars, inlets, prefix),
+        energy=drawings.energy_drawing(scalars, electricity, prefix),
+        temperatures=drawings.temperature_drawing(case, answer, prefix),
         count=count,
         distribution=None if computed.doubt is None else drawings.distribution_drawing(computed.doubt),
         sensitivity=None if computed.doubt is None else drawings.sensitivity_drawing(computed.doubt),
@@ -751,7 +759,6 @@ COMPARED = {
 
 def comparison(each: list[Contents], cases: list[Case], *, date: str, command: str) -> Comparison:
     """Everything that templates of several cases can name."""
-    letters = tuple(chr(ord("A") + i) for i in range(len(cases)))
     results = [
         ComparedResult(words, tuple(getattr(one.estimate, name) for one in each))
         for name, words in COMPARED.items()
@@ -769,7 +776,7 @@ def comparison(each: list[Contents], cases: list[Case], *, date: str, command: s
         date=date,
         version=VERSION,
         command=command,
-        letters=letters,
+        letters=LETTERS[: len(cases)],
         cases=tuple(each),
         results=tuple(results),
         differences=tuple(differences),

@@ -1,4 +1,7 @@
-"""The drawings of a memo: the stack to scale, the path of the energy, temperatures, module counts."""
+"""The drawings of a memo: the stack to scale, the path of the energy, temperatures, module counts, how sure it is.
+
+A `prefix` keeps the drawings of several cases apart.
+"""
 
 from __future__ import annotations
 
@@ -42,6 +45,8 @@ NOMINAL_DUCT, NOMINAL_MODULE = 0.02, 0.004
 """Heights [m] drawn where a case gives none; the drawing then says so."""
 MOST_MODULES_DRAWN = 1500
 MOST_LAYERS_DRAWN = 16
+FIN_STEP = 7.0
+"""Distance of a heat sink's fins as drawn [px]."""
 
 
 @dataclass(frozen=True)
@@ -88,7 +93,9 @@ def _slabs(case: Case, layers: int) -> list[_Slab]:
     return [end, *pairs, end]
 
 
-def stack_drawing(case: Case, answer: Estimate, scalars: Group, inlets: tuple[Value, Value]) -> Drawing:
+def stack_drawing(
+    case: Case, answer: Estimate, scalars: Group, inlets: tuple[Value, Value], prefix: str = ""
+) -> Drawing:
     """The stack from the side and one layer from above, to scale, with flows and temperatures."""
     shown = min(case.stack.layers, MOST_LAYERS_DRAWN)
     slabs = _slabs(case, shown)
@@ -102,7 +109,7 @@ def stack_drawing(case: Case, answer: Estimate, scalars: Group, inlets: tuple[Va
     bottom = top + max(scale * total, 34.0)
     plan_top = bottom + 86
     height = plan_top + scale * width + 40
-    canvas = Canvas("stack", height)
+    canvas = Canvas(f"{prefix}stack", height)
     hot_ducts, cold_ducts = (_flow_words(case, scalars, name) for name in ("hot", "cold"))
     canvas.text((WIDTH / 2, 14), ["Hot side: ", fluid_words(case.hot), *hot_ducts], anchor="middle", bold=True)
     middles = _draw_side(canvas, case, slabs, (left, top), scale)
@@ -156,6 +163,9 @@ def _draw_side(canvas: Canvas, case: Case, slabs: Sequence[_Slab], at: Point, sc
                 canvas.rectangle((place, y), (scale * foot, height), MODULE)
             if not single:
                 canvas.rectangle((left, y), (length, height), MODULE)
+        elif slab.kind == "cold" and case.cold.duct.kind == HEAT_SINK:
+            _draw_fins(canvas, (left, y), (length, height), max(scale * slab.wall, 0.6))
+            middles["cold"].append(y + height / 2)
         else:
             wall = max(scale * slab.wall, 0.6)
             canvas.rectangle((left, y), (length, height), fills[slab.kind], WALL, 0.4)
@@ -164,6 +174,15 @@ def _draw_side(canvas: Canvas, case: Case, slabs: Sequence[_Slab], at: Point, sc
             middles[slab.kind].append(y + height / 2)
         y += height
     return middles
+
+
+def _draw_fins(canvas: Canvas, at: Point, size: Point, base: float) -> None:
+    """A heat sink: its base, and fins without number below it."""
+    (left, top), (length, height) = at, size
+    canvas.rectangle(at, size, COLD_GROUND)
+    for x in np.arange(left + FIN_STEP / 2, left + length, FIN_STEP).tolist():
+        canvas.line([(x, top + base), (x, top + height)], WALL, 1.6)
+    canvas.rectangle(at, (length, base), WALL)
 
 
 def _draw_streams(
@@ -231,7 +250,7 @@ def _dimension(
         canvas.text((x + length / 2, y + 14), value, size=10, anchor="middle")
 
 
-def energy_drawing(scalars: Group, losses: Sequence[tuple[str, Value]]) -> Drawing | None:
+def energy_drawing(scalars: Group, losses: Sequence[tuple[str, Value]], prefix: str = "") -> Drawing | None:
     """Where the heat goes, as bands, and where the electricity goes, as bars; None where no heat enters."""
     heat = scalars.hot_heat_flow
     if not heat.raw > 0:
@@ -246,7 +265,7 @@ def energy_drawing(scalars: Group, losses: Sequence[tuple[str, Value]]) -> Drawi
     flows = [each for each in flows if each[1].raw > 1e-9 * heat.raw]
     top, tall, distance = 34.0, 112.0, 24.0
     bars_top = top + tall + distance * len(flows) + 42
-    canvas = Canvas("energy", bars_top + 20 * len(losses) + 16)
+    canvas = Canvas(f"{prefix}energy", bars_top + 20 * len(losses) + 16)
     canvas.text((8, 14), "Heat", bold=True)
     start, split, end = 100.0, 150.0, 262.0
     canvas.rectangle((start, top), (split - start, tall), canvas.hatch(VERMILION, HOT_GROUND), INK, 0.5)
@@ -308,7 +327,7 @@ PROFILE = (
 )
 
 
-def temperature_drawing(case: Case, answer: Estimate) -> Drawing:
+def temperature_drawing(case: Case, answer: Estimate, prefix: str = "") -> Drawing:
     """Temperatures of streams, faces and junctions along the hot stream."""
     rows = answer.rows
     count = len(rows.current)
@@ -316,7 +335,7 @@ def temperature_drawing(case: Case, answer: Estimate) -> Drawing:
     inlets = (case.hot.inlet_temperature - 273.15, case.cold.inlet_temperature - 273.15)
     outlets = (answer.hot_outlet_temperature - 273.15, answer.cold_outlet_temperature - 273.15)
     everything = [*np.concatenate(list(curves.values())), *inlets, *(each for each in outlets if math.isfinite(each))]
-    canvas = Canvas("temperatures", 300)
+    canvas = Canvas(f"{prefix}temperatures", 300)
     upward = ticks(min(everything), max(everything))
     across = range(1, count + 1, max(1, math.ceil(count / 8)))
     names = ("row along the hot stream", "temperature [°C]")
