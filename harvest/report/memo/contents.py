@@ -370,7 +370,7 @@ def doubt_of(case: Case) -> Doubt | None:
 def contents(
     computed: Computed, *, date: str, command: str, source: str, prefix: str = "", letter: str = ""
 ) -> Contents:
-    """Everything that templates of one case can name; in a comparison `prefix` begins paths, `letter` names the case."""
+    """Everything that templates of one case can name; in a comparison `prefix` begins paths, `letter` names it."""
     case, answer = computed.case, computed.estimate
     scalars = scalars_of(answer, f"{prefix}estimate")
     fields = _fields(case, f"{prefix}case")
