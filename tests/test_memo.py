@@ -37,7 +37,7 @@ def assert_shows_results(made: Memo) -> int:
     for shown in page.shown:
         if "data-unit" not in shown.attributes:
             words = str(result_at(made.results, shown.attributes["data-value"]))
-            letters = re.compile(r"[^A-Za-z0-9]+|degC|C\b|um\b|m\b|ohm\b|\bx\b|µ|Ω|×|°")
+            letters = re.compile(r"[^A-Za-z0-9]+|degC|C\b|um\b|m\b|ohm\b|\bx\b|µ|Ω|×|°|±")
             assert letters.sub("", shown.text) == letters.sub("", words)
             continue
         number = shown_number(made.results, shown.attributes)

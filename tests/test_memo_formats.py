@@ -17,7 +17,7 @@ from click.testing import CliRunner
 from harvest.cli import cli
 from harvest.model.reading import load_case, replace
 from harvest.report.memo.compose import memo
-from tests.memos import DAY, QUICK, ROOT, memo_of
+from tests.memos import CASES, DAY, QUICK, ROOT, memo_of
 
 EXHAUST = ROOT / "examples/genset-exhaust.toml"
 TEXTBOOK = ROOT / "examples/textbook-array.toml"
@@ -41,6 +41,13 @@ def test_pdf_has_the_answer_and_the_same_bytes() -> None:
     text = text_of_pdf(content)
     for words in ("Exhaust of a 60 kW generator", "369 W net", "carbon monoxide", "Approved", "swept_volume_flow"):
         assert words in " ".join(text.replace("\N{NO-BREAK SPACE}", " ").split())
+
+
+@pytest.mark.parametrize("path", CASES, ids=lambda path: path.stem)
+def test_the_summary_is_one_page(path: Path) -> None:
+    pytest.importorskip("typst")
+    pdfium = pytest.importorskip("pypdfium2")
+    assert len(pdfium.PdfDocument(memo_of(path, "summary").pdf())) == 1
 
 
 def test_a_hostile_title_is_text_in_pdf_and_word() -> None:

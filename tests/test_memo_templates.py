@@ -107,6 +107,15 @@ def test_faults_are_found_before_computing(tmp_path: Path, text: str, words: str
         ("{% set n = namespace(s='ab') %}{% for i in range(99) %}{% set n.s = n.s ~ n.s %}{% endfor %}", "more work"),
         ("{% macro f(n) %}{{ f(n) }}{% endmacro %}{{ f(1) }}", "recursion"),
         ("{% macro f(n) %}{% if n %}{{ f(n - 1) }}{{ f(n - 1) }}{% endif %}{% endmacro %}{{ f(40) }}", "more work"),
+        ("{% set n = namespace(s=1) %}{% for i in range(99) %}{% set n.s = [n.s, n.s] %}{% endfor %}", "more work"),
+        (
+            "{% set n = namespace(s=1) %}{% for i in range(60) %}{% set n.s = (n.s, n.s) | string %}{% endfor %}",
+            "more",
+        ),
+        (
+            "{% set n = namespace(s=1) %}{% for i in range(99) %}{% set n.s = {1: n.s, 2: n.s} %}{% endfor %}",
+            "more",
+        ),
         ("{{ estimate }}", "is no text"),
         ("{{ drawings.energy }}{{ checks }}", "is no text"),
         ("{{ [title] }}", "is no text"),

@@ -462,7 +462,7 @@ def _check_line(check: Check, path: str) -> CheckLine:
 
 def _sentence(text: str) -> str:
     """A sentence of a result with the signs of print."""
-    plain = one_line(text, 600).replace("degC", "°C").replace(" x ", " × ")
+    plain = one_line(text, 600).replace("degC", "°C").replace(" x ", " × ").replace("+-", "±")
     return re.sub(r"(?<=[0-9] )(?:um|uV/K|[mk]?ohm)\b", lambda unit: typographic(unit[0]), plain)
 
 
@@ -536,7 +536,7 @@ def _inputs(case: Case, scalars: Group, path: str) -> tuple[InputSection, ...]:
         value = value_at(case, field)
         if declaration.section is not None or value is None or field == "title":
             continue
-        if declaration.form in ("axes", "tolerances") or field.startswith("size."):
+        if _is_of_study(field, declaration):
             continue
         given = _given(case.given, field)
         if given is None and (declaration.descriptive or not _applies(case, field, declaration)):
@@ -560,6 +560,11 @@ def _inputs(case: Case, scalars: Group, path: str) -> tuple[InputSection, ...]:
     return tuple(
         InputSection(name, DECLARATIONS[name].meaning.rstrip("."), tuple(lines)) for name, lines in sections.items()
     )
+
+
+def _is_of_study(path: str, declaration: Declaration) -> bool:
+    """Whether a field tells what a study varies, and nothing of the design."""
+    return declaration.form in ("axes", "tolerances") or path.startswith("size.")
 
 
 def _applies(case: Case, path: str, declaration: Declaration) -> bool:
@@ -766,7 +771,7 @@ def comparison(each: list[Contents], cases: list[Case], *, date: str, command: s
     ]
     differences = []
     for path, declaration in DECLARATIONS.items():
-        if declaration.section is not None or path in ("title", "sweep") or path.startswith("size."):
+        if declaration.section is not None or path == "title" or _is_of_study(path, declaration):
             continue
         texts = [_compared(case, path, declaration) for case in cases]
         if len(set(texts)) > 1:

@@ -23,7 +23,7 @@ LONGEST = 10.0
 LARGEST_NUMBER = 1e300
 KEPT_GLOBALS = ("range", "namespace", "joiner")
 KEPT_FILTERS = (
-    *("abs", "capitalize", "count", "default", "first", "float", "groupby", "int", "last", "length", "list", "lower"),
+    *("abs", "capitalize", "count", "default", "first", "float", "int", "last", "length", "list", "lower"),
     *("map", "max", "min", "reject", "rejectattr", "reverse", "round", "select", "selectattr", "sort", "string"),
     *("title", "trim", "unique", "upper"),
 )
@@ -60,7 +60,7 @@ class Budget:
 
 
 class _Counted(NodeTransformer):
-    """Sends every loop and every joining of texts through the budget; an `if` without `else` gives nothing."""
+    """Sends loops, lists and joined texts through the budget; an `if` without `else` gives nothing."""
 
     def visit_For(self, node: nodes.For) -> nodes.Node:  # noqa: N802 - the name that Jinja2 looks for
         self.generic_visit(node)
@@ -74,6 +74,19 @@ class _Counted(NodeTransformer):
         self.generic_visit(node)
         parts = nodes.List(node.nodes, lineno=node.lineno)
         return nodes.Filter(parts, "_joined", [], [], None, None, lineno=node.lineno)
+
+    def visit_List(self, node: nodes.List) -> nodes.Node:  # noqa: N802
+        self.generic_visit(node)
+        return nodes.Filter(node, "_built", [], [], None, None, lineno=node.lineno)
+
+    def visit_Tuple(self, node: nodes.Tuple) -> nodes.Node:  # noqa: N802
+        self.generic_visit(node)
+        stored = node.ctx == "store"
+        return node if stored else nodes.Filter(node, "_built", [], [], None, None, lineno=node.lineno)
+
+    def visit_Dict(self, node: nodes.Dict) -> nodes.Node:  # noqa: N802
+        self.generic_visit(node)
+        return nodes.Filter(node, "_built", [], [], None, None, lineno=node.lineno)
 
     def visit_CondExpr(self, node: nodes.CondExpr) -> nodes.Node:  # noqa: N802
         self.generic_visit(node)
@@ -100,8 +113,8 @@ class Sandbox(ImmutableSandboxedEnvironment):
         self.inserted = inserted
         self.budget = Budget()
         self.globals = {name: self.globals[name] for name in KEPT_GLOBALS}
-        own = {"join": self.join, "_joined": self.joined, "_passes": self.passes, **VALUE_FILTERS}
-        self.filters = {**{name: self.filters[name] for name in KEPT_FILTERS}, **own}
+        own = {"join": self.join, "_joined": self.joined, "_passes": self.passes, "_built": self.built}
+        self.filters = {**{name: self.filters[name] for name in KEPT_FILTERS}, **own, **VALUE_FILTERS}
 
     def compile(
         self, source: Any, name: str | None = None, filename: str | None = None, *more: Any, **named: Any
@@ -140,6 +153,15 @@ class Sandbox(ImmutableSandboxedEnvironment):
     def passes(self, items: Iterable[Any], cost: int) -> Iterator[Any]:
         """Items of a loop, counted."""
         return self.budget.passes(items, cost)
+
+    def built(self, made: Any) -> Any:
+        """A list that a template writes down, paid for with all that is in it, however often."""
+        waiting = [made]
+        while waiting:
+            each = waiting.pop()
+            self.budget.spend(1 + len(each) if isinstance(each, str) else 1)
+            waiting += each.values() if isinstance(each, dict) else each if isinstance(each, list | tuple) else ()
+        return made
 
     def joined(self, parts: list[Any]) -> str:
         """One text of several, counted."""
