@@ -277,6 +277,7 @@ TEXT = LOOP.read_text("utf-8")
         ('"hot.inlet_temperature" = { uniform = ["2 K", "-1 K"] }', "give the lower end first"),
         ('"hot.volume_flow" = { uniform = ["-2 %", "1 L/min"] }', "one end is in % and the other is not"),
         ('"hot.volume_flow" = { factor = 0.5 }', "give above 1 and at most 100"),
+        ('"site.ambient_pressure" = "1 kPa"', "give hot.pressure or cold.pressure a tolerance"),
         ('"stack.rows" = "5 %"', "is no number that a result depends on continuously"),
         ('"limits.hot_pressure_drop" = "5 %"', "is no number that a result depends on continuously"),
         ('"module.seebeck" = "5 %"', "is a curve; give module.seebeck_factor a tolerance instead"),
@@ -473,6 +474,15 @@ def test_cases_without_an_answer_are_counted_with_their_reason() -> None:
     assert found.results["net_power"].nominal > found.results["net_power"].p50
     report = doubt_report(case, found)
     assert f"Caution: {count} of 1,024 cases have no answer" in report
+
+
+def test_a_curve_that_meets_no_resistance_is_the_reason_told() -> None:
+    """A circuit flow beyond the pump's curve leaves no flow, which is no fault of the blocks behind it."""
+    case = load_case(EXAMPLES / "workshop-water-blocks.toml")
+    found = doubt(only(case, {"hot.circuit_flow": {"uniform": ["-1 L/min", "4 L/min"]}}), samples=256)
+    ((reason, count),) = found.invalid.items()
+    assert "hot.drive_curve" in reason
+    assert count == pytest.approx(256 * 2.0 / 5.0, abs=2)  # the curve ends at 16 L/min, 2 above the stated 14
 
 
 @pytest.mark.parametrize(("samples", "seed", "message"), [(1000, 1, "power of two"), (32, 1, "64"), (256, -1, "seed")])

@@ -14,30 +14,18 @@ from harvest.cli import cli
 from harvest.errors import CaseError
 from harvest.model.batch import Batch
 from harvest.model.estimate import estimate, estimate_batch
-from harvest.model.module import cooler_comparison, described_module, fill_factor
+from harvest.model.module import described_module, fill_factor
 from harvest.model.module_curve import module_curve
+from harvest.model.rated_module import cooler_comparison
 from harvest.model.reading import load_case, read_case
+from tests.case_texts import BETWEEN_PLATES
 
-SIDES = """\
-[hot]
-fluid = "reservoir"
-inlet_temperature = "150 degC"
-film_coefficient = "20000 W/(m^2 K)"
-[cold]
-fluid = "reservoir"
-inlet_temperature = "50 degC"
-film_coefficient = "20000 W/(m^2 K)"
-[stack]
-layers = 1
-rows = 1
-columns = 1
-row_pitch = "40 mm"
-column_pitch = "40 mm"
-[module]
-"""
-LEGS = SIDES + 'use = "demo-bismuth-telluride-40"\n'
-COOLER = SIDES + 'use = "demo-cooler-40"\n'
-CURVES = SIDES + 'footprint = ["40 mm", "40 mm"]\nseebeck = "0.05 V/K"\nresistance = "2 ohm"\nconductance = "0.1 W/K"\n'
+LEGS = BETWEEN_PLATES + 'use = "demo-bismuth-telluride-40"\n'
+COOLER = BETWEEN_PLATES + 'use = "demo-cooler-40"\n'
+CURVES = (
+    BETWEEN_PLATES
+    + 'footprint = ["40 mm", "40 mm"]\nseebeck = "0.05 V/K"\nresistance = "2 ohm"\nconductance = "0.1 W/K"\n'
+)
 
 
 def warnings(text: str, *overrides: str) -> str:
@@ -124,7 +112,7 @@ def test_an_unknown_material_in_a_record_is_told_with_its_line(tmp_path: Path) -
         encoding="utf-8",
     )
     path = tmp_path / "case.toml"
-    path.write_text(SIDES + 'use = "records/mine.toml"\n', encoding="utf-8")
+    path.write_text(BETWEEN_PLATES + 'use = "records/mine.toml"\n', encoding="utf-8")
     (tmp_path / "bismut telluride n").write_text("", encoding="utf-8")  # beside the case, where a record does not look
     with pytest.raises(CaseError) as caught:
         load_case(path)
@@ -159,7 +147,7 @@ def test_a_cooler_shows_what_correction_and_extraction_change() -> None:
 
 
 def test_the_comparison_is_the_same_whatever_the_case_uses() -> None:
-    text = SIDES + 'footprint = ["40 mm", "40 mm"]\n[module.cooler_rating]\nmaximum_current = "6.1 A"\n'
+    text = BETWEEN_PLATES + 'footprint = ["40 mm", "40 mm"]\n[module.cooler_rating]\nmaximum_current = "6.1 A"\n'
     text += 'maximum_voltage = "15.3 V"\nmaximum_temperature_difference = "66 K"\nhot_side_temperature = "27 degC"\n'
     rated, corrected = (
         cooler_comparison(Batch(read_case(text, overrides)), 400.0, 300.0)

@@ -17,11 +17,8 @@ from harvest.model.batch import Batch
 from harvest.model.case import case_hash, explain, value_at
 from harvest.model.estimate import estimate, estimate_batch
 from harvest.model.materials import load_material
-from harvest.model.module import (
-    cooler_heat_disagreement,
-    cooler_matched_powers,
-    described_module,
-)
+from harvest.model.module import described_module
+from harvest.model.rated_module import cooler_heat_disagreement, cooler_matched_powers
 from harvest.model.reading import case_from, load_case, read_case, replace
 from harvest.model.stack_sections import GeneratorRating
 from harvest.physics.arrays import FloatArray
@@ -39,6 +36,7 @@ from harvest.physics.ratings import (
     temperature_line,
 )
 from harvest.physics.thermoelectrics import LegModule, efficiency_at_load_ratio, figure_of_merit, maximum_efficiency
+from tests.case_texts import BETWEEN_PLATES
 
 ROOT = Path(__file__).parent.parent
 
@@ -184,25 +182,7 @@ def test_a_held_curve_is_constant_beyond_its_range() -> None:
 
 # ---- Case files
 
-START = """\
-title = "invented"
-[hot]
-fluid = "reservoir"
-inlet_temperature = "150 degC"
-film_coefficient = "20000 W/(m^2 K)"
-[cold]
-fluid = "reservoir"
-inlet_temperature = "50 degC"
-film_coefficient = "20000 W/(m^2 K)"
-[stack]
-layers = 1
-rows = 1
-columns = 1
-row_pitch = "40 mm"
-column_pitch = "40 mm"
-[module]
-footprint = ["40 mm", "40 mm"]
-"""
+START = 'title = "invented"\n' + BETWEEN_PLATES + 'footprint = ["40 mm", "40 mm"]\n'
 COOLER = (
     START
     + """\

@@ -8,8 +8,8 @@ from typing import TYPE_CHECKING
 
 import click
 
-from harvest.cli.program import case_arguments, cli, read_case_of, read_streams_of, standard_input, with_line
-from harvest.errors import CaseError, InputError, NoAnswerError
+from harvest.cli.program import case_arguments, cli, read_case_of, read_streams_of, require_answer, standard_input
+from harvest.errors import InputError
 
 if TYPE_CHECKING:
     from harvest.study.modules import LoadedModule
@@ -43,10 +43,7 @@ def screen(case: str, overrides: tuple[str, ...], as_json: bool, figure_of_merit
         click.echo(json_text(screen_document(answer)))
     elif answer.valid:
         click.echo(screen_report(loaded, answer))
-    if not answer.valid:
-        if answer.bad_input:
-            raise CaseError([with_line(case, fault) for fault in answer.faults])
-        raise NoAnswerError(f"no valid answer: {answer.problem}")
+    require_answer(case, answer)
 
 
 @cli.command()
@@ -65,10 +62,7 @@ def estimate(case: str, overrides: tuple[str, ...], as_json: bool) -> None:
         from harvest.report.terminal import estimate_report
 
         click.echo(estimate_report(loaded, answer))
-    if not answer.valid:
-        if answer.bad_input:
-            raise CaseError([with_line(case, fault) for fault in answer.faults])
-        raise NoAnswerError(f"no valid answer: {answer.problem}")
+    require_answer(case, answer)
 
 
 @cli.command()

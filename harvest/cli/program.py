@@ -12,11 +12,13 @@ from typing import TYPE_CHECKING, Any, NoReturn
 
 import click
 
-from harvest.errors import HarvestError, InputError
+from harvest.errors import CaseError, HarvestError, InputError, NoAnswerError
 from harvest.version import VERSION
 
 if TYPE_CHECKING:
     from harvest.model.case import Case, Streams
+    from harvest.model.results import Estimate
+    from harvest.study.screen import Screening
 
 INTERRUPTED = 130
 
@@ -81,7 +83,7 @@ def read_streams_of(case: str, overrides: tuple[str, ...]) -> Streams:
     return load_streams(Path(case), overrides)
 
 
-def with_line(case: str, fault: str) -> str:
+def _with_line(case: str, fault: str) -> str:
     """Name the file and line of the field that a fault begins with, where the case is a file that gives it."""
     from harvest.model.case_text import bounded_text, key_lines
 
@@ -89,6 +91,15 @@ def with_line(case: str, fault: str) -> str:
         return f"stdin: {fault}"
     line = key_lines(bounded_text(Path(case))).get(fault.partition(":")[0])
     return f"{case}:{line}: {fault}" if line else f"{case}: {fault}"
+
+
+def require_answer(case: str, answer: Estimate | Screening) -> None:
+    """Raise for an answer that is none: CaseError with file and line where the input is at fault, or NoAnswerError."""
+    if answer.valid:
+        return
+    if answer.bad_input:
+        raise CaseError([_with_line(case, fault) for fault in answer.faults])
+    raise NoAnswerError(f"no valid answer: {answer.problem}")
 
 
 def standard_input() -> str:

@@ -14,7 +14,7 @@ from harvest.physics.arrays import FloatArray, IntArray
 from harvest.quantities import STANDARD_VOLUME_FLOW, StandardVolumeFlow
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, eq=False)
 class StreamBatch:
     """The streams of a case and `varied`, SI numbers (cases,) by field path, that replace the base's.
 
@@ -60,7 +60,7 @@ class StreamBatch:
         return path in self.varied or value_at(self.base, path) is not None
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, eq=False)
 class Batch(StreamBatch):
     """A base case and the numbers in which designs differ from it; see `StreamBatch`."""
 

@@ -10,14 +10,6 @@ import numpy as np
 
 from harvest.model.case_fields import MOST_MODULES, Declaration
 from harvest.model.loads import FIXED_RESISTANCE, FIXED_VOLTAGE
-from harvest.model.rating_rules import (
-    LARGEST_MERIT,
-    LARGEST_SCATTER,
-    cooler_contradictions,
-    generator_contradictions,
-    generator_scatter,
-    rating_numbers,
-)
 from harvest.model.stream_sections import GASES, GLYCOLS, HEAT_SINK, RATED
 from harvest.quantities import significant
 
@@ -389,6 +381,8 @@ def cooler_ratings_agree(values: Values) -> Faults:
     """Require ratings of a cooler that can belong to one part."""
     if values["module.cooler_rating"] is None:
         return
+    from harvest.model.rating_rules import cooler_contradictions
+
     names = ("maximum_current", "maximum_voltage", "maximum_temperature_difference", "maximum_heat")
     given = [values[f"module.cooler_rating.{name}"] for name in (*names, "hot_side_temperature")]
     if given[3] is None and values["module.cooler_rating.extraction"] == "Zhang":
@@ -407,6 +401,14 @@ def generator_ratings_agree(values: Values) -> Faults:
         if merit is not None:
             yield "module.figure_of_merit", "is used with [[module.generator_rating]] only; remove it"
         return
+    from harvest.model.rating_rules import (
+        LARGEST_MERIT,
+        LARGEST_SCATTER,
+        generator_contradictions,
+        generator_scatter,
+        rating_numbers,
+    )
+
     numbers = rating_numbers(points)
     if merit is not None and merit > LARGEST_MERIT:
         yield "module.figure_of_merit", f"{merit:g} is above {LARGEST_MERIT:g}; no module comes near it, 0.7 is usual"

@@ -57,7 +57,7 @@ class Check:
     bound: str = "at most"
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, eq=False, repr=False)
 class BatchCheck:
     """One check of all cases: arrays (cases,), and a function from a case's index to its sentence."""
 

@@ -5,6 +5,7 @@ from __future__ import annotations
 import dataclasses
 from collections.abc import Callable
 from dataclasses import dataclass
+from typing import TYPE_CHECKING
 
 import numpy as np
 
@@ -12,11 +13,8 @@ from harvest.errors import RangeError
 from harvest.model.batch import Batch, StreamBatch
 from harvest.model.case import DECLARATIONS, limits_text
 from harvest.model.loads import MAXIMUM_POWER
-from harvest.model.module import DescribedModule, cooler_faults, described_module, fill_factor, footprint_area
+from harvest.model.module import DescribedModule, described_module, fill_factor, footprint_area
 from harvest.model.property_store import stored_table
-from harvest.model.rated_side import arrangement_faults, rated_film
-from harvest.model.rating_rules import Contradiction
-from harvest.model.room_side import base_area, room_sink
 from harvest.model.stack import (
     Circuit,
     Load,
@@ -33,9 +31,11 @@ from harvest.physics.combustion import (
 )
 from harvest.physics.films import DUCT_KINDS, DuctMeasures, Film
 from harvest.physics.fluids import FluidBatch, FluidSpec, FluidTable, expansion_range
-from harvest.physics.natural_convection import RoomSink
 from harvest.physics.rated import RatedFilm
 from harvest.physics.spreading import Constriction
+
+if TYPE_CHECKING:
+    from harvest.physics.natural_convection import RoomSink
 
 OVERSHOOT = 40.0
 """How far past the inlets a gas is expanded [K]; further out there is no answer."""
@@ -64,7 +64,7 @@ class Faults:
         return np.asarray(self.text == "")
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, eq=False, repr=False)
 class Stream:
     """One side's stream, (cases,): total `mass_flow` [kg/s], duct counts, table data.
 
@@ -90,7 +90,7 @@ class Stream:
         return np.array([getattr(table, name) for table in self.tables], dtype=float)[self.table_of_case]
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, eq=False, repr=False)
 class Design:
     """A batch made ready for the solver."""
 
@@ -227,6 +227,8 @@ def _stream(batch: Batch, side: str, faults: Faults) -> Stream:
     if fluid is None:
         return nothing_flows
     if getattr(batch.base, side).duct.kind == HEAT_SINK:
+        from harvest.model.room_side import room_sink
+
         sink = room_sink(batch, fluid, faults)
         return dataclasses.replace(nothing_flows, tables=tables, table_of_case=table_of_case, sink=sink)
     molar_mass = np.array([table.molar_mass for table in tables])[table_of_case]
@@ -246,6 +248,8 @@ def stream_film(
     faces = batch.number(f"{side}.duct.faces")
     of_one_duct = mass_flow * faces / batch.number("stack.layers")
     if duct.kind == RATED:
+        from harvest.model.rated_side import rated_film
+
         return rated_film(batch, stream, of_one_duct, faults)
     passages = batch.number(f"{side}.duct.passages", 1.0)
     width = batch.number("stack.columns") * batch.number("stack.column_pitch")
@@ -279,6 +283,8 @@ def _stack_side(batch: Batch, stream: Stream, module_resistance: FloatArray, seg
     side = stream.name
     place = batch.number("stack.row_pitch") * batch.number("stack.column_pitch")
     if stream.sink is not None:
+        from harvest.model.room_side import base_area
+
         place = base_area(batch)
     footprint = footprint_area(batch)
     thickness = batch.number(f"{side}.duct.wall_thickness", 0.0)
@@ -359,6 +365,8 @@ def _arrangement_faults(batch: Batch, faults: Faults) -> None:
         plate = columns * batch.number("stack.column_pitch") * (1.0 + 1e-9)
         faults.add(taken > plate, f"{side}.duct.width: the passages are wider than the plate; decrease it")
         if getattr(batch.base, side).duct.kind == RATED:
+            from harvest.model.rated_side import arrangement_faults
+
             arrangement_faults(batch, side, faults)
     faces = batch.number("hot.duct.faces") + batch.number("cold.duct.faces")
     faults.add(
@@ -378,10 +386,6 @@ def _arrangement_faults(batch: Batch, faults: Faults) -> None:
                 wrong = wrong | (number <= declaration.above)
             wrong = wrong | (number < (-np.inf if low is None else low)) | (number > (np.inf if high is None else high))
             faults.add(wrong, f"{path}: out of range; allowed is {limits_text(declaration) or 'a finite number'}")
-
-
-def _of_cooler_rating(contradiction: Contradiction) -> Callable[[int], str]:
-    return lambda index: f"module.cooler_rating.{contradiction.field}: {contradiction.sentence(index)}"
 
 
 def _no_flow(batch: Batch, side: str) -> str:
@@ -406,8 +410,11 @@ def design(batch: Batch) -> Design:
     for stream in (hot, cold):
         if stream.fluid is not None:
             faults.add(~(stream.mass_flow > 0), _no_flow(batch, stream.name))
-    for contradiction in cooler_faults(batch):
-        faults.add(contradiction.where, _of_cooler_rating(contradiction))
+    if batch.base.module.cooler_rating is not None:
+        from harvest.model.rated_module import cooler_contradictions_of
+
+        for where, sentence in cooler_contradictions_of(batch):
+            faults.add(where, sentence)
     module = described_module(batch)
     footprint = footprint_area(batch)
     place = batch.number("stack.row_pitch") * batch.number("stack.column_pitch")

@@ -44,7 +44,7 @@ _POINTS = np.array([-_OUTER, -_INNER, 0.0, _INNER, _OUTER])
 _WEIGHTS = np.array([_LIGHT, _HEAVY, 512.0, _HEAVY, _LIGHT]) / 900.0
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, eq=False, repr=False)
 class Solution:
     """A solved batch at one load, with what follows from the state row by row, (rows, cases) unless said."""
 
@@ -184,7 +184,7 @@ def _entropy_given(stream: Stream, outlet: FloatArray, heat: FloatArray) -> Floa
     )
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, eq=False, repr=False)
 class CoolantLost:
     """The stack settled with its cold stream stopped and the hot one flowing, [K], (cases,)."""
 
@@ -208,7 +208,7 @@ def _without_coolant(problem: StackProblem) -> CoolantLost:
     return CoolantLost(hottest(state.hot_junction), hottest(state.cold_wall))
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, eq=False, repr=False)
 class Solved:
     """All the solutions that an estimate stands on."""
 
@@ -524,7 +524,7 @@ def estimate_batch(batch: Batch, *, grid: bool = False) -> Estimates:
     )
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, eq=False, repr=False)
 class Outcomes:
     """What a search asks of many cases: `scalars` by result name, (cases,), NaN where `problem` says why not."""
 

@@ -18,7 +18,7 @@ FOLDER = Path(__file__).parent.parent / "data" / "materials"
 PROPERTIES = ("seebeck", "resistivity", "conductivity")
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, eq=False, repr=False)
 class MaterialRecord:
     """A material with where it comes from and the temperatures [K] in which it holds."""
 

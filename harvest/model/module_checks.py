@@ -27,8 +27,6 @@ from harvest.model.module import (
     COOLER,
     GENERATOR,
     LARGEST_DISAGREEMENT,
-    cooler_heat_disagreement,
-    cooler_matched_powers,
     fill_factor,
 )
 from harvest.physics.thermoelectrics import figure_of_merit
@@ -155,6 +153,8 @@ def checks_of_the_module_data(solved: Solved) -> Iterator[BatchCheck]:
         )
     if module.way != COOLER:
         return
+    from harvest.model.rated_module import cooler_heat_disagreement, cooler_matched_powers
+
     apart = cooler_heat_disagreement(batch)
     if np.isfinite(apart).any():
         yield BatchCheck(

@@ -12,12 +12,11 @@ from harvest.model.case import Case
 from harvest.model.checks import LARGEST_MERIT, SOLDER_TEMPERATURE, celsius, solder_caution
 from harvest.model.module import (
     COOLER,
-    CoolerComparison,
     DescribedModule,
-    cooler_comparison,
     described_module,
     fill_factor,
 )
+from harvest.model.rated_module import CoolerComparison, cooler_comparison
 from harvest.physics.arrays import FloatArray
 from harvest.physics.thermoelectrics import figure_of_merit, hot_junction_heat, maximum_efficiency
 from harvest.quantities import format_quantity

@@ -21,7 +21,7 @@ from harvest.physics.losses import (
 from harvest.physics.rated import RatedFilm
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, eq=False, repr=False)
 class PressureDrop:
     """Parts of a side's pressure drop [Pa], (cases,)."""
 

@@ -149,7 +149,7 @@ def _rated_faults(
             ),
         )
     capacity = film.flow * film.rated_density * heat_capacity
-    impossible = ~outside & ~(film.film_conductance > 0)
+    impossible = ~outside & np.isfinite(film.flow) & ~(film.film_conductance > 0)
     by_inlet = given.duct.resistance_refers_to == "inlet"
     least = (1.0 if by_inlet else 0.5) / capacity
     solid = film.solid_resistance

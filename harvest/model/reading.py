@@ -547,6 +547,10 @@ class _Reading:
             near = {"seebeck", "resistance", "conductance"} & {name.rpartition(".")[2]}
             factor = f"module.{near.pop()}_factor" if near else "the factors beside it, film_factor and its like,"
             raise QuantityError(f"is a curve; give {factor} a tolerance instead")
+        if name == "site.ambient_pressure":
+            raise QuantityError(
+                "acts through the pressures of the sides; give hot.pressure or cold.pressure a tolerance"
+            )
         if known.descriptive or name.startswith("limits.") or known.form not in ("quantity", STANDARD_VOLUME_FLOW):
             raise QuantityError("is no number that a result depends on continuously, so it has no tolerance")
         decided = applies(known, name, self.values)

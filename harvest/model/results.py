@@ -19,7 +19,7 @@ def _result(kind: str, meaning: str) -> Any:
     return dataclasses.field(metadata={"kind": kind, "meaning": meaning})
 
 
-@dataclass(frozen=True, kw_only=True)
+@dataclass(frozen=True, kw_only=True, eq=False)
 class Rows:
     """Results along the hot stream, one number a row; stream temperatures are means, powers of one module."""
 
@@ -38,7 +38,7 @@ class Rows:
     cold_reynolds: FloatArray = _result("dimensionless", "Reynolds number in the cold ducts; NaN for a reservoir.")
 
 
-@dataclass(frozen=True, kw_only=True)
+@dataclass(frozen=True, kw_only=True, eq=False)
 class Estimate:
     """The answer for one design: SI numbers of the whole stack, at its terminals. NaN where there is no answer."""
 
@@ -126,7 +126,7 @@ UNITS: dict[str, str] = {
 }
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, eq=False, repr=False)
 class Estimates:
     """Answers of a batch: `scalars` (cases,) and `rows` (rows, cases) by result name.
 

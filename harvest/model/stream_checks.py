@@ -27,18 +27,17 @@ from harvest.model.checks import (
     graded,
 )
 from harvest.model.pressure import handled_density
-from harvest.model.rated_side import rated_range
 from harvest.physics.arrays import BoolArray, FloatArray
 from harvest.physics.combustion import GAS_CONSTANT, sulphuric_acid_dew_point, sulphuric_acid_fraction, water_dew_point
 from harvest.physics.ducts import LAMINAR_LIMIT, OFFSET_STRIP_REYNOLDS_RANGE, TURBULENT_LIMIT
 from harvest.physics.films import Film, OffsetStripFilm
-from harvest.physics.natural_convection import FinnedSink
 from harvest.physics.rated import RatedFilm
 from harvest.quantities import format_quantity
 
 if TYPE_CHECKING:
     from harvest.model.design import Stream
     from harvest.model.estimate import Solved
+    from harvest.physics.natural_convection import FinnedSink
 
 
 def checks_of_a_stream(solved: Solved, scalars: dict[str, FloatArray], stream: Stream) -> Iterator[BatchCheck]:
@@ -167,6 +166,8 @@ def _of_passages(
 
 def _of_rated_blocks(solved: Solved, stream: Stream, film: RatedFilm, mean: FloatArray) -> Iterator[BatchCheck]:
     """Flow through each rated block, and the flow at the rating that has the same Reynolds number."""
+    from harvest.model.rated_side import rated_range
+
     assert stream.fluid is not None
     batch, side = solved.made.batch, stream.name
     low, high = rated_range(batch, side)
@@ -241,6 +242,8 @@ def checks_of_heat_sinks(solved: Solved) -> Iterator[BatchCheck]:
             )
         ),
     )
+    from harvest.physics.natural_convection import FinnedSink
+
     if isinstance(made.cold.sink, FinnedSink):
         yield _spacing_check(solved, made.cold.sink, rise)
 

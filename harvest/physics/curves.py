@@ -22,7 +22,7 @@ class Curve(Protocol):
         """Return the curve of a subset of cases."""
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, eq=False, repr=False)
 class PolynomialCurve:
     """Polynomial in (T - `reference`); `coefficients` (terms, cases), or (terms, 1) for all, lowest power first, SI."""
 
@@ -52,7 +52,7 @@ class PolynomialCurve:
         return self if shared else PolynomialCurve(self.coefficients[:, which], self.reference)
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, eq=False, repr=False)
 class TableCurve:
     """Straight lines between points; held constant beyond the first and the last. One table for all cases.
 
@@ -76,7 +76,7 @@ class TableCurve:
         return self
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, eq=False, repr=False)
 class HeldCurve:
     """A curve within its range, held constant below `lower` and above `upper` [K]."""
 

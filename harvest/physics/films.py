@@ -16,7 +16,7 @@ from harvest.physics import ducts
 from harvest.physics.arrays import FloatArray, IntArray
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, eq=False, repr=False)
 class DuctMeasures:
     """What a duct is built of; all arrays (cases,), SI. `faces` is 1 or 2, the number of heated plates."""
 
@@ -38,7 +38,7 @@ class DuctMeasures:
     strip_length: FloatArray
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, eq=False, repr=False)
 class Film:
     """A film in rectangular passages; arrays (cases,).
 
@@ -111,7 +111,7 @@ class Film:
         return replace(self, **arrays)
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, eq=False, repr=False)
 class OffsetStripFilm(Film):
     """A film on rectangular offset strip fins; the three shape ratios of Manglik and Bergles, (cases,)."""
 
@@ -225,7 +225,7 @@ def offset_strip_fin_duct(measures: DuctMeasures, developing: bool) -> OffsetStr
     )
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, eq=False, repr=False)
 class DuctKind:
     """One entry of `DUCT_KINDS`: what it is, and the builder of its film."""
 

@@ -82,7 +82,7 @@ class FluidSpec:
     table: tuple[tuple[float, float, float, float, float], ...] | None = None
 
 
-@dataclass(frozen=True, kw_only=True, eq=False)
+@dataclass(frozen=True, kw_only=True, eq=False, repr=False)
 class FluidLimits:
     """Where a fluid is served at one pressure, and why no further; temperatures [K], NaN where not applicable.
 
@@ -111,7 +111,7 @@ class FluidLimits:
         return text + "; in degC {:g}, allowed {:g} to {:g}".format(*celsius)
 
 
-@dataclass(frozen=True, kw_only=True, eq=False)
+@dataclass(frozen=True, kw_only=True, eq=False, repr=False)
 class FluidTable(FluidLimits):
     """One fluid at one pressure, expanded over `lower` .. `upper` [K].
 
@@ -129,7 +129,7 @@ class FluidTable(FluidLimits):
     source: str
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, eq=False, repr=False)
 class FluidRecord:
     """One entry of `FLUIDS`: what it is, its source, the fields of FluidSpec it takes, and how its table is built."""
 
@@ -607,7 +607,7 @@ def fluid_table(spec: FluidSpec, pressure: float, lower: float, upper: float) ->
     return FLUIDS[spec.name].build(spec, pressure, float(below), float(above))
 
 
-@dataclass(frozen=True, eq=False)
+@dataclass(frozen=True, eq=False, repr=False)
 class FluidBatch:
     """Many tables side by side, one a case; evaluates properties at temperatures (..., cases) [K].
 

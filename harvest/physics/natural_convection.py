@@ -112,7 +112,7 @@ def radiation_coefficient(surface_temperature: FloatArray, room_temperature: Flo
     return np.asarray(STEFAN_BOLTZMANN * total * (surface_temperature**2 + room_temperature**2))
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, eq=False, repr=False)
 class RatedSink:
     """A heat sink by its thermal resistance [K/W] at one temperature rise [K]; arrays (cases,).
 
@@ -133,7 +133,7 @@ class RatedSink:
         return replace(self, **{name: value[which] for name, value in vars(self).items()})
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, eq=False, repr=False)
 class FinnedSink:
     """A base with vertical plate fins in still air; arrays (cases,), lengths [m].
 

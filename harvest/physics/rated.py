@@ -44,7 +44,7 @@ def conductance_of_block(mean_resistance: FloatArray, capacity_rate: FloatArray)
     return np.asarray(np.where(possible, -capacity_rate * np.log1p(-np.where(possible, effectiveness, 0.0)), np.nan))
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, eq=False, repr=False)
 class RatedFilm:
     """The film of rated blocks; arrays (cases,).
 

@@ -330,7 +330,7 @@ def temperature_line(temperatures: FloatArray, values: FloatArray) -> Temperatur
     return TemperatureLine(TableCurve(ends, line), residual)
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, eq=False, repr=False)
 class ScaledModule:
     """A module with the temperature dependence of another one; `factors` on a, R and K, (3, cases)."""
 

@@ -9,7 +9,7 @@ import numpy as np
 from harvest.physics.arrays import FloatArray, IntArray
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, eq=False, repr=False)
 class Constriction:
     """Spreading resistance of a centred footprint on a plate, as a function of the film behind the plate.
 

@@ -129,7 +129,7 @@ class ModuleModel(Protocol):
         """Return the model of a subset of cases."""
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, eq=False, repr=False)
 class MeanTemperatureModule:
     """A module whose parameters are curves in the mean of its two junction temperatures."""
 
@@ -157,7 +157,7 @@ class MeanTemperatureModule:
         )
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, eq=False, repr=False)
 class Material:
     """One thermoelectric material: signed Seebeck [V/K], resistivity [ohm m], conductivity [W/(m K)] against T."""
 
@@ -170,7 +170,7 @@ class Material:
         return Material(self.seebeck.take(which), self.resistivity.take(which), self.conductivity.take(which))
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, eq=False, repr=False)
 class LegModule:
     """A module built of legs; its parameters are averages over the temperature profile without current.
 

@@ -2,30 +2,39 @@
 
 from __future__ import annotations
 
+import textwrap
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
+from harvest.report.doubt_sheet import LITTLE
 from harvest.report.plots import BLUE, VERMILION, new_figure
 
 if TYPE_CHECKING:
     from matplotlib.figure import Figure
 
-    from harvest.study.doubt import Doubt
+    from harvest.study.doubt import Doubt, UncertainInput
 
 BINS = 40
 MOST_BARS = 10
+LETTERS_OF_TITLE = 90
 
 
 def doubt_figure(title: str, found: Doubt) -> Figure:
     """Histogram of net power with its percentiles and zero; swing of net power by each input with its index."""
-    bars = found.inputs[:MOST_BARS]
+    bars = shown_inputs(found)
     figure = new_figure(8.0, 4.0 + 0.28 * len(bars))
     above, below = figure.subplots(2, 1, height_ratios=(3.0, 1.0 + 0.28 * len(bars)))
     draw_distribution(above, found)
     draw_swings(below, found)
-    figure.suptitle(f"{title}: how sure the net power is", fontsize=10)
+    heading = textwrap.fill(f"{title}: how sure the net power is", LETTERS_OF_TITLE)
+    figure.suptitle(heading, fontsize=10, parse_math=False)
     return figure
+
+
+def shown_inputs(found: Doubt) -> tuple[UncertainInput, ...]:
+    """Inputs that have a bar: those that matter, and the first in any case."""
+    return tuple(each for each in found.inputs[:MOST_BARS] if each.first_order >= LITTLE) or found.inputs[:1]
 
 
 def draw_distribution(axes: Any, found: Doubt) -> None:
@@ -47,7 +56,7 @@ def draw_distribution(axes: Any, found: Doubt) -> None:
 def draw_swings(axes: Any, found: Doubt) -> None:
     """Draw, for the inputs that matter most, net power with each alone at its P10 and P90, and its index."""
     net = found.results["net_power"].nominal
-    bars = found.inputs[:MOST_BARS]
+    bars = shown_inputs(found)
     places = np.arange(len(bars))[::-1]
     for side, colour, hatch, name in (
         ("net_power_at_p10", VERMILION, "///", "input at its P10"),

@@ -8,6 +8,7 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 
 from harvest.model.case import DECLARATIONS, Case, display
+from harvest.model.module import FACTORS
 from harvest.model.results import SCALARS, UNITS
 from harvest.quantities import format_quantity, unit_of
 from harvest.report.documents import plain
@@ -27,7 +28,6 @@ MANY_INVALID = 0.05
 """Share of cases without an answer from which the percentiles are not to be trusted."""
 
 
-MODULE_FACTORS = ("module.seebeck_factor", "module.resistance_factor", "module.conductance_factor")
 MEASUREMENTS = {
     "seebeck_factor": "the open-circuit voltage of a module on a bench",
     "resistance_factor": "the resistance of a module on a bench",
@@ -94,7 +94,7 @@ def measuring_lines(found: Doubt) -> list[str]:
 
 def bench_line(found: Doubt) -> str:
     """What one bench test of the module would bring, which tells all its factors at once; empty where little."""
-    together = sum(max(each.first_order, 0.0) for each in found.inputs if each.field in MODULE_FACTORS)
+    together = sum(max(each.first_order, 0.0) for each in found.inputs if each.field in FACTORS)
     narrowing = 1.0 - float(np.sqrt(1.0 - min(together, 1.0)))
     if narrowing < WORTHWHILE:
         return ""
@@ -205,7 +205,7 @@ def _sample(found: Doubt) -> list[str]:
             f"{found.samples:,} cases drawn (scrambled Sobol sequence, seed {found.seed}), {found.valid:,} with an "
             f"answer; indices from {found.index_cases:,} further cases, {found.index_samples:,} x "
             f"({len(found.inputs)} inputs + 2). Inputs are taken to vary independently of each other. The band holds "
-            "their doubt, not that of what the model leaves out, such as uneven flow and ageing.",
+            "their doubt, not that of what the model leaves out, such as ageing and heat along the plates.",
         ),
     ]
     lines += [

@@ -5,8 +5,8 @@ from __future__ import annotations
 import math
 from typing import TYPE_CHECKING
 
-from harvest.model.module import CoolerComparison
 from harvest.model.module_curve import ModuleCurve, OperatingPoint
+from harvest.model.rated_module import CoolerComparison
 from harvest.quantities import format_quantity
 from harvest.report.layout import heading, pairs, table, wrapped
 

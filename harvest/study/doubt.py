@@ -128,7 +128,7 @@ class LimitChance:
 
 @dataclass(frozen=True)
 class ExactField:
-    """A field for which there is a default tolerance that is not applied here, and the reason why."""
+    """A field whose tolerance, given or default, is not applied here, and the reason why."""
 
     field: str
     reason: str
@@ -146,7 +146,7 @@ class Doubt:
     limit. `inputs` are in order of `first_order`, the largest first; `worth_measuring` names the fields of those that
     would narrow the band noticeably if they were known exactly, in the same order, few of them.
     `interactions` [-] is the share of the variance that no input brings alone, 1 - sum of first_order, at least 0.
-    `exact` are fields whose default tolerance is not applied, with the reason.
+    `exact` are fields whose tolerance is not applied, with the reason.
 
     `samples` cases were drawn for the percentiles with `seed`, of which `valid` have an answer; `invalid` counts the
     others by reason and they are in no percentile. The indices took `index_cases` = `index_samples` x (inputs + 2)

@@ -10,6 +10,7 @@ cannot do without.
 from __future__ import annotations
 
 import os
+import resource
 import statistics
 import subprocess
 import sys
@@ -214,13 +215,16 @@ def _doubt_of(path: Path) -> None:
 
 
 def start_up() -> None:
-    """Commands against the imports that they cannot do without."""
+    """Processor time of commands against the imports that they cannot do without, other programs running or not."""
     python = sys.executable
     # an installed package has its byte code; let the first run write it here too
     environment = {name: value for name, value in os.environ.items() if name != "PYTHONDONTWRITEBYTECODE"}
 
-    def run(command: list[str]) -> None:
+    def processor_time(command: list[str]) -> float:
+        before = resource.getrusage(resource.RUSAGE_CHILDREN)
         subprocess.run(command, capture_output=True, check=True, env=environment)
+        after = resource.getrusage(resource.RUSAGE_CHILDREN)
+        return after.ru_utime - before.ru_utime + after.ru_stime - before.ru_stime
 
     commands = {
         "import click": [python, "-c", "import click"],
@@ -229,9 +233,9 @@ def start_up() -> None:
         "harvest estimate, second": [python, "-m", "harvest", "estimate", str(EXAMPLE)],
     }
     seconds: dict[str, list[float]] = {name: [] for name in commands}
-    for _ in range(7):
+    for _ in range(15):
         for name, command in commands.items():
-            seconds[name].append(best(lambda command=command: run(command), 1))  # type: ignore[misc]
+            seconds[name].append(processor_time(command))
     middle = {name: statistics.median(times[1:]) for name, times in seconds.items()}
     print("start-up")
     for name, value in middle.items():

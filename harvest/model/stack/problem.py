@@ -3,17 +3,19 @@
 from __future__ import annotations
 
 from dataclasses import dataclass, replace
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
 from harvest.physics.arrays import BoolArray, FloatArray, IntArray
 from harvest.physics.films import Film
 from harvest.physics.fluids import FluidBatch
-from harvest.physics.natural_convection import RoomSink
 from harvest.physics.rated import RatedFilm
 from harvest.physics.spreading import Constriction
 from harvest.physics.thermoelectrics import ModuleModel
+
+if TYPE_CHECKING:
+    from harvest.physics.natural_convection import RoomSink
 
 METAL_PASSES = 8
 """Fixed-point passes from the wall face to the metal that a sink's air meets; each gains two digits or more."""
@@ -26,7 +28,7 @@ def take_cases(item: Any, which: IntArray) -> Any:
     return item[..., which] if isinstance(item, np.ndarray) else item.take(which)
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, eq=False, repr=False)
 class StackSide:
     """One side of the stack; arrays (cases,).
 
@@ -64,7 +66,7 @@ class StackSide:
         return replace(self, **{name: take_cases(value, which) for name, value in self.__dict__.items()})
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, eq=False, repr=False)
 class Circuit:
     """How the modules of a stack are wired; arrays (cases,).
 
@@ -95,7 +97,7 @@ class Circuit:
         )
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, eq=False, repr=False)
 class Load:
     """What the stack feeds: a mode of `LOADS` with its number, (cases,): `resistance` [ohm] or `voltage` [V].
 
@@ -115,7 +117,7 @@ class Load:
         )
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, eq=False, repr=False)
 class StackProblem:
     """A batch of stacks of one structure; arrays (cases,).
 
