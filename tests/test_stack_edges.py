@@ -72,6 +72,8 @@ def assert_sound(found: Estimate, closure: float = 1e-8) -> None:
     assert abs(unclosed) <= closure * max(abs(found.hot_heat_flow), abs(found.cold_heat_flow))
     assert found.entropy_generation > -1e-12
     allowed = {"load_resistance", "load_ratio", "stack_height", "module_mass"}
+    allowed |= {"building_cost", "cost_per_net_watt", "cost_per_kilowatt_hour"}
+    allowed |= {"payback_years", "discounted_payback_years"}
     if found.maximum_power <= 1e-12 * abs(found.hot_heat_flow):
         allowed |= {"mismatch_loss", "conversion_efficiency", "module_efficiency"}
     for name in SCALARS.keys() - allowed:

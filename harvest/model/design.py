@@ -419,7 +419,9 @@ def design(batch: Batch) -> Design:
     footprint = footprint_area(batch)
     place = batch.number("stack.row_pitch") * batch.number("stack.column_pitch")
     interfaces = tuple(batch.number(f"stack.{side}_interface", 0.0) / footprint for side in ("hot", "cold"))
-    rows = np.where(arranged, batch.number("stack.rows"), 1.0).astype(np.int64)
+    # a case that makes no stack keeps the structure of its neighbours
+    fewest = sum(batch.base.electrical.row_blocks or (1,))
+    rows = np.where(arranged, batch.number("stack.rows"), fewest).astype(np.int64)
     problem = StackProblem(
         rows=int(rows.max()) * segments,
         active_rows=rows * segments,

@@ -17,13 +17,13 @@ def payback_words(case: Case, answer: Estimate) -> str:
     """When electricity pays a design back, or why that cannot be told."""
     price, cost = case.site.electricity_value, case.cost
     assert cost is not None
+    if answer.net_power <= 0:
+        return "never: no net power is left"
     if price is None:
         return "not told: give site.electricity_value"
     if price.currency != cost.currency:
         named = cost.currency or "no named currency"
         return f"not told: site.electricity_value is in {price.currency} and the prices in {named}"
-    if answer.net_power <= 0:
-        return "never: no net power is left"
     text = f"{significant(answer.payback_years, 3)} years at {price}"
     last = answer.payback_years
     if cost.discount_rate > 0:

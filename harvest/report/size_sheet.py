@@ -12,7 +12,7 @@ from harvest.model.study_sections import OBJECTIVES
 from harvest.quantities import format_quantity
 from harvest.report.cost_sheet import cost_sentence
 from harvest.report.layout import WIDTH, heading, table, wrapped
-from harvest.report.terminal import stack_sentence, title, verdict
+from harvest.report.terminal import counted, stack_sentence, title, verdict
 from harvest.study.limits import limit_path
 
 if TYPE_CHECKING:
@@ -39,8 +39,8 @@ def _by_fields(found: Arrangement) -> str:
 def _arranged(found: Arrangement) -> str:
     """Say one choice in a few words."""
     return (
-        f"{found.module_count:,} modules, {found.rows_count} rows x {found.columns_count} columns x "
-        f"{found.layers_count} layers{_by_fields(found)}"
+        f"{counted(found.module_count, 'module')}, {counted(found.rows_count, 'row')} x "
+        f"{counted(found.columns_count, 'column')} x {counted(found.layers_count, 'layer')}{_by_fields(found)}"
     )
 
 
@@ -160,8 +160,10 @@ def _wirings(case: Case, found: Sizing) -> list[str]:
     """What other groupings of the best design's modules would give, one for each number of row blocks."""
     own = _own_wiring(found)
     usable = [each for each in found.wirings if not each.problem]
-    shown = list({len(each.row_blocks): each for each in reversed(usable)}.values())[::-1]
-    shown += [own] * (own not in shown)
+    first: dict[int, Wiring] = {}
+    for each in usable:
+        first.setdefault(len(each.row_blocks), each)
+    shown = [*first.values()] + [own] * (own not in first.values())
     window = case.electrical.converter_window
     header = ("strings", "in series", "across", "layers", "row blocks", "at load", "no load", "net", "lost", "")
     rows = [

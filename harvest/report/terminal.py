@@ -43,7 +43,8 @@ def title(case: Streams) -> str:
     return one_line(case.title, LONGEST_TITLE) or "Untitled case"
 
 
-def _count(number: int, noun: str) -> str:
+def counted(number: int, noun: str) -> str:
+    """Write a number of things."""
     return f"{number:,} {noun}" + "s" * (number != 1)
 
 
@@ -55,9 +56,9 @@ def stack_sentence(case: Case, answer: Estimate) -> str:
     in_a_row = stack.columns // electrical.strings_across * electrical.layers_in_series
     lengths = " or ".join(str(in_a_row * rows) for rows in sorted(set(blocks)))
     joined = ", each with its own converter" if electrical.independent else ", in parallel" * (strings > 1)
-    plate = f"{_count(stack.layers, 'layer')} of {_count(stack.rows, 'row')} x {_count(stack.columns, 'column')}"
-    wiring = f"{_count(strings, 'string')} of {lengths} in series{joined}"
-    return f"{_count(int(answer.module_count), 'module')}: {plate}; {wiring}"
+    plate = f"{counted(stack.layers, 'layer')} of {counted(stack.rows, 'row')} x {counted(stack.columns, 'column')}"
+    wiring = f"{counted(strings, 'string')} of {lengths} in series{joined}"
+    return f"{counted(int(answer.module_count), 'module')}: {plate}; {wiring}"
 
 
 def _streams(case: Case, answer: Estimate) -> list[str]:
