@@ -332,3 +332,10 @@ def test_usage_errors_are_one_line(arguments: list[str], words: str) -> None:
     result = CliRunner().invoke(cli, ["memo", *arguments])
     assert result.exit_code == 2
     assert words in result.stderr and result.stderr.count("\n") == 1
+
+
+def test_a_search_without_a_choice_is_told() -> None:
+    case = replace(load_case(WATER), {"limits.minimum_hot_outlet_temperature": 364.9})
+    made = memo(case, date=DAY, without=("doubt",))
+    assert_shows_results(made)
+    assert "no choice keeps to the limits" in made.markdown()

@@ -28,6 +28,7 @@ from harvest.report.memo.html_page import PAGE_KNOWN, html_body, html_of
 from harvest.report.memo.markdown_text import drawing_file, drawings_in, markdown
 from harvest.report.memo.markup import Block, read_markup
 from harvest.report.memo.templates import PAGE, SHIPPED, Rendering, Template, find_template
+from harvest.study.size import Sizing
 from harvest.version import VERSION
 
 FORMATS = {
@@ -51,7 +52,12 @@ class Memo:
 
     def markdown(self, drawing_name: str = "memo") -> str:
         """The memo as Markdown, with links to drawings that begin with this name."""
-        return markdown(self.blocks, drawing_name)
+        return markdown(self._blocks(), drawing_name)
+
+    def _blocks(self) -> tuple[Block, ...]:
+        if not self.blocks:
+            raise InputError("memo: its template makes HTML only; use one that ends in .md.j2 for other formats")
+        return self.blocks
 
     def html(self) -> str:
         """The memo as one HTML file."""
@@ -61,13 +67,13 @@ class Memo:
         """The memo as PDF; raises MissingExtraError without typst."""
         from harvest.report.memo.pdf_page import pdf
 
-        return pdf(self.blocks, self.title, self.date)
+        return pdf(self._blocks(), self.title, self.date)
 
     def word(self) -> bytes:
         """The memo as a Word document; raises MissingExtraError without python-docx or typst."""
         from harvest.report.memo.word_page import word
 
-        return word(self.blocks, self.title, self.date)
+        return word(self._blocks(), self.title, self.date)
 
     def write(self, path: str | Path) -> None:
         """Write the memo in the format of the suffix, and a Markdown memo's drawings beside it; raises InputError."""
@@ -175,7 +181,8 @@ def _computed(case: Case, without: Collection[str], progress: Callable[[str], No
         if answer.bad_input:
             raise CaseError(answer.faults)
         raise NoAnswerError(f"{one_line(case.title)}: no valid answer: {answer.problem}")
-    sizing = found = None
+    sizing: Sizing | str = ""
+    found = None
     if "size" not in without:
         progress(STUDIES["size"])
         sizing = sizing_of(case)

@@ -277,6 +277,7 @@ class Contents:
     cautions: tuple[Said, ...] = told("What can hurt somebody or the equipment.", many=True)
     sources: tuple[str, ...] = told("Sources of properties and module data.", many=True)
     size: SizeContents | None = told("How the number of modules was judged.", of=SizeContents, optional=True)
+    size_problem: Said | None = told("Why no choice of modules has an answer.", optional=True)
     costs: Costs | None = told("Costs, where the case has prices.", of=Costs, optional=True)
     doubt: DoubtContents | None = told("How sure the net power is.", of=DoubtContents, optional=True)
     drawings: Drawings = told("Drawings.", of=Drawings)
@@ -319,7 +320,7 @@ class Computed:
 
     case: Case
     estimate: Estimate
-    sizing: Sizing | None = None
+    sizing: Sizing | str = ""
     doubt: Doubt | None = None
 
     def document(self) -> dict[str, Any]:
@@ -340,13 +341,14 @@ class Computed:
             },
             "cautions": cautions(self.case, self.estimate),
             "payback": None if self.case.cost is None else payback_words(self.case, self.estimate),
-            "size": None if self.sizing is None else size_document(self.sizing),
+            "size": None if isinstance(self.sizing, str) else size_document(self.sizing),
+            "size_problem": self.sizing if isinstance(self.sizing, str) else "",
             "doubt": None if self.doubt is None else doubt_document(self.doubt),
         }
 
 
-def sizing_of(case: Case) -> Sizing | None:
-    """Sizing by [size], or else over rows around the design; None where no choice has an answer."""
+def sizing_of(case: Case) -> Sizing | str:
+    """Sizing by [size], or else over rows around the design; why there is none where no choice has an answer."""
     if case.size is None:
         rows = case.stack.rows
         around = np.linspace(1, max(2 * rows, 4), POINTS_OF_CURVE).round().astype(int).tolist()
@@ -355,8 +357,8 @@ def sizing_of(case: Case) -> Sizing | None:
         case = dataclasses.replace(case, size=wanted)
     try:
         return size(case)
-    except NoAnswerError:
-        return None
+    except NoAnswerError as error:
+        return "; ".join(str(error).splitlines())
 
 
 def doubt_of(case: Case) -> Doubt | None:
@@ -410,6 +412,9 @@ def contents(
         ),
         sources=tuple(one_line(source, 300) for source in answer.sources),
         size=_size(computed, f"{prefix}size"),
+        size_problem=Said(_sentence(computed.sizing), f"{prefix}size_problem")
+        if isinstance(computed.sizing, str) and computed.sizing
+        else None,
         costs=_costs(case, answer, scalars, prefix),
         doubt=_doubt(computed.doubt, f"{prefix}doubt"),
         drawings=_drawings(computed, scalars, fields, electricity, f"{letter.lower()}-" if letter else ""),
@@ -633,7 +638,7 @@ def _si_values(value: Any, declaration: Declaration, path: str) -> tuple[Value |
 
 def _size(computed: Computed, path: str) -> SizeContents | None:
     found = computed.sizing
-    if found is None:
+    if isinstance(found, str):
         return None
 
     def whole(number: float | None, name: str) -> Value:
@@ -722,7 +727,7 @@ def _drawings(
     case, answer, found = computed.case, computed.estimate, computed.sizing
     inlets = (fields.hot.inlet_temperature, fields.cold.inlet_temperature)
     count = None
-    if found is not None:
+    if not isinstance(found, str):
         design = (int(answer.module_count), answer.net_power)
         count = drawings.count_drawing(
             found.curve, design, (found.arrangement.module_count, found.arrangement.net_power)

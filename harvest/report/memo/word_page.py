@@ -187,6 +187,8 @@ class _Writer:
         header = [table.header] if any(table.header) else []
         made = into.add_table(len(header) + len(table.rows), len(table.right))
         borders = self.element(made._tbl.tblPr, "w:tblBorders", {})
+        # Word wants the elements in their order
+        made._tbl.tblPr.insert_element_before(borders, "w:shd", "w:tblLayout", "w:tblCellMar", "w:tblLook")
         for side in ("top", "bottom", "insideH"):
             self.element(borders, f"w:{side}", {"w:val": "single", "w:sz": "4", "w:color": "C9C9C9"})
         to_fill_in = is_to_fill_in(table)
