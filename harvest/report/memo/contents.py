@@ -19,7 +19,7 @@ from harvest.model.checks import STATUS_NAMES, Check
 from harvest.model.results import ROW_RESULTS, SCALARS, Estimate
 from harvest.model.stream_sections import HEAT_SINK
 from harvest.model.study_sections import Size
-from harvest.quantities import one_line
+from harvest.quantities import EnergyPrice, StandardVolumeFlow, one_line
 from harvest.report.cautions import cautions
 from harvest.report.cost_sheet import payback_words
 from harvest.report.documents import case_document, estimate_document, size_document
@@ -631,6 +631,10 @@ def _si_values(value: Any, declaration: Declaration, path: str) -> tuple[Value |
         )
     if isinstance(value, int | float) and not isinstance(value, bool):
         return (_field_value(value, declaration, path, si=True),)
+    if isinstance(value, StandardVolumeFlow):
+        return (Value(value.volume_flow, "volume flow", f"{path}.volume_flow", 6, "si"), "at the reference")
+    if isinstance(value, EnergyPrice):
+        return (Value(value.amount, "dimensionless", f"{path}.amount", 6, "si"), f"{one_line(value.currency)}/J")
     if declaration.form in ("choice", "boolean", "text", "file"):
         return (display(value, declaration),)
     return ("as given, in the case file below",)
@@ -690,7 +694,7 @@ def _doubt(found: Doubt | None, path: str) -> DoubtContents | None:
     lines = tuple(
         InputDoubt(
             field=each.field,
-            meaning=re.split("[;:,]", DECLARATIONS[each.field].meaning)[0].rstrip("."),
+            meaning=re.split("[;:]", DECLARATIONS[each.field].meaning)[0].rstrip("."),
             nominal=Value(each.nominal, each.kind, f"{path}.inputs[{i}].nominal", 4),
             tolerance=Said(each.tolerance.replace("+-", "±"), f"{path}.inputs[{i}].tolerance"),
             origin=each.origin,

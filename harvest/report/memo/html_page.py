@@ -6,11 +6,24 @@ from collections.abc import Sequence
 from html import escape
 from typing import Any
 
-from harvest.report.memo.markup import Block, Bullets, Code, Figure, Heading, Inline, Line, Paragraph, Span, Table
+from harvest.report.memo.markup import (
+    Block,
+    Bullets,
+    Code,
+    Figure,
+    Heading,
+    Inline,
+    Line,
+    Paragraph,
+    Span,
+    Table,
+    words_of,
+)
 from harvest.report.memo.svg import attributes
 from harvest.report.memo.values import CodeText, Drawing, Known, Said, Value
 
 TAGS = {"strong": "strong", "emphasis": "em", "code": "code", "sub": "sub", "sup": "sup"}
+LONG_CELL = 32
 PAGE_KNOWN = {
     "title": Known("Title of the memo."),
     "date": Known("Date of the memo."),
@@ -57,13 +70,20 @@ def _block(block: Block) -> str:
 
 def _table(table: Table) -> str:
     def row(tag: str, cells: Sequence[Line]) -> str:
-        marks = [' class="right"' if right else "" for right in table.right]
-        inside = "".join(f"<{tag}{mark}>{_line(cell)}</{tag}>" for mark, cell in zip(marks, cells, strict=True))
+        inside = "".join(
+            f"<{tag}{_class(cell) if right else ''}>{_line(cell)}</{tag}>"
+            for right, cell in zip(table.right, cells, strict=True)
+        )
         return f"<tr>{inside}</tr>"
 
     head = f"<thead>{row('th', table.header)}</thead>" if any(table.header) else ""
     body = "\n".join(row("td", cells) for cells in table.rows)
     return f'<div class="wide"><table>{head}<tbody>\n{body}\n</tbody></table></div>'
+
+
+def _class(cell: Line) -> str:
+    """Class of a cell set to the right: what is longer than numbers are may break."""
+    return ' class="right long"' if len(words_of(cell)) > LONG_CELL else ' class="right"'
 
 
 def _line(line: Line) -> str:

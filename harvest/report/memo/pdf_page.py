@@ -123,8 +123,8 @@ def _table(table: Table, *, ruled: bool) -> str:
     to_fill_in = is_to_fill_in(table)
     widest = max(words)
     columns = [
-        "1fr" if ruled and (size == widest or size > LONG_CELL or (to_fill_in and i > 0)) else "auto"
-        for i, size in enumerate(words)
+        "1fr" if ruled and (words[i] == widest or size > LONG_CELL or (to_fill_in and i > 0)) else "auto"
+        for i, size in enumerate(longest)
     ]
     align = ", ".join("right" if right else "left" for right in table.right)
     head = ", ".join(f"[*{_line(cell)}*]" if cell else "[]" for cell in table.header)
