@@ -10,7 +10,7 @@ from pathlib import Path
 from typing import Any
 
 from harvest.model.reading import load_case
-from harvest.quantities import KINDS
+from harvest.quantities import ENERGY_PRICE, KINDS, unit_of
 from harvest.report.memo.compose import Memo, memo
 
 ROOT = Path(__file__).parent.parent
@@ -93,7 +93,7 @@ def shown_number(results: Any, attributes: dict[str, str]) -> float:
     """What an element should show, in its unit, before it is rounded."""
     value = number_at(results, attributes["data-value"])
     unit = attributes["data-unit"]
-    if unit == "1":
+    if unit in ("1", unit_of(ENERGY_PRICE)):
         return value
     if unit == "%":
         return 100.0 * value

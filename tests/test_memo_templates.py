@@ -12,7 +12,7 @@ from click.testing import CliRunner
 from harvest.cli import cli
 from harvest.errors import InputError
 from harvest.model.case import DECLARATIONS
-from harvest.model.reading import load_case
+from harvest.model.reading import load_case, replace
 from harvest.model.results import SCALARS
 from harvest.report.memo import compose
 from harvest.report.memo.compose import memo
@@ -152,6 +152,17 @@ def test_a_template_of_html(tmp_path: Path) -> None:
     assert "svg" in page.tags and CASE.title in case.html()
     with pytest.raises(InputError, match="makes HTML"):
         memo(CASE, template=path, date=DAY, form=".pdf", without=QUICK)
+
+
+def test_a_template_of_html_escapes_what_it_inserts(tmp_path: Path) -> None:
+    path = written(
+        tmp_path, "<p>{{ title }}</p><i>{{ '<b>' ~ title }}</i>{{ [title, title] | join('<br>') }}", "own.html"
+    )
+    made = memo(replace(CASE, {"title": "<script>x</script> & y"}), template=path, date=DAY, without=QUICK)
+    assert "script" not in Page(made.html()).tags
+    assert made.html().count("&lt;script&gt;x&lt;/script&gt; &amp; y") == 4
+    with pytest.raises(InputError, match="makes HTML only"):
+        made.markdown()
 
 
 def test_a_folder_of_templates(tmp_path: Path) -> None:

@@ -13,17 +13,8 @@ from harvest.model.case import Case, case_hash
 from harvest.model.estimate import estimate
 from harvest.quantities import one_line
 from harvest.report.files import case_source, write_whole
-from harvest.report.memo.contents import (
-    LETTERS,
-    Comparison,
-    Computed,
-    Contents,
-    comparison,
-    contents,
-    doubt_of,
-    known_contents,
-    sizing_of,
-)
+from harvest.report.memo.contents import Comparison, Contents, known_contents
+from harvest.report.memo.filling import LETTERS, Computed, comparison, contents, doubt_of, sizing_of
 from harvest.report.memo.html_page import PAGE_KNOWN, html_body, html_of
 from harvest.report.memo.markdown_text import drawing_file, drawings_in, markdown
 from harvest.report.memo.markup import Block, read_markup

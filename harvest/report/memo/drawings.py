@@ -119,7 +119,7 @@ def stack_drawing(
     )
     note = "Seen from the side, along the flow"
     if shown < case.stack.layers:
-        note += f"; {shown} of the layers are drawn"
+        note += "; sixteen of the layers are drawn"
     if not heights_known:
         note += "; heights are not all given, and not to scale"
     canvas.text((WIDTH / 2, bottom + 40), note, size=10, anchor="middle", colour=GREY)

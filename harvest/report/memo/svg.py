@@ -16,6 +16,9 @@ BLUE, VERMILION, GREEN, SKY, ORANGE = "#0072B2", "#D55E00", "#009E73", "#56B4E9"
 SIGN_WIDTH = 0.56
 """Width of a sign over the size of the letters, for keeping labels apart."""
 
+LEAST_SPAN = 1e-6
+"""Share of the numbers below which their differences are no course to draw."""
+
 Point = tuple[float, float]
 
 
@@ -144,9 +147,9 @@ def attributes(named: dict[str, str]) -> str:
 
 def ticks(low: float, high: float, most: int = 6) -> list[float]:
     """Round numbers from below `low` to above `high`, at most so many steps."""
-    span = high - low
-    if span <= 0:
-        span = abs(high) or 1.0
+    span, size = high - low, max(abs(low), abs(high))
+    if span <= LEAST_SPAN * size or size == 0.0:
+        span = size or 1.0
         low, high = low - 0.5 * span, high + 0.5 * span
     raw = span / most
     power = 10.0 ** math.floor(math.log10(raw))
