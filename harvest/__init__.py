@@ -21,8 +21,11 @@ if TYPE_CHECKING:
     from harvest.model.reading import load_case, load_streams, replace
     from harvest.model.results import Estimate, Estimates
     from harvest.report.memo.compose import Memo, memo
+    from harvest.report.sweep_files import sweep
     from harvest.study.bench_record import fit_bench_record, read_bench_record
     from harvest.study.doubt import Doubt, doubt
+    from harvest.study.duty import DutyBalance, duty
+    from harvest.study.duty_log import DutyLog, read_duty_log
     from harvest.study.modules import load_module
     from harvest.study.screen import Screening, screen
     from harvest.study.size import Sizing, size
@@ -55,9 +58,14 @@ _HOMES = {
     "module_curve": "harvest.model.module_curve",
     "read_bench_record": "harvest.study.bench_record",
     "replace": "harvest.model.reading",
+    "sweep": "harvest.report.sweep_files",
     "WhatIf": "harvest.study.what_if",
     "WhatIfOptions": "harvest.study.what_if",
     "what_if": "harvest.study.what_if",
+    "DutyBalance": "harvest.study.duty",
+    "DutyLog": "harvest.study.duty_log",
+    "duty": "harvest.study.duty",
+    "read_duty_log": "harvest.study.duty_log",
     "Sizing": "harvest.study.size",
     "size": "harvest.study.size",
     "screen": "harvest.study.screen",
@@ -69,6 +77,8 @@ __all__ = [
     "Case",
     "CaseError",
     "Doubt",
+    "DutyBalance",
+    "DutyLog",
     "Estimate",
     "Estimates",
     "HarvestError",
@@ -83,6 +93,7 @@ __all__ = [
     "WhatIfOptions",
     "__version__",
     "doubt",
+    "duty",
     "estimate",
     "estimate_batch",
     "fit_bench_record",
@@ -93,9 +104,11 @@ __all__ = [
     "memo",
     "module_curve",
     "read_bench_record",
+    "read_duty_log",
     "replace",
     "screen",
     "size",
+    "sweep",
     "what_if",
 ]
 

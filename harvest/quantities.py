@@ -11,6 +11,7 @@ import math
 import re
 from collections.abc import Mapping
 from dataclasses import dataclass, field
+from typing import Any
 
 from harvest.errors import QuantityError
 
@@ -423,6 +424,24 @@ def example_of(kind: str) -> str:
     return f"300 m^3/h {STANDARD_EXAMPLE}" if kind == STANDARD_VOLUME_FLOW else KINDS[kind].example
 
 
+@dataclass(frozen=True)
+class UnitConversion:
+    """From numbers in one unit to SI: (number + offset) * factor + reference, the last a gauge pressure's."""
+
+    offset: float
+    factor: float
+    reference: float = 0.0
+
+    def si(self, number: Any) -> Any:
+        """SI value of a number, or of an array of them."""
+        return (number + self.offset) * self.factor + self.reference
+
+
+def unit_conversion(unit: str, kind: str, *, ambient_pressure: float | None = None) -> UnitConversion:
+    """Conversion from a unit such as "kg/h" to SI; as `parse_quantity`, for many numbers of one unit."""
+    return _conversion(f"1 {unit}", unit, kind, ambient_pressure)
+
+
 def parse_quantity(given: object, kind: str, *, ambient_pressure: float | None = None) -> float:
     """SI value of a text such as "0.5 kg/s".
 
@@ -431,6 +450,13 @@ def parse_quantity(given: object, kind: str, *, ambient_pressure: float | None =
     Raises QuantityError: not a number with a unit of this kind; one line that says what to write.
     """
     number, unit = _number_and_unit(given, kind)
+    value = float(_conversion(given, unit, kind, ambient_pressure).si(number))
+    if not math.isfinite(value):
+        raise QuantityError(f"{shown(given)} is too large a number")
+    return value
+
+
+def _conversion(given: object, unit: str, kind: str, ambient_pressure: float | None) -> UnitConversion:
     record = KINDS[kind]
     if not unit and not record.bare:
         raise QuantityError(f"{shown(given)} has no unit; write for example {_unit_added(given, kind)}")
@@ -440,14 +466,10 @@ def parse_quantity(given: object, kind: str, *, ambient_pressure: float | None =
     spelling = _spellings(kind).get(_unit_key(unit))
     if spelling is None:
         raise QuantityError(_wrong_unit(given, unit, kind))
-    value = (number + record.offsets.get(spelling, 0.0)) * record.units[spelling]
-    if not math.isfinite(value):
-        raise QuantityError(f"{shown(given)} is too large a number")
-    if gauge:
-        if ambient_pressure is None:
-            raise QuantityError(f"{shown(given)} is a gauge pressure; give an absolute pressure here")
-        value += ambient_pressure
-    return value
+    if gauge and ambient_pressure is None:
+        raise QuantityError(f"{shown(given)} is a gauge pressure; give an absolute pressure here")
+    reference = float(ambient_pressure or 0.0) if gauge else 0.0
+    return UnitConversion(record.offsets.get(spelling, 0.0), record.units[spelling], reference)
 
 
 def parse_standard_volume_flow(given: object) -> StandardVolumeFlow:

@@ -27,7 +27,10 @@ HOMES = {
     "click": ("cli/",),
     "matplotlib": ("report/",),
     "jinja2": ("report/",),
-    "scipy": ("study/",),
+    "scipy": ("study/", "report/"),
+    "pyarrow": ("report/",),
+    "xarray": ("report/",),
+    "distributed": ("study/",),
 }
 
 
@@ -113,7 +116,7 @@ def test_each_library_has_one_home(library: str) -> None:
             assert where.startswith(HOMES[library]), f"{where} imports {library}"
 
 
-@pytest.mark.parametrize("library", ["CoolProp", "pint", "matplotlib", "jinja2"])
+@pytest.mark.parametrize("library", ["CoolProp", "pint", "matplotlib", "jinja2", "pyarrow", "xarray", "distributed"])
 def test_heavy_libraries_are_imported_where_they_are_used(library: str) -> None:
     # the sandbox derives from Jinja2's classes, so that it counts as the library itself
     sandbox = PACKAGE / "report/memo/sandbox.py"

@@ -145,7 +145,7 @@ BAD: list[tuple[str, str, str]] = [
         'module.use: "nothing-like-it" is no file and none of the bundled',
     ),
     ("[electrical]", "[electricl]", "electricl: unknown field; did you mean electrical?"),
-    ("[electrical]", "[sweep]\nhot = 1\n[electrical]", "sweep.hot: unknown field"),
+    ("[electrical]", "[sweep]\nhot = 1\n[electrical]", "sweep.hot: is a section"),
     ("[electrical]", '[sweep]\n"hot.mass_flow" = 3\n[electrical]', "sweep.hot.mass_flow: is neither a list nor"),
 ]
 

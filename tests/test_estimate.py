@@ -720,6 +720,7 @@ RANGES: dict[str, tuple[float, float, float, float]] = {
     "bakery-flue": (100.0, 1000.0, 0.01, 0.06),
     "genset-exhaust": (150.0, 1500.0, 0.01, 0.06),
     "genset-jacket-water": (30.0, 400.0, 0.005, 0.03),
+    "genset-week": (30.0, 400.0, 0.005, 0.03),
     "hot-spring": (50.0, 600.0, 0.005, 0.03),
     "cooler-from-the-drawer": (5.0, 60.0, 0.01, 0.05),
     "textbook-array": (46.85, 46.95, 0.01, 0.04),

@@ -102,17 +102,18 @@ def require_answer(case: str, answer: Estimate | Screening) -> None:
     raise NoAnswerError(f"no valid answer: {answer.problem}")
 
 
-def standard_input() -> str:
-    """Read text from standard input, within the bound of a case file; raises InputError."""
+def standard_input(largest: int | None = None) -> str:
+    """Read text from standard input, within the bound of a case file or of `largest` bytes; raises InputError."""
     from harvest.model.case_text import LARGEST_FILE
 
-    content = sys.stdin.buffer.read(LARGEST_FILE + 1)
-    if len(content) > LARGEST_FILE:
-        raise InputError(f"stdin: more than {LARGEST_FILE} bytes; a case file is smaller")
+    most = largest or LARGEST_FILE
+    content = sys.stdin.buffer.read(most + 1)
+    if len(content) > most:
+        raise InputError(f"stdin: more than {most} bytes; a file of this kind is smaller")
     try:
-        return content.decode("utf-8")
+        return content.decode("utf-8-sig")
     except UnicodeDecodeError:
-        raise InputError("stdin: not UTF-8 text; save the case file as UTF-8") from None
+        raise InputError("stdin: not UTF-8 text; save the file as UTF-8") from None
 
 
 @click.group(cls=_Group, context_settings={"help_option_names": ["-h", "--help"], "max_content_width": 100})

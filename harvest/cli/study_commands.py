@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import sys
+from collections.abc import Callable
 from pathlib import Path
 from typing import Any
 
@@ -39,13 +40,16 @@ def whatif(case: str, overrides: tuple[str, ...], as_json: bool, **texts: Any) -
 
 @cli.command()
 @case_arguments
+@click.option("--duty", "log", default=None, help="Log over which the yearly energy is to be best; as duty.log.")
 @click.option("--plot", default=None, type=click.Path(dir_okay=False), help="Draw the curve (.svg, .png, .pdf).")
 @click.option("--write", default=None, type=click.Path(dir_okay=False), help="Save the best as a case; a new file.")
-def size(case: str, overrides: tuple[str, ...], as_json: bool, plot: str | None, write: str | None) -> None:
+def size(
+    case: str, overrides: tuple[str, ...], as_json: bool, log: str | None, plot: str | None, write: str | None
+) -> None:
     """How many modules, and how arranged: the best of every choice that [size] in CASE allows."""
     from harvest.report.files import case_text, refuse_existing, write_new
 
-    loaded = read_case_of(case, overrides)
+    loaded = read_case_of(case, (*overrides, *(['size.objective="yearly energy"'] if log else [])))
     if write is not None:
         refuse_existing(Path(write))
     if plot is not None:
@@ -54,7 +58,7 @@ def size(case: str, overrides: tuple[str, ...], as_json: bool, plot: str | None,
         can_plot(Path(plot))
     from harvest.study.size import size as size_case
 
-    found = size_case(loaded, _progress if sys.stderr.isatty() else None)
+    found = size_case(loaded, _progress_in("choices"), log=log)
     if plot is not None:
         write_figure(Path(plot), size_figure(loaded.title, found))
     if write is not None:
@@ -83,7 +87,7 @@ def doubt(case: str, overrides: tuple[str, ...], as_json: bool, samples: int, se
         can_plot(Path(plot))
     from harvest.study.doubt import doubt as doubt_case
 
-    found = doubt_case(loaded, samples, seed, _progress if sys.stderr.isatty() else None)
+    found = doubt_case(loaded, samples, seed, _progress_in("cases"))
     if plot is not None:
         from harvest.report.doubt_plots import doubt_figure
         from harvest.report.plots import write_figure
@@ -99,5 +103,10 @@ def doubt(case: str, overrides: tuple[str, ...], as_json: bool, samples: int, se
         click.echo(doubt_report(loaded, found))
 
 
-def _progress(done: int, all_of_them: int) -> None:
-    click.echo(f"\r{done:,} of {all_of_them:,}", nl=done == all_of_them, err=True)
+def _progress_in(noun: str) -> Callable[[int, int], None] | None:
+    """What tells a terminal how far a search is; None where standard error is none."""
+
+    def tell(done: int, all_of_them: int) -> None:
+        click.echo(f"\r{done:,} of {all_of_them:,} {noun}", nl=done == all_of_them, err=True)
+
+    return tell if sys.stderr.isatty() else None

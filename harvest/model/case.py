@@ -26,7 +26,7 @@ from harvest.model.case_fields import (
 )
 from harvest.model.stack_sections import Electrical, Module, Stack
 from harvest.model.stream_sections import Side, Site, StreamSide
-from harvest.model.study_sections import Cost, Limits, Size
+from harvest.model.study_sections import Cost, Duty, Limits, Size, Sweep
 from harvest.model.tolerances import Tolerance
 from harvest.quantities import (
     KINDS,
@@ -64,12 +64,8 @@ class Case(Streams):
     electrical: Electrical = section(Electrical, "Wiring, load and converter.")
     size: Size | None = section(Size, "What a sizing may change, and what it looks for.", optional=True)
     cost: Cost | None = section(Cost, "What a design costs to build, in one currency.", optional=True)
-    sweep: dict[str, Any] | None = other(
-        "axes",
-        "Fields that a sweep varies, by their whole names in quotes, as lists or { from = .., to = .., points = .. }.",
-        default=None,
-        descriptive=True,
-    )
+    duty: Duty = section(Duty, "How the streams change over time.")
+    sweep: Sweep | None = section(Sweep, "What a sweep varies.", optional=True)
     uncertainty: dict[str, Tolerance] | None = other(
         "tolerances",
         'How far fields may be off, by their whole names in quotes: "hot.mass_flow" = "5 %", of which 95 of 100 values '

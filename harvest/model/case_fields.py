@@ -34,6 +34,18 @@ class FlowCurve:
     values: tuple[float, ...]
 
 
+@dataclass(frozen=True)
+class SweepAxis:
+    """What a sweep gives one field: `values`, with `labels` where they are no single numbers; or all of a range.
+
+    `between` holds the ends [SI] of a range from which a sample draws, and `values` is empty then.
+    """
+
+    values: tuple[Any, ...]
+    labels: tuple[str, ...] = ()
+    between: tuple[float, float] | None = None
+
+
 FluidRows = tuple[tuple[float, float, float, float, float], ...]
 
 
@@ -42,9 +54,9 @@ class Declaration:
     """One field: its form, unit, meaning, default with its reason, limits, choices and when it applies.
 
     `form` is one of quantity, standard volume flow, energy price, pair, curve, text, file, choice, integer, integers,
-    boolean, fluid table, axis, axes, tolerances, section, tables (a list of sections). `applies` names a field beside
-    or above this one and its values for which this one is asked. A `reason` marks a default that is an assumption worth
-    telling.
+    boolean, fluid table, axis, axes, log, tolerances, section, tables (a list of sections). `applies` names a field
+    beside or above this one and its values for which it is asked. A `reason` marks a default that is an assumption
+    worth telling.
     """
 
     form: str

@@ -19,12 +19,12 @@ _ENTRY = re.compile(rf"{_KEY}=")
 _HEADER = re.compile(rf"\s*\[{{1,2}}{_KEY}\]{{1,2}}\s*(?:#.*)?$")
 
 
-def bounded_text(path: Path) -> str:
-    """Text of a file of at most 1 MiB, read no further than that; raises InputError with one line."""
+def bounded_text(path: Path, largest: int = LARGEST_FILE) -> str:
+    """Text of a file of at most `largest` bytes, read no further than that; raises InputError with one line."""
     try:
         with path.open("rb", buffering=0) as file:
             content = b""
-            while len(content) <= LARGEST_FILE and (block := file.read(LARGEST_FILE + 1 - len(content))):
+            while len(content) <= largest and (block := file.read(largest + 1 - len(content))):
                 content += block
     except FileNotFoundError:
         raise InputError(f"{path}: there is no such file") from None
@@ -32,8 +32,8 @@ def bounded_text(path: Path) -> str:
         raise InputError(f"{path}: is a directory; give the file in it") from None
     except (OSError, ValueError) as error:
         raise InputError(f"{path!s}: cannot be read ({getattr(error, 'strerror', None) or error})") from None
-    if len(content) > LARGEST_FILE:
-        raise InputError(f"{path}: is larger than 1 MiB, so it is no file of this kind")
+    if len(content) > largest:
+        raise InputError(f"{path}: is larger than {largest >> 20} MiB, so it is no file of this kind")
     try:
         return content.decode("utf-8-sig")
     except UnicodeDecodeError as error:

@@ -12,6 +12,7 @@ import numpy as np
 from harvest.errors import RangeError
 from harvest.model.batch import Batch, StreamBatch
 from harvest.model.case import DECLARATIONS, limits_text
+from harvest.model.combinations import combination_faults
 from harvest.model.loads import MAXIMUM_POWER
 from harvest.model.module import DescribedModule, described_module, fill_factor, footprint_area
 from harvest.model.property_store import stored_table
@@ -348,8 +349,13 @@ def _arrangement_faults(batch: Batch, faults: Faults) -> None:
         faults.add((number < 1) | (number != np.floor(number)), f"{name}: must be a whole number of at least 1")
     rows, columns, layers = (batch.number(f"stack.{name}") for name in ("rows", "columns", "layers"))
     along, across = batch.base.module.footprint
-    faults.add(batch.number("stack.row_pitch") < along, "stack.row_pitch: smaller than the module; increase it")
-    faults.add(batch.number("stack.column_pitch") < across, "stack.column_pitch: smaller than the module; increase it")
+    faults.add(
+        batch.number("stack.row_pitch") < along * (1 - 1e-9), "stack.row_pitch: smaller than the module; increase it"
+    )
+    faults.add(
+        batch.number("stack.column_pitch") < across * (1 - 1e-9),
+        "stack.column_pitch: smaller than the module; increase it",
+    )
     faults.add(
         columns % batch.number("electrical.strings_across") != 0, "electrical.strings_across: must divide columns"
     )
@@ -375,6 +381,8 @@ def _arrangement_faults(batch: Batch, faults: Faults) -> None:
     faults.add((faces == 4) & (layers < 4), "stack.layers: a repeating stack needs at least 4 layers")
     if batch.base.electrical.row_blocks is not None:
         faults.add(rows != sum(batch.base.electrical.row_blocks), "electrical.row_blocks: must add up to the rows")
+    for where, text in combination_faults(batch):
+        faults.add(where, text)
     found = {f"{side}.mass_flow" for side in ("hot", "cold") if batch.given(f"{side}.drive_curve")}
     for path, declaration in DECLARATIONS.items():
         if path in batch.varied and path not in found:

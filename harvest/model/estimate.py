@@ -532,6 +532,9 @@ class Outcomes:
     problem: ObjectArray
 
 
+SEARCH_CELLS = 200_000
+"""Rows times cases that a search prepares and solves at a time, so that memory does not grow with the cases."""
+
 SEARCHED = (
     "generated_power",
     "converted_power",
@@ -544,6 +547,7 @@ SEARCHED = (
     "hot_pressure_drop",
     "cold_pressure_drop",
     "hottest_face_temperature",
+    "hottest_junction_temperature",
     "warmest_cold_face_temperature",
     "stack_length",
     "stack_width",
@@ -601,6 +605,7 @@ def search_batch(batch: Batch, *, without_load: bool = False) -> Outcomes:
             "hot_pressure_drop": hot_drop.total,
             "cold_pressure_drop": cold_drop.total,
             "hottest_face_temperature": chosen.largest(chosen.hot_face),
+            "hottest_junction_temperature": chosen.largest(state.hot_junction),
             "warmest_cold_face_temperature": chosen.largest(chosen.cold_face),
             **_measures(made),
             **(_without_load(made, best) if without_load else {}),
@@ -620,6 +625,26 @@ def _without_load(made: Design, start: StackState) -> dict[str, FloatArray]:
         "open_circuit_face_temperature": solution.largest(solution.hot_face),
         "highest_open_circuit_voltage": np.abs(opened.string_voltage).max(axis=0),
     }
+
+
+def drive_power_without_heat(batch: Batch, side: str) -> tuple[FloatArray, ObjectArray]:
+    """Drive power of a side whose stream passes the stack at its inlet temperature [W], or why there is none; (cases,).
+
+    The other stream stands, whatever flow the batch has for it.
+    """
+    with np.errstate(all="ignore"):
+        made = design(driven_batch(batch))
+        stream = made.hot if side == "hot" else made.cold
+        boundaries = np.ones((made.problem.rows + 1, 1)) * stream.inlet_temperature
+        active = (np.arange(made.problem.rows)[:, None] < made.problem.active_rows).astype(float)
+        row_length = batch.number("stack.row_pitch") / made.segments
+        drop = pressure_drop(made.batch, stream, boundaries, stream.inlet_temperature, active, row_length)
+        power = side_drive_power(made.batch, stream, drop.total, stream.inlet_temperature)
+    problem: ObjectArray = np.full(batch.cases, "", dtype=object)
+    for index in np.flatnonzero(made.faults.text != ""):
+        own = [text for text in made.faults.text[index].split(BETWEEN) if text.startswith(side)]
+        problem[index] = own[0] if own else ""
+    return np.where(problem == "", power, np.nan), problem
 
 
 def _among(answers: Estimates, which: IntArray, problem: ObjectArray, batch: Batch) -> Estimates:

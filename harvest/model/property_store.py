@@ -8,6 +8,7 @@ import hashlib
 import json
 import os
 import sys
+from collections import Counter
 from dataclasses import asdict
 from dataclasses import fields as fields_of
 from pathlib import Path
@@ -22,7 +23,10 @@ from harvest.physics.fluids import FluidSpec, FluidTable, check_fluid, expansion
 RECIPE = (fluids, combustion, chebyshev, coolprop_source)
 """Modules that build a table: when one of them changes, tables on disk are built anew."""
 MOST_KEPT = 10_000
+MOST_WRITTEN = 500
+"""Tables that one process writes to a folder: a sweep over a composition makes thousands that nobody asks for again."""
 
+_written: Counter[Path] = Counter()
 _kept: dict[tuple[object, ...], FluidTable] = {}
 
 
@@ -67,8 +71,9 @@ def stored_table(
         table = _read(path, stated) if path else None
         if table is None:
             table = fluid_table(spec, pressure, lower, upper)
-            if path:
+            if path and _written[path.parent] < MOST_WRITTEN:
                 _write(path, stated, table)
+                _written[path.parent] += 1
         if len(_kept) >= MOST_KEPT:
             _kept.clear()
         _kept[key] = table

@@ -15,7 +15,16 @@ from typing import Any, NamedTuple, TypeVar
 
 from harvest.errors import CaseError, InputError, QuantityError
 from harvest.model.case import DECLARATIONS, Case, Streams, limits_text, nearest_field, nearest_name
-from harvest.model.case_fields import REQUIRED, Curve, Declaration, FlowCurve, FluidRows, declared, walk
+from harvest.model.case_fields import (
+    REQUIRED,
+    Curve,
+    Declaration,
+    FlowCurve,
+    FluidRows,
+    SweepAxis,
+    declared,
+    walk,
+)
 from harvest.model.case_rules import (
     ALTERNATIVES,
     CURVES,
@@ -60,6 +69,9 @@ FLUID_COLUMNS = {
 CONSTANT_FLUID_TEMPERATURE = 300.0
 MOST_CURVE_POINTS = 1000
 MOST_SUGGESTIONS = 50
+MOST_SWEEP_POINTS = 1_000_000
+NUMBERS = ("quantity", "integer", "curve")
+"""Forms of fields that can be one number."""
 LEG_MATERIALS = ("n_material", "p_material")
 LARGEST_EXPONENT = 4.0
 OPEN_TABLES = ("size.", "sweep.", "uncertainty.")
@@ -181,23 +193,26 @@ def _from(
     return case
 
 
-def replace(case: AnyStreams, changes: Mapping[str, Any]) -> AnyStreams:
+def replace(
+    case: AnyStreams, changes: Mapping[str, Any], *, label: str = "case", as_written: bool = False
+) -> AnyStreams:
     """Make a validated case, or streams, with other values, by path: SI numbers, texts with units, or pint quantities.
 
-    Raises CaseError with all faults.
+    None takes a value away; `label` names in faults where the changes come from; with `as_written` they are as in a
+    case file, where a number needs its unit. Raises CaseError with all faults.
     """
     document = copy.deepcopy(case.given)
     faults = []
     for path, value in changes.items():
         try:
-            _put(document, path, _as_typed(path, value))
+            _put(document, path, value if as_written else _as_typed(path, value))
         except QuantityError as error:
             faults.append(f"{path}: {error}")
         except InputError as error:
             faults.append(str(error))
     if faults:
         raise CaseError(faults)
-    return _from(type(case), document, folder=case.folder)
+    return _from(type(case), document, label=label, folder=case.folder)
 
 
 def _put(document: dict[str, Any], path: str, value: Any) -> None:
@@ -240,6 +255,8 @@ def _listed(table: dict[str, Any], name: str) -> Any:
 
 def _as_typed(path: str, value: Any) -> Any:
     """Write a value from Python as it would stand in a case file, exact to the last digit."""
+    if path.startswith("sweep.") and path not in DECLARATIONS:
+        return _typed_axis(path.removeprefix("sweep."), value)
     declaration = DECLARATIONS.get(path)
     if declaration is None or isinstance(value, str | bool | Mapping):
         return value
@@ -270,6 +287,14 @@ def _as_typed(path: str, value: Any) -> Any:
     if declaration.form in ("quantity", "pair") and isinstance(value, int | float) and not KINDS[declaration.kind].bare:
         return f"{value!r} {unit_of(declaration.kind)}"
     return value
+
+
+def _typed_axis(path: str, value: Any) -> Any:
+    """Write what a sweep gives a field as it would stand in a case file."""
+    if isinstance(value, Mapping):
+        return {name: each if name == "points" else _as_typed(path, each) for name, each in value.items()}
+    listed = value.tolist() if hasattr(value, "tolist") else value
+    return [_as_typed(path, each) for each in listed] if isinstance(listed, list | tuple | range) else listed
 
 
 def _built(owner: type, prefix: str, values: Values, **more: Any) -> Any:
@@ -386,7 +411,7 @@ class _Reading:
                     self.fault("module.use", str(error))
                     self.give_up(path, declaration)
                     return
-            if path == "size":
+            if path in ("size", "sweep"):
                 inside = _with_fields_apart(inside)
             self.values[path] = path
             self.section(declaration.section, f"{path}.", inside)
@@ -465,7 +490,7 @@ class _Reading:
             return _integer(declaration, raw)
         if form == "choice":
             return _choice(declaration, raw)
-        if form == "text":
+        if form in ("text", "log"):
             return _text(raw)
         if form == "file":
             return _file(_text(raw), kind, self.record_folders.get(path, self.folder))
@@ -505,22 +530,6 @@ class _Reading:
         value = parse_quantity(raw, declaration.kind, ambient_pressure=gauge_reference)
         _within(declaration, value, raw)
         return value
-
-    def axes(self, path: str, raw: Any) -> dict[str, Any]:
-        """Check what a sizing or a sweep varies; a sweep is kept as given."""
-        if path == "size.fields":
-            return self.size_fields(raw)
-        if not isinstance(raw, Mapping) or not raw:
-            raise QuantityError(f"is a section; write [{path}] and what is varied below it")
-        for name, axis in raw.items() if path == "sweep" else ():
-            known = DECLARATIONS.get(name)
-            if known is None or known.section is not None:
-                self.fault(f"{path}.{name}", 'unknown field; write its whole name in quotes, "hot.mass_flow" = ...')
-            elif not (isinstance(axis, list) and axis) and not (
-                isinstance(axis, Mapping) and {"from", "to"} <= set(axis)
-            ):
-                self.fault(f"{path}.{name}", "is neither a list nor { from = .., to = .., points = .. }")
-        return dict(raw)
 
     def tolerances(self, path: str, raw: Any) -> dict[str, Tolerance]:
         """Tolerance of each field, by its whole name."""
@@ -562,10 +571,14 @@ class _Reading:
             raise QuantityError("is below zero, where a factor means nothing; give a difference")
         return tolerance
 
-    def size_fields(self, raw: Any) -> dict[str, tuple[float, ...]]:
-        """Values of each further field of a sizing, by its whole name."""
+    def axes(self, path: str, raw: Any) -> dict[str, Any]:
+        """Values that a sizing or a sweep gives each field, by its whole name."""
         if not isinstance(raw, Mapping):
             raise QuantityError('is written by whole names in quotes, such as "hot.duct.gap" = ["2 mm", "3 mm"]')
+        return self.size_fields(raw) if path == "size.fields" else self.sweep_fields(raw)
+
+    def size_fields(self, raw: Mapping[str, Any]) -> dict[str, tuple[float, ...]]:
+        """Values of each further field of a sizing, by its whole name."""
         found = {}
         for name, axis in raw.items():
             known = DECLARATIONS.get(name)
@@ -587,6 +600,45 @@ class _Reading:
                 self.fault(f"size.{name}", str(error))
         return found
 
+    def sweep_fields(self, raw: Mapping[str, Any]) -> dict[str, SweepAxis]:
+        """What a sweep gives each field, by its whole name."""
+        found = {}
+        for name, axis in raw.items():
+            try:
+                found[name] = self.sweep_axis(name, _swept(name), axis)
+            except QuantityError as error:
+                self.fault(f"sweep.{name}", str(error))
+        return found
+
+    def sweep_axis(self, path: str, declaration: Declaration, raw: Any) -> SweepAxis:
+        """Values in the order given, single numbers in SI; raises QuantityError."""
+        sampled = self.values["sweep.sample"] is not None
+        if isinstance(raw, Mapping):
+            if declaration.form not in NUMBERS:
+                raise QuantityError("has no values between two others; give a list")
+            if sampled and set(raw) == {"from", "to"}:
+                ends = (self.single(path, declaration, raw["from"]), self.single(path, declaration, raw["to"]))
+                if not ends[0] < ends[1]:
+                    raise QuantityError(
+                        f"goes from {shown(raw['from'])} to {shown(raw['to'])}; give the lower one first"
+                    )
+                return SweepAxis((), between=ends)
+            one = functools.partial(self.single, path, declaration)
+            return SweepAxis(tuple(self.spaced(declaration, raw, one, MOST_SWEEP_POINTS)))
+        if not isinstance(raw, list | tuple) or not raw:
+            raise QuantityError("is neither a list nor { from = .., to = .., points = .. }")
+        single = declaration.form in NUMBERS and not any(isinstance(each, list | tuple) for each in raw)
+        read = self.single if single else self.value
+        values = tuple(read(path, declaration, each) for each in raw)
+        if len(set(values)) < len(values):
+            twice = next(each for place, each in enumerate(raw) if values[place] in values[:place])
+            raise QuantityError(f"has {shown(twice)} twice; give each value once")
+        return SweepAxis(values, () if single else tuple(map(_label, raw)))
+
+    def single(self, path: str, declaration: Declaration, raw: Any) -> float:
+        """One number of a field, SI; raises QuantityError."""
+        return _integer(declaration, raw) if declaration.form == "integer" else self.number(path, declaration, raw)
+
     def axis(self, path: str, declaration: Declaration, raw: Any) -> tuple[Any, ...]:
         """Rising values of a list, or from one to another by steps or points; raises QuantityError."""
 
@@ -602,7 +654,13 @@ class _Reading:
             raise QuantityError("is neither a list nor { from = .., to = .., step = .. }")
         return tuple(sorted(set(values)))
 
-    def spaced(self, declaration: Declaration, raw: Mapping[str, Any], one: Callable[[Any], float]) -> list[float]:
+    def spaced(
+        self,
+        declaration: Declaration,
+        raw: Mapping[str, Any],
+        one: Callable[[Any], float],
+        most: int = MOST_CURVE_POINTS,
+    ) -> list[float]:
         """Values from one to another, both included where the steps meet the end."""
         whole = declaration.form in ("integer", "axis")
         if not {"from", "to"} <= set(raw) <= {"from", "to", "step", "points"} or {"step", "points"} <= set(raw):
@@ -610,10 +668,14 @@ class _Reading:
         lowest, highest = one(raw["from"]), one(raw["to"])
         if lowest > highest:
             raise QuantityError(f"goes from {shown(raw['from'])} down to {shown(raw['to'])}; give the lower one first")
-        if "points" in raw and not whole:
+        if "points" in raw and declaration.form != "axis":
             points = raw["points"]
-            if isinstance(points, bool) or not isinstance(points, int) or not 2 <= points <= MOST_CURVE_POINTS:
-                raise QuantityError(f"points: give a whole number from 2 to {MOST_CURVE_POINTS}")
+            if isinstance(points, bool) or not isinstance(points, int) or not 2 <= points <= most:
+                raise QuantityError(f"points: give a whole number from 2 to {most}")
+            if whole:
+                if (highest - lowest) % (points - 1) or lowest == highest:
+                    raise QuantityError(f"points: {points} of them do not fall on whole numbers; give step instead")
+                return list(range(int(lowest), int(highest) + 1, int(highest - lowest) // (points - 1)))
             width = (highest - lowest) / (points - 1)
             return [lowest + width * place for place in range(points - 1)] + [highest]
         if whole:
@@ -625,8 +687,9 @@ class _Reading:
             step = parse_quantity(raw["step"], kind.get(declaration.kind, declaration.kind))
         else:
             raise QuantityError("needs step or points")
-        if not step > 0 or (highest - lowest) / step > MOST_CURVE_POINTS * 10:
-            raise QuantityError(f"step: must be above zero and make at most {MOST_CURVE_POINTS * 10} values")
+        longest = max(most, MOST_CURVE_POINTS * 10)
+        if not step > 0 or (highest - lowest) / step > longest:
+            raise QuantityError(f"step: must be above zero and make at most {longest} values")
         return [lowest + step * place for place in range(int((highest - lowest) / step * (1 + 1e-12)) + 1)]
 
     def with_record(self, module: Mapping[str, Any]) -> Mapping[str, Any]:
@@ -658,9 +721,41 @@ class _Reading:
         return merged
 
 
+def _swept(path: str) -> Declaration:
+    """Declaration of a field that a sweep can vary; raises QuantityError."""
+    declaration = DECLARATIONS.get(path)
+    if declaration is None:
+        raise QuantityError(f"unknown field; {nearest_field(path[:60])}")
+    if declaration.section is not None:
+        example = f"{path}.{_first_field(declaration)}"
+        raise QuantityError(f'is a section; write the whole name of one of its fields in quotes, such as "{example}"')
+    if DECLARATIONS.get(path.rpartition(".")[0], declaration).form == "tables":
+        raise QuantityError("stands in a list of tables; write each module as a record and vary module.use")
+    if path.startswith("limits."):
+        raise QuantityError("a limit changes no result, so a sweep cannot vary it; --plot draws the limits of the case")
+    shapes = path == "module.use" or (path.startswith("cost.") and declaration.form in NUMBERS)
+    if declaration.descriptive and not shapes:
+        raise QuantityError("changes no result, so a sweep cannot vary it; leave it out")
+    return declaration
+
+
+def _first_field(declaration: Declaration) -> str:
+    assert declaration.section is not None
+    return declared(declaration.section)[0][0]
+
+
+def _label(raw: Any) -> str:
+    """Write a value that is no single number as it was typed."""
+    if isinstance(raw, str):
+        return one_line(raw, 200)
+    if isinstance(raw, list | tuple):
+        return f"[{', '.join(map(_label, raw))}]"
+    return str(raw).lower() if isinstance(raw, bool) else one_line(str(raw), 200)
+
+
 def _with_fields_apart(size: Mapping[str, Any]) -> Mapping[str, Any]:
-    """Put the whole names of fields in a sizing together under `fields`."""
-    apart = {name: axis for name, axis in size.items() if "." in str(name)}
+    """Put the whole names of fields in a sizing or a sweep together under `fields`."""
+    apart = {name: axis for name, axis in size.items() if "." in str(name) or name in DECLARATIONS}
     if not apart or "fields" in size:
         return size
     return {**{name: each for name, each in size.items() if name not in apart}, "fields": apart}

@@ -120,6 +120,17 @@ class Estimate:
 
 SCALARS: dict[str, Any] = {item.name: item.metadata for item in dataclasses.fields(Estimate) if item.metadata}
 ROW_RESULTS: dict[str, Any] = {item.name: item.metadata for item in dataclasses.fields(Rows)}
+OF_SEARCHES: dict[str, Any] = {
+    "hottest_junction_temperature": {
+        "kind": "temperature",
+        "meaning": "Highest hot junction temperature at the chosen load.",
+    },
+    "warmest_cold_face_temperature": {
+        "kind": "temperature",
+        "meaning": "Highest cold face temperature at the chosen load.",
+    },
+}
+"""Results of a search that an estimate tells row by row."""
 UNITS: dict[str, str] = {
     **{name: unit_of(metadata["kind"]) for name, metadata in SCALARS.items()},
     **{f"rows.{name}": unit_of(metadata["kind"]) for name, metadata in ROW_RESULTS.items()},

@@ -8,7 +8,9 @@ from typing import Any
 
 from harvest.model.case_fields import (
     MOST_ROWS,
+    SweepAxis,
     choice,
+    integer,
     other,
     quantity,
     text,
@@ -51,6 +53,7 @@ class Limits:
 
 OBJECTIVES = {
     "net power": "the most net power",
+    "yearly energy": "the most net energy of a year over [duty] log",
     "fewest modules": "the fewest modules that give target_net_power",
     "cost per net watt": "the least cost of building over net power; needs [cost]",
     "cost per kilowatt-hour": "the least cost of a net kilowatt-hour over the years of use; needs [cost]",
@@ -103,6 +106,44 @@ class Size:
     )
 
 
+SEQUENCES = {
+    "Sobol": "scrambled Sobol points, most even for a power of two of them",
+    "Halton": "scrambled Halton points, even for any number of them",
+}
+MOST_COMBINATIONS = 100_000_000
+
+
+@dataclass(frozen=True, kw_only=True)
+class Sweep:
+    """What a sweep varies: every combination of its fields' values, or a sample of them."""
+
+    sample: int | None = integer(
+        "Number of combinations drawn evenly from all that the fields allow, in place of every one of them.",
+        default=None,
+        minimum=1,
+        maximum=MOST_COMBINATIONS,
+        descriptive=True,
+    )
+    sequence: str = choice(
+        SEQUENCES, "Points of low discrepancy that a sample takes.", default="Sobol", descriptive=True
+    )
+    seed: int = integer(
+        "Start of the scrambling of a sample; the same seed gives the same sample.",
+        default=0,
+        minimum=0,
+        maximum=2**31,
+        descriptive=True,
+    )
+    fields: dict[str, SweepAxis] | None = other(
+        "axes",
+        'Fields that are varied, written in [sweep] by their whole names in quotes, such as "hot.mass_flow" = '
+        '{ from = "0.05 kg/s", to = "0.12 kg/s", points = 8 }, or with step in place of points, or as a list, '
+        "which may also hold choices; a sample also draws between from and to alone.",
+        default=None,
+        descriptive=True,
+    )
+
+
 def _price(meaning: str) -> Any:
     return quantity("dimensionless", meaning, default=0.0, minimum=0.0, maximum=1e12, descriptive=True)
 
@@ -125,4 +166,39 @@ class Cost:
     years: float = quantity("dimensionless", "Years of use.", default=10.0, above=0.0, maximum=100.0, descriptive=True)
     discount_rate: float = quantity(
         "dimensionless", "Discount rate a year.", default=0.0, minimum=0.0, maximum=1.0, descriptive=True
+    )
+
+
+WORTH_IT, ALWAYS_ON = "when worth it", "always on"
+DUTY_DRIVES = {
+    WORTH_IT: "drives and auxiliaries are off while the stack would give less than them, or a stream stands",
+    ALWAYS_ON: "drives of streams that flow and auxiliaries are on all the time",
+}
+
+
+@dataclass(frozen=True, kw_only=True)
+class Duty:
+    """How the streams change over time, and what is done while the stack is not worth its drives."""
+
+    log: str | None = other(
+        "log", "CSV file of the streams over time, from the case's folder.", default=None, descriptive=True
+    )
+    drives: str = choice(
+        DUTY_DRIVES,
+        "What pumps, fans and auxiliaries do while they take more than the stack gives.",
+        default=WORTH_IT,
+        descriptive=True,
+    )
+    longest_hold: float | None = quantity(
+        "duration",
+        "Longest time for which a reading holds until the next one; unless given, three usual steps of the log. In a "
+        "longer gap the reading holds for one usual step, and the rest of the gap is not covered.",
+        default=None,
+        above=0.0,
+        maximum=1e9,
+        descriptive=True,
+    )
+    time_zone: str = text(
+        'Zone of a clock whose time stamps have no offset, such as "Europe/Berlin"; unless given, the clock never '
+        "changes."
     )

@@ -18,6 +18,7 @@ if TYPE_CHECKING:
     from harvest.model.fluid import FluidSheet
     from harvest.model.module_curve import ModuleCurve
     from harvest.study.bench_record import BenchFit
+    from harvest.study.duty import DutyBalance
     from harvest.study.heat_pump_record import HeatPumpFit
     from harvest.study.size import Sizing
     from harvest.study.what_if import WhatIf
@@ -137,6 +138,7 @@ SIZE_KINDS = {
     "wirings.voltage": "voltage",
     "wirings.open_circuit_voltage": "voltage",
     "wirings.net_power": "power",
+    "duty.binned_net_power": "power",
 }
 
 
@@ -146,7 +148,69 @@ def size_document(found: Sizing) -> dict[str, Any]:
     arrangement = document.pop("arrangement")
     best = {**arrangement, **estimate_document(found.best)}
     units = {name: unit_of(kind) for name, kind in SIZE_KINDS.items()}
+    if found.duty is not None:
+        document["duty"]["balance"] = duty_document(found.duty.balance)
     return {**document, "best": best, "wirings": plain(found.wirings), "units": units, "version": VERSION}
+
+
+MOST_NOTES = 1000
+"""Notes on a log that its JSON tells one by one."""
+DUTY_KINDS = {
+    **dict.fromkeys(
+        (
+            "covered_time",
+            "answered_time",
+            "time_on",
+            "time_off",
+            "time_without_answer",
+            "time_not_covered",
+            "time_beyond_limits",
+        ),
+        "duration",
+    ),
+    **dict.fromkeys(("yearly_time", "yearly_from_time"), "duration"),
+    **dict.fromkeys(
+        (
+            "generated_energy",
+            "converted_energy",
+            "hot_drive_energy",
+            "cold_drive_energy",
+            "auxiliary_energy",
+            "standby_energy",
+            "net_energy",
+            "yearly_net_energy",
+        ),
+        "energy",
+    ),
+    **dict.fromkeys(("mean_net_power", "net_power", "most_net_power"), "power"),
+    **dict.fromkeys(("hottest_face_temperature", "hottest_junction_temperature"), "temperature"),
+    "exceeded_share": "dimensionless",
+    "log.usual_step": "duration",
+}
+
+
+def duty_document(found: DutyBalance) -> dict[str, Any]:
+    """A design over a log: energies in J, times in s, and what was odd about the log."""
+    from harvest.study.duty_log import NOTES
+
+    log = found.log
+    counts = {kind: sum(note.kind == kind for note in log.notes) for kind in NOTES}
+    return {
+        **plain(found),
+        "answered_time": found.answered_time,
+        "log": {
+            "label": log.label,
+            "usual_step": plain(log.usual_step),
+            "held_cells": log.held_cells,
+            "ignored": list(log.ignored),
+            "note_counts": {kind: count for kind, count in counts.items() if count},
+            "notes": [
+                {"line": note.line, "kind": note.kind, "text": note.text, "done": NOTES[note.kind]}
+                for note in log.notes[:MOST_NOTES]
+            ],
+        },
+        "units": {name: unit_of(kind) for name, kind in DUTY_KINDS.items()},
+    }
 
 
 def fluid_document(sheet: FluidSheet) -> dict[str, Any]:

@@ -5,6 +5,7 @@ from __future__ import annotations
 import contextlib
 import os
 import tempfile
+from collections.abc import Iterator
 from pathlib import Path
 from typing import Any
 
@@ -12,23 +13,34 @@ from harvest.errors import InputError
 from harvest.model.case import DECLARATIONS, Case
 
 
-def write_whole(path: Path, content: str | bytes) -> None:
-    """Write a file by way of a temporary one beside it, so that it is never half there; raises InputError."""
-    data = content.encode("utf-8") if isinstance(content, str) else content
+@contextlib.contextmanager
+def whole_file(path: Path) -> Iterator[Path]:
+    """Give a temporary file beside the final one, which it becomes at the end: forced to the disk, never half there.
+
+    Raises InputError where the file cannot be written.
+    """
     try:
         handle, name = tempfile.mkstemp(prefix=f".{path.name}.", dir=path.parent)
+        os.close(handle)
     except OSError as error:
         raise InputError(f"{path}: cannot be written ({error.strerror})") from None
+    temporary = Path(name)
     try:
-        with os.fdopen(handle, "wb") as file:
-            file.write(data)
-        Path(name).chmod(0o644)
-        Path(name).replace(path)
+        yield temporary
+        with temporary.open("rb+") as file:
+            os.fsync(file.fileno())
+        temporary.chmod(0o644)
+        temporary.replace(path)
     except OSError as error:
         raise InputError(f"{path}: cannot be written ({error.strerror})") from None
     finally:
-        with contextlib.suppress(FileNotFoundError):
-            Path(name).unlink()
+        temporary.unlink(missing_ok=True)
+
+
+def write_whole(path: Path, content: str | bytes) -> None:
+    """Write a file by way of a temporary one beside it, so that it is never half there; raises InputError."""
+    with whole_file(path) as temporary:
+        temporary.write_bytes(content.encode("utf-8") if isinstance(content, str) else content)
 
 
 def record_text(record: dict[str, Any]) -> str:
@@ -49,7 +61,7 @@ def case_text(case: Case) -> str:
         for parent in parents:
             table = table.get(parent) if isinstance(table, dict) else None
         value = table.get(name) if isinstance(table, dict) else None
-        if declaration.form not in ("file", "fluid table") or not isinstance(value, str):
+        if declaration.form not in ("file", "fluid table", "log") or not isinstance(value, str):
             continue
         if (case.folder / value).is_file():
             table[name] = str((case.folder / value).resolve())

@@ -16,6 +16,7 @@ FORMS_WITH_UNIT = ("quantity", "pair", "curve", "flow curve", "standard volume f
 WRITTEN = {
     "text": "text",
     "file": "name or path",
+    "log": "path",
     "integer": "whole number",
     "integers": "whole numbers in a list",
     "boolean": "`true` or `false`",

@@ -11,12 +11,13 @@ from harvest.model.case import DECLARATIONS, Case, display
 from harvest.model.study_sections import OBJECTIVES
 from harvest.quantities import format_quantity
 from harvest.report.cost_sheet import cost_sentence
+from harvest.report.duty_sheet import hours, kilowatt_hours, worth
 from harvest.report.layout import WIDTH, heading, table, wrapped
 from harvest.report.terminal import counted, stack_sentence, title, verdict
 from harvest.study.limits import limit_path
 
 if TYPE_CHECKING:
-    from harvest.study.size import Arrangement, AtBound, BindingLimit, CostFront, Sizing
+    from harvest.study.size import Arrangement, AtBound, BindingLimit, CostFront, SizedDuty, Sizing
     from harvest.study.wirings import Wiring
 
 MOST_LINES = 14
@@ -240,6 +241,38 @@ def _front(front: CostFront, currency: str) -> list[str]:
     ]
 
 
+def _at_its_streams(case: Case, found: Sizing) -> list[str]:
+    """Net power and costs of the best at the streams of the case."""
+    return [
+        f"Net power {_w(found.best.net_power)} of {_w(found.best.generated_power)} generated.",
+        *([wrapped("", cost_sentence(case, found.best))] if case.cost is not None else []),
+    ]
+
+
+def _over_log(found: SizedDuty) -> str:
+    """What the best gives over the log."""
+    balance = found.balance
+    off = sum(balance.time_off.values())
+    return (
+        f"Net {kilowatt_hours(balance.yearly_net_energy)} in a year{worth(balance)}: "
+        f"{kilowatt_hours(balance.net_energy)} in the {hours(balance.answered_time)} of {balance.log.label}, of which "
+        f"it is off for {hours(off)}. Powers below are means over the log."
+    )
+
+
+def _bins(found: SizedDuty) -> str:
+    """How the log was searched."""
+    if found.bins == found.conditions:
+        return f"Every choice was answered in each of the log's {found.conditions:,} conditions."
+    mean = found.balance.mean_net_power
+    apart = abs(found.binned_net_power / mean - 1.0) if mean else 0.0
+    return (
+        f"The search took {found.bins} bins for the log's {found.conditions:,} conditions, and the {found.finalists} "
+        f"best were answered in each of them: the bins gave {_w(found.binned_net_power)} on average and the log gives "
+        f"{_w(mean)}, {100 * apart:.2g} % apart."
+    )
+
+
 def size_report(case: Case, found: Sizing) -> str:
     """The report of a sizing."""
     name = title(case)
@@ -248,8 +281,11 @@ def size_report(case: Case, found: Sizing) -> str:
         "=" * min(len(name), WIDTH),
         "",
         wrapped("", f"Best for {OBJECTIVES[found.objective].partition(';')[0]}: {_arranged(found.arrangement)}."),
-        f"Net power {_w(found.best.net_power)} of {_w(found.best.generated_power)} generated.",
-        *([wrapped("", cost_sentence(case, found.best))] if case.cost is not None else []),
+        *(
+            _at_its_streams(case, found)
+            if found.duty is None
+            else [wrapped("", _over_log(found.duty)), wrapped("", _bins(found.duty))]
+        ),
         *_flatness(found),
         wrapped("", stack_sentence(found.best_case, found.best) + "."),
         wrapped("", verdict(found.best)),

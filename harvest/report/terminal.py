@@ -324,12 +324,7 @@ def check_report(case: Case) -> str:
     given, of_record = [], []
     for path, declaration in DECLARATIONS.items():
         value = value_at(case, path)
-        if (
-            declaration.section is not None
-            or value is None
-            or path in ("sweep", "uncertainty")
-            or path.startswith("size.")
-        ):
+        if declaration.section is not None or value is None or path.startswith(("size.", "sweep.", "uncertainty")):
             continue
         line = wrapped(f"  {path} = ", display(value, declaration), rest="      ")
         if _stands_in(case.given, path):

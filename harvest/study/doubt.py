@@ -13,14 +13,13 @@ from harvest.errors import InputError, NoAnswerError
 from harvest.model.batch import Batch
 from harvest.model.case import DECLARATIONS, Case, value_at
 from harvest.model.design import BETWEEN, SPEC_NUMBERS, stream_excess_air_ratio
-from harvest.model.estimate import Outcomes, search_batch
+from harvest.model.estimate import SEARCH_CELLS, Outcomes, search_batch
 from harvest.model.stream_sections import HEAT_SINK
 from harvest.model.tolerances import FACTOR, NONE, UNIFORM, Tolerance
 from harvest.physics.arrays import FloatArray, IntArray, ObjectArray
 from harvest.quantities import StandardVolumeFlow
 from harvest.study.common_tolerances import COMMON_TOLERANCES
 from harvest.study.limits import LIMITS, WITHOUT_LOAD, limit_of
-from harvest.study.size import SEARCH_CELLS
 
 SAMPLES = 4096
 FEWEST_SAMPLES, MOST_SAMPLES = 64, 2**16

@@ -8,6 +8,7 @@ import functools
 import re
 from collections.abc import Callable, Iterator
 from dataclasses import dataclass, field
+from pathlib import Path
 from typing import Any
 
 import numpy as np
@@ -17,15 +18,16 @@ from harvest.model.batch import Batch
 from harvest.model.case import DECLARATIONS, Case
 from harvest.model.case_fields import MOST_MODULES
 from harvest.model.design import BETWEEN
-from harvest.model.estimate import Outcomes, estimate, search_batch
+from harvest.model.estimate import SEARCH_CELLS, Outcomes, estimate, search_batch
 from harvest.model.reading import replace
 from harvest.model.results import Estimate
 from harvest.physics.arrays import BoolArray, FloatArray, IntArray
+from harvest.study.duty import DutyBalance, case_log, duty
+from harvest.study.duty_log import DutyLog
+from harvest.study.duty_search import DutyMeasure
 from harvest.study.limits import asks_without_load, bounded_results, broken_limits, limit_path
 from harvest.study.wirings import MOST_BLOCKS, WIRING, Wiring, even_blocks, groupings, wired, wirings
 
-SEARCH_CELLS = 200_000
-"""Rows times cases that are prepared and solved at a time, so that memory does not grow with the choices."""
 MOST_CHOICES = 2_000_000
 REFINED_POINTS = 5
 REFINEMENTS = 6
@@ -35,6 +37,10 @@ MOST_REFINED = 4
 MOST_WITHOUT_ESTIMATE = 20
 """Best choices in turn that may lack a full estimate before the search gives up."""
 
+FINALISTS = 5
+"""Best choices over a log's bins that are answered at each of its readings."""
+YEARLY_ENERGY = "yearly energy"
+
 COUNTS = ("stack.rows", "stack.columns", "stack.layers")
 BLOCKS = "row blocks"
 """Name under which a choice keeps the number of its row blocks, where the wiring is searched."""
@@ -42,6 +48,7 @@ KEPT = ("net_power", "building_cost", "cost_per_net_watt", "cost_per_kilowatt_ho
 """Results of every choice that objectives and the front of cost look at."""
 
 Progress = Callable[[int, int], None]
+Search = Callable[[Batch], Outcomes]
 
 
 @dataclass(frozen=True)
@@ -108,6 +115,21 @@ class AtBound:
 
 
 @dataclass(frozen=True)
+class SizedDuty:
+    """The best over a log: its balance, and how the search went.
+
+    The search took `bins` in place of the log's `conditions`; `binned_net_power` [W] is the mean that they give,
+    `finalists` so many choices were answered at every reading.
+    """
+
+    balance: DutyBalance
+    conditions: int
+    bins: int
+    binned_net_power: float
+    finalists: int
+
+
+@dataclass(frozen=True)
 class Sizing:
     """The best design of all choices, and how the choice stands among the others."""
 
@@ -134,6 +156,7 @@ class Sizing:
     at_bounds: tuple[AtBound, ...] = ()
     net_power_without_window: float | None = None
     front: CostFront | None = None
+    duty: SizedDuty | None = None
 
     @functools.cached_property
     def wirings(self) -> tuple[Wiring, ...]:
@@ -211,8 +234,9 @@ class _Axes:
 class _Tally:
     """What is kept of every choice: a few numbers, however many rows were solved."""
 
-    def __init__(self, case: Case) -> None:
+    def __init__(self, case: Case, search: Search) -> None:
         self.case = case
+        self.search = search
         self.parts: list[dict[str, FloatArray]] = []
         self.kept = sorted({*KEPT, *bounded_results(case)})
         self.searches_wiring = case.size is not None and case.size.wiring == "search"
@@ -240,7 +264,7 @@ class _Tally:
                 self.case, electrical=dataclasses.replace(self.case.electrical, row_blocks=blocks)
             )
             batch = Batch(base, len(part["stack.rows"]), {path: each for path, each in part.items() if path != BLOCKS})
-            found = search_batch(batch, without_load=asks_without_load(self.case))
+            found = self.search(batch)
             if counted:
                 self.choices += batch.cases
                 for problem in found.problem[found.problem != ""]:
@@ -312,7 +336,7 @@ class _Found:
         if size.objective == "fewest modules":
             reached = among & (net >= float(size.target_net_power or 0.0))
             keys: tuple[FloatArray, ...] = (-net, count)
-        elif size.objective == "net power":
+        elif size.objective in ("net power", YEARLY_ENERGY):
             reached, keys = among, (count, -net)
         else:
             reached, keys = among & (net > 0), (count, self.numbers[size.objective.replace(" ", "_").replace("-", "_")])
@@ -492,14 +516,22 @@ def _binding(found: _Found, order: IntArray) -> tuple[tuple[BindingLimit, ...], 
     return single, None if single else without("all limits together", tuple(found.beyond))
 
 
-def size(case: Case, progress: Progress | None = None) -> Sizing:
+def size(case: Case, progress: Progress | None = None, *, log: DutyLog | str | Path | None = None) -> Sizing:
     """Solve every choice in [size] and find the best that keeps to [limits].
 
-    Parameters: `case` with a section [size]; `progress`, called with choices done and choices in all. Raises InputError
-    for what concerns all choices, NoAnswerError where no choice has an answer within the limits.
+    Parameters: `case` with a section [size]; `progress`, called with choices done and choices in all; `log` for the
+    objective "yearly energy", by default the case's own: then powers are means over the log, and limits hold in every
+    condition in which a choice is on. Raises InputError for what concerns all choices, NoAnswerError where no choice
+    has an answer within the limits.
     """
-    axes, tally = _Axes(case), _Tally(case)
+    axes = _Axes(case)
     wanted = axes.size
+    over = case_log(case, log) if wanted.objective == YEARLY_ENERGY else None
+    measure = DutyMeasure.of(case, over) if over is not None else None
+    if measure is None:
+        tally = _Tally(case, lambda batch: search_batch(batch, without_load=asks_without_load(case)))
+    else:
+        tally = _Tally(measure.base, measure.search)
     for places in axes.chunks(case.stack.segments):
         tally.add(axes.at(places))
         if progress is not None:
@@ -513,9 +545,13 @@ def size(case: Case, progress: Progress | None = None) -> Sizing:
     order = found.order(found.allowed())
     if not len(order):
         raise NoAnswerError("\n".join(_none_meets(found, beyond, tally)))
+    sized = None
+    if over is not None and measure is not None:
+        order, sized = _over_whole_log(case, over, measure, found, order, axes)
     for place in order[:MOST_WITHOUT_ESTIMATE]:
         chosen = found.values(int(place), axes)
-        wired_alike = found.with_wiring(int(place), wirings(designed(case, chosen))[0]) if BLOCKS in chosen else place
+        searched = BLOCKS in chosen and measure is None
+        wired_alike = found.with_wiring(int(place), wirings(designed(case, chosen))[0]) if searched else place
         chosen = found.values(int(wired_alike), axes)
         best_case = designed(case, chosen)
         best = estimate(best_case)
@@ -556,7 +592,36 @@ def size(case: Case, progress: Progress | None = None) -> Sizing:
         at_bounds=_at_bounds(axes, chosen),
         net_power_without_window=_without_window(best_case, best),
         front=_front(found, allowed),
+        duty=sized,
     )
+
+
+def _over_whole_log(
+    case: Case, log: DutyLog, measure: DutyMeasure, found: _Found, order: IntArray, axes: _Axes
+) -> tuple[IntArray, SizedDuty]:
+    """Order of choices with the first ones answered at every reading, the best of them first, and that one's balance.
+
+    Choices that break a limit at a reading are struck out. Raises NoAnswerError where all that were answered do.
+    """
+    balances: dict[int, DutyBalance] = {}
+    binned = found.numbers["net_power"].copy()
+    answered = 0
+    for place in order[:MOST_WITHOUT_ESTIMATE].tolist():
+        answered += 1
+        balance = duty(designed(case, found.values(place, axes)), log)
+        kept = not any(balance.time_beyond_limits.values())
+        found.numbers["net_power"][place] = balance.mean_net_power if kept else -np.inf
+        if kept:
+            balances[place] = balance
+        if len(balances) == FINALISTS:
+            break
+    if not balances:
+        raise NoAnswerError(f"the {answered} best choices break a limit at a reading of the log")
+    best = max(balances, key=lambda place: balances[place].mean_net_power)
+    struck = np.isneginf(found.numbers["net_power"][order])
+    rest = order[~struck & (order != best)]
+    sized = SizedDuty(balances[best], balances[best].conditions, len(measure.share), float(binned[best]), len(balances))
+    return np.concatenate([[best], rest]), sized
 
 
 def _without_window(case: Case, best: Estimate) -> float | None:

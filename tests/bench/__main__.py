@@ -1,10 +1,10 @@
 """Speeds beside their yardsticks, measured in one run: `python -m tests.bench [PART ...]`.
 
-PART is solver, checks, sizing, doubt, start_up or script; all of them without. Solver: 10,000 random designs of 20
-rows against one evaluation of both streams' properties and films over the same arrays; the time a design with the
-number of designs. Checks: what they add to a batch of estimates. Doubt: a sample and its indices against the solver
-alone. Script: what an engineer would write, one design at a time. Start-up: the commands against importing what they
-cannot do without.
+PART is solver, checks, sizing, duty_profile, sweeping, doubt, start_up or script; all of them without. Solver: 10,000
+random designs of 20 rows against one evaluation of both streams' properties and films over the same arrays; the time a
+design with the number of designs. Checks: what they add to a batch of estimates. Duty profile: a year of hours, reading
+included, against the solver. Doubt: a sample and its indices against the solver alone. Script: what an engineer would
+write, one design at a time. Start-up: the commands against importing what they cannot do without.
 """
 
 from __future__ import annotations
@@ -14,8 +14,10 @@ import resource
 import statistics
 import subprocess
 import sys
+import tempfile
 import time
 from collections.abc import Callable
+from datetime import datetime, timedelta
 from pathlib import Path
 from typing import Any
 
@@ -23,6 +25,7 @@ import numpy as np
 
 from harvest.model import estimate as estimating
 from harvest.model.batch import Batch
+from harvest.model.case import Case
 from harvest.model.design import Design, design, maximum_power_load
 from harvest.model.driven_flow import driven_batch, driven_sides
 from harvest.model.loads import MATCHED, MAXIMUM_POWER
@@ -32,9 +35,12 @@ from harvest.model.stack.solver import CHUNK_CELLS
 from harvest.physics.arrays import FloatArray
 from harvest.study import doubt as doubting
 from harvest.study.doubt import drawn_inputs
+from harvest.study.duty import duty, logged_batch
+from harvest.study.duty_log import read_duty_log
 from harvest.study.size import size
 from tests.bench.baseline import DEMO_DESIGNS, solve_plainly
 from tests.bench.random_designs import random_batch
+from tests.bench.sweeping import sweeping
 from tests.independent.stack import Load as ScriptLoad
 from tests.translation import case_text
 
@@ -214,6 +220,48 @@ def _doubt_of(path: Path) -> None:
     )
 
 
+def duty_profile() -> None:
+    """A year of hours from its CSV file against the solver on as many cases, and the time and memory of minutes."""
+    program = (
+        "import resource, sys, time\nfrom harvest import duty, load_case\ncase = load_case(sys.argv[1])\n"
+        "begun = time.perf_counter()\nfound = duty(case, sys.argv[2])\n"
+        "print(time.perf_counter() - begun, resource.getrusage(resource.RUSAGE_SELF).ru_maxrss)"
+    )
+    for name in ("genset-jacket-water", "genset-exhaust"):
+        path = EXAMPLE.with_name(f"{name}.toml")
+        case = load_case(path)
+        with tempfile.TemporaryDirectory() as folder:
+            log = Path(folder) / "log.csv"
+            log.write_text(random_log(case, 8760, 60), "utf-8")
+            values = read_duty_log(case, log).values
+            made = design(logged_batch(case, values)[0])
+            yardstick = best(lambda made=made: solve_stack(made.problem, made.load))  # type: ignore[misc]
+            reading = best(lambda log=log, case=case: read_duty_log(case, log))  # type: ignore[misc]
+            seconds = best(lambda log=log, case=case: duty(case, log))  # type: ignore[misc]
+            print(
+                f"duty, {name}, 8,760 hours: {1e3 * seconds:.0f} ms, reading {1e3 * reading:.0f} ms of it; the solver "
+                f"{1e3 * yardstick:.0f} ms; {seconds / yardstick:.2f} times (gate 3)"
+            )
+            if name == "genset-jacket-water":
+                log.write_text(random_log(case, 525_600, 1), "utf-8")
+                command = [sys.executable, "-c", program, str(path), str(log)]
+                done = subprocess.run(command, capture_output=True, text=True, check=True)
+                minutes, peak = map(float, done.stdout.split())
+                print(f"  a year of minutes: {minutes:.0f} s, {peak / 1024:.0f} MiB at most (gate 1024)")
+
+
+def random_log(case: Case, readings: int, minutes: int) -> str:
+    """Text of a log around a case's streams, no two readings the same."""
+    random = np.random.default_rng(5)
+    begin = datetime(2025, 1, 1)
+    hot = case.hot.inlet_temperature - 273.15 - random.uniform(0, 15, readings)
+    cold = case.cold.inlet_temperature - 273.15 - random.uniform(0, 10, readings)
+    rows = [
+        f"{(begin + timedelta(minutes=minutes * i)).isoformat()}, {hot[i]:.4f}, {cold[i]:.4f}" for i in range(readings)
+    ]
+    return "\n".join(["time, hot.inlet_temperature [degC], cold.inlet_temperature [degC]", *rows, ""])
+
+
 def start_up() -> None:
     """Processor time of commands against the imports that they cannot do without, other programs running or not."""
     python = sys.executable
@@ -246,6 +294,6 @@ def start_up() -> None:
 
 
 if __name__ == "__main__":
-    for part in (solver, checks, sizing, doubt, start_up, script):
+    for part in (solver, checks, sizing, duty_profile, sweeping, doubt, start_up, script):
         if len(sys.argv) == 1 or part.__name__ in sys.argv[1:]:
             part()

@@ -11,6 +11,9 @@ from harvest.model.case_fields import Declaration
 from harvest.model.results import ROW_RESULTS, SCALARS
 from harvest.report.memo.values import CodeText, Drawing, Group, Known, Said, Value, known_in, known_numbers, told
 
+OF_STUDIES = ("size", "sweep", "duty", "uncertainty")
+"""Sections of the case that tell what a study varies, and nothing of the design."""
+
 
 @dataclass(frozen=True)
 class CheckLine:

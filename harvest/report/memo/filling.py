@@ -25,6 +25,7 @@ from harvest.report.documents import case_document, estimate_document, size_docu
 from harvest.report.doubt_sheet import LITTLE, MEASUREMENTS, MOST_INPUTS, doubt_document
 from harvest.report.memo import drawings
 from harvest.report.memo.contents import (
+    OF_STUDIES,
     AssumptionLine,
     CheckLine,
     ComparedInput,
@@ -305,7 +306,7 @@ def _inputs(case: Case, scalars: Group, path: str) -> tuple[InputSection, ...]:
         value = value_at(case, field)
         if declaration.section is not None or value is None or field == "title":
             continue
-        if _is_of_study(field, declaration):
+        if field.partition(".")[0] in OF_STUDIES:
             continue
         given = _given(case.given, field)
         if given is None and (declaration.descriptive or not _applies(case, field, declaration)):
@@ -329,11 +330,6 @@ def _inputs(case: Case, scalars: Group, path: str) -> tuple[InputSection, ...]:
     return tuple(
         InputSection(name, DECLARATIONS[name].meaning.rstrip("."), tuple(lines)) for name, lines in sections.items()
     )
-
-
-def _is_of_study(path: str, declaration: Declaration) -> bool:
-    """Whether a field tells what a study varies, and nothing of the design."""
-    return declaration.form in ("axes", "tolerances") or path.startswith("size.")
 
 
 def _applies(case: Case, path: str, declaration: Declaration) -> bool:
@@ -544,7 +540,7 @@ def comparison(each: list[Contents], cases: list[Case], *, date: str, command: s
     ]
     differences = []
     for path, declaration in DECLARATIONS.items():
-        if declaration.section is not None or path == "title" or _is_of_study(path, declaration):
+        if declaration.section is not None or path.partition(".")[0] in ("title", *OF_STUDIES):
             continue
         texts = [_compared(case, path, declaration) for case in cases]
         if len(set(texts)) > 1:
