@@ -183,7 +183,7 @@ def known_fields() -> dict[str, Known]:
     known: dict[str, Any] = {}
     for path, declaration in DECLARATIONS.items():
         *parents, name = path.split(".")
-        if declaration.form in ("tables", "axes") or (parents and parents[0] in ("size", "sweep")):
+        if declaration.form == "tables" or path.partition(".")[0] in OF_STUDIES:
             continue
         inside = known
         for parent in parents:

@@ -22,7 +22,7 @@ and its `known` is false. Of the filters of Jinja2 there are
 """
 FIELDS = """
 `case` holds every field of the [case file](case-file.md) under its own name, by section; those with a unit are numbers,
-the others texts, empty where they are not given. Lists of tables and the sections of studies, such as `size`, are left out.
+the others texts, empty where they are not given. Lists of tables and sections of studies, such as `size`, are left out.
 """
 
 
