@@ -199,6 +199,16 @@ def test_a_hostile_title_is_text(title: str) -> None:
     assert "\n:::" not in made.markdown()
 
 
+def test_a_hostile_case_file_is_text() -> None:
+    source = "# </pre><script>alert(1)</script> ``` **x** {{ 7 }} #read(1)\n:::\n[hot]\x00\ue000"
+    made = memo(load_case(TEXTBOOK), date=DAY, without=QUICK, sources=(source,), command="x `y` </code><script>")
+    page = Page(made.html())
+    assert "script" not in page.tags
+    shown = "".join(words for where, words in page.words if "pre" in where)
+    assert shown == source.replace("\x00", " ").replace("\ue000", " ")
+    assert "````" in made.markdown()
+
+
 def test_a_case_that_fails_says_so_at_the_top(tmp_path: Path) -> None:
     case = replace(load_case(EXHAUST), {"limits.hot_face_temperature": 400.0})
     text = memo(case, date=DAY, without=QUICK).markdown()

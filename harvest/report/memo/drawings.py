@@ -470,4 +470,4 @@ def sensitivity_drawing(found: Doubt) -> Drawing:
         share = Value(each.first_order, "dimensionless", f"doubt.inputs[{i}].first_order", 2, "percent")
         canvas.text((WIDTH - 8, y + 11), share, size=10, anchor="end")
     canvas.line([(place(nominal), top - 4), (place(nominal), bottom)], INK, 1.2)
-    return canvas.drawing("Net power with each field alone at its 10th and its 90th percentile")
+    return canvas.drawing("Net power with each field alone at its P10 and at its P90, all others as they stand")

@@ -271,8 +271,8 @@ def _electricity(case: Case, scalars: Group, fields: Group) -> list[tuple[str, V
         ("lost in the converter", scalars.generated_power.less(scalars.converted_power)),
         ("converter standby", electrical.converter_standby_power),
         ("auxiliaries", electrical.auxiliary_power),
-        (f"hot {case.hot.drive or 'drive'}", scalars.hot_drive_power),
-        (f"cold {case.cold.drive or 'drive'}", scalars.cold_drive_power),
+        ("back pressure" if case.hot.drive == "engine" else f"hot {case.hot.drive}", scalars.hot_drive_power),
+        (f"cold {case.cold.drive}", scalars.cold_drive_power),
     ]
     kept = [(name, dataclasses.replace(value, digits=3)) for name, value in taken if abs(value.raw) > 0]
     return [("at the terminals", scalars.generated_power), *kept, ("net", scalars.net_power)]

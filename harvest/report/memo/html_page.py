@@ -64,7 +64,7 @@ def _block(block: Block) -> str:
     if isinstance(block, Code):
         return f"<pre>{escape(block.text)}</pre>"
     if isinstance(block, Figure):
-        return f"<figure>{block.drawing.svg}</figure>"
+        return f"<figure>{block.drawing.svg}<figcaption>{escape(block.drawing.words)}.</figcaption></figure>"
     return f'<div class="{escape(block.name)}">\n{html_body(block.blocks)}\n</div>'
 
 

@@ -52,7 +52,8 @@ BOXES = {
 }
 STYLES = {"strong": "strong", "emphasis": "emph", "sub": "sub", "sup": "super"}
 IN_BOXES = {"answer": "#show heading: it => text(17pt, it.body)\n"}
-DRAWING_WIDTH = "140mm"
+WIDEST_DRAWING, HIGHEST_DRAWING = 140.0, 100.0
+"""Sizes of drawings on the page [mm]."""
 LONG_CELL = 42
 MOST_ROWS_TOGETHER = 12
 
@@ -82,9 +83,16 @@ def pdf(blocks: Sequence[Block], title: str, date: str) -> bytes:
     return _compiled(text, list(drawings_in(blocks)), format="pdf", timestamp=int(moment.timestamp()))
 
 
+def drawing_width(drawing: Drawing) -> float:
+    """Width of a drawing on a page [mm]."""
+    return round(min(WIDEST_DRAWING, HIGHEST_DRAWING / drawing.slenderness), 1)
+
+
 def png(drawing: Drawing) -> bytes:
     """A drawing as an image, for a format that takes no SVG."""
-    text = f'#set page(width: {DRAWING_WIDTH}, height: auto, margin: 0pt)\n#image("/{drawing.name}.svg", width: 100%)'
+    text = (
+        f'#set page(width: {WIDEST_DRAWING}mm, height: auto, margin: 0pt)\n#image("/{drawing.name}.svg", width: 100%)'
+    )
     return _compiled(text, [drawing], format="png", ppi=220.0)
 
 
@@ -108,8 +116,10 @@ def _blocks(blocks: Sequence[Block], *, ruled: bool = True) -> Iterator[str]:
         elif isinstance(block, Code):
             yield f"#block(stroke: 0.5pt + luma(200), inset: 7pt, width: 100%, raw({_string(block.text)}, block: true))"
         elif isinstance(block, Figure):
-            image = f'image("/{block.drawing.name}.svg", width: {DRAWING_WIDTH}, alt: {_string(block.drawing.words)})'
-            yield f"#align(center, block(above: 1.2em, below: 1.2em, {image}))"
+            width = drawing_width(block.drawing)
+            image = f'image("/{block.drawing.name}.svg", width: {width}mm, alt: {_string(block.drawing.words)})'
+            caption = f"text(8.5pt, fill: luma(90), [{_text(block.drawing.words + '.')}])"
+            yield f"#align(center, block(above: 1.2em, below: 1.2em, breakable: false, {image} + {caption}))"
         else:
             inside = "\n\n".join(_blocks(block.blocks, ruled=block.name != "facts"))
             yield f"#block({BOXES.get(block.name, 'width: 100%')})[\n{IN_BOXES.get(block.name, '')}{inside}\n]"

@@ -137,7 +137,7 @@ class Canvas:
             f'<svg xmlns="http://www.w3.org/2000/svg" viewBox="0 0 {size}" role="img" aria-label={quoteattr(words)} '
             f"font-family={quoteattr(FONT)}>{defined}{''.join(self.parts)}</svg>"
         )
-        return Drawing(self.name, svg, words)
+        return Drawing(self.name, svg, words, self.height / self.width)
 
 
 def attributes(named: dict[str, str]) -> str:

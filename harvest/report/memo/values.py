@@ -155,11 +155,12 @@ class CodeText:
 
 @dataclass(frozen=True)
 class Drawing:
-    """A drawing as SVG, with the words that stand for it."""
+    """A drawing as SVG, with the words that stand for it and its height over its width."""
 
     name: str
     svg: str
     words: str
+    slenderness: float
 
 
 class Group:

@@ -24,11 +24,10 @@ from harvest.report.memo.markup import (
     Table,
     is_to_fill_in,
 )
-from harvest.report.memo.pdf_page import png, typst_library
+from harvest.report.memo.pdf_page import drawing_width, png, typst_library
 from harvest.report.memo.values import Drawing
 
 ZIP_DATE = (1980, 1, 1, 0, 0, 0)
-DRAWING_MM = 140
 FILLS = {"failed": "FDF1EA", "warning": "FDF6E6", "answer": "F4F4F2"}
 SVG_EXTENSION = "{96DAC541-7B7A-43D3-8B79-37D633B846F1}"
 
@@ -122,6 +121,7 @@ class _Writer:
                 self.code(into.add_paragraph(), block.text)
             elif isinstance(block, Figure):
                 self.figure(into.add_paragraph(), block.drawing)
+                self.caption(into.add_paragraph(), f"{block.drawing.words}.")
             else:
                 self.box(block, into)
 
@@ -205,6 +205,13 @@ class _Writer:
                     run.font.size = Pt(8.5)
         into.add_paragraph()
 
+    def caption(self, paragraph: Any, words: str) -> None:
+        from docx.enum.text import WD_ALIGN_PARAGRAPH
+        from docx.shared import Pt
+
+        paragraph.alignment = WD_ALIGN_PARAGRAPH.CENTER
+        paragraph.add_run(words).font.size = Pt(8.5)
+
     def figure(self, paragraph: Any, drawing: Drawing) -> None:
         """An image, and beside it the drawing itself for readers that take SVG."""
         from docx.enum.text import WD_ALIGN_PARAGRAPH
@@ -215,7 +222,7 @@ class _Writer:
         from docx.shared import Mm
 
         paragraph.alignment = WD_ALIGN_PARAGRAPH.CENTER
-        picture = paragraph.add_run().add_picture(io.BytesIO(png(drawing)), width=Mm(DRAWING_MM))
+        picture = paragraph.add_run().add_picture(io.BytesIO(png(drawing)), width=Mm(drawing_width(drawing)))
         picture._inline.docPr.set("descr", drawing.words)
         package = self.document.part.package
         number = sum(1 for _ in self.document.inline_shapes)
