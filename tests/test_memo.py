@@ -332,6 +332,7 @@ def test_library_and_command(tmp_path: Path) -> None:
     [
         ([], "no case is given"),
         ([str(WATER)], "no output is given"),
+        ([str(WATER), "-o", "no-folder/memo.html"], "there is no folder no-folder"),
         ([str(WATER), "-o", "memo.txt"], "ends in .html, .md, .pdf, .docx"),
         ([str(WATER), "-o", "memo.html", "--date", "yesterday"], "yesterday is no date"),
         ([str(WATER), "-o", "memo.html", "--template", "nothing"], "no file or folder and no shipped template"),

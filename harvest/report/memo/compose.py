@@ -83,10 +83,15 @@ class Memo:
 
 
 def format_of(path: str | Path) -> str:
-    """Format of a memo's file by its suffix; raises InputError, MissingExtraError where a library is missing."""
-    suffix = Path(path).suffix.lower()
+    """Format of a memo's file by its suffix; raises, before anything is computed, what would keep it from being written.
+
+    Raises InputError for another suffix or a folder that is not there, MissingExtraError where a library is missing.
+    """
+    folder, suffix = Path(path).parent, Path(path).suffix.lower()
     if suffix not in FORMATS:
         raise InputError(f"{path}: a memo ends in {', '.join(FORMATS)}")
+    if not folder.is_dir():
+        raise InputError(f"{path}: cannot be written (there is no folder {folder})")
     if suffix == ".pdf":
         from harvest.report.memo.pdf_page import typst_library
 
