@@ -83,7 +83,7 @@ class Memo:
 
 
 def format_of(path: str | Path) -> str:
-    """Format of a memo's file by its suffix; raises, before anything is computed, what would keep it from being written.
+    """Format of a memo's file by its suffix, with what would keep it from being written.
 
     Raises InputError for another suffix or a folder that is not there, MissingExtraError where a library is missing.
     """
