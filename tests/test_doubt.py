@@ -19,8 +19,9 @@ from harvest.cli import cli
 from harvest.errors import CaseError, InputError, NoAnswerError
 from harvest.model.batch import Batch
 from harvest.model.case import DECLARATIONS, Case, case_hash, value_at
-from harvest.model.estimate import estimate_batch, search_batch
+from harvest.model.estimate import estimate_batch
 from harvest.model.reading import load_case, read_case, replace
+from harvest.model.search import search_batch
 from harvest.model.tolerances import FACTOR, NORMAL, UNIFORM, Tolerance
 from harvest.physics.arrays import FloatArray
 from harvest.report.doubt_sheet import chance_text, doubt_report

@@ -16,8 +16,9 @@ from harvest.errors import CaseError, InputError
 from harvest.model.batch import Batch
 from harvest.model.case import DECLARATIONS, Case, value_at
 from harvest.model.case_fields import Declaration
-from harvest.model.estimate import Outcomes, estimate, search_batch
+from harvest.model.estimate import estimate
 from harvest.model.reading import load_case, replace
+from harvest.model.search import Outcomes, search_batch
 from harvest.quantities import example_of, parse_quantity
 from harvest.study.sweep import SweepPart, SweepPlan, planned, varied_field, with_axes
 

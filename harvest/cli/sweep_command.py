@@ -111,4 +111,4 @@ def sweep(
 
         click.echo(sweep_report(plan, found))
     if not found.valid:
-        raise NoAnswerError(f"no combination has an answer: {'; '.join(found.reasons)}")
+        raise NoAnswerError(f"no combination has an answer: {'; '.join(found.reasons.sums)}")

@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import json
-import re
 import struct
 from collections import Counter
 from collections.abc import Generator, Mapping
@@ -35,6 +34,7 @@ from harvest.report.tables import (
     write_netcdf,
     write_parquet,
 )
+from harvest.study.reasons import Reasons
 from harvest.study.runs import Journal, Progress, run_chunks
 from harvest.study.sweep import SweepPart, SweepPlan, is_structure, planned, with_axes
 from harvest.version import VERSION
@@ -54,7 +54,7 @@ class SweepFindings:
 
     combinations: int
     valid: int = 0
-    reasons: dict[str, int] = field(default_factory=dict)
+    reasons: Reasons[int] = field(default_factory=lambda: Reasons(MOST_REASONS))
     best: dict[str, Any] = field(default_factory=dict)
     kept: dict[str, FloatArray] = field(default_factory=dict)
 
@@ -64,23 +64,13 @@ class SweepFindings:
         answered = columns["valid"]
         self.valid += int(answered.sum())
         for text, count in Counter(problem[~answered].tolist()).items():
-            self._note(text, count)
+            self.reasons.add(text, count)
         if answered.any():
             place = int(np.nanargmax(net))
             if not self.best or net[place] > self.best["net_power"]:
                 self.best = {name: _plain(values[place]) for name, values in columns.items()}
         for name, whole in self.kept.items():
             whole[places] = columns[name]
-
-    def _note(self, text: str, count: int) -> None:
-        """Count a reason; those that differ in numbers only are one."""
-        alike = re.sub(r"-?\d[\d.e+-]*", "#", text)
-        for known in self.reasons:
-            if re.sub(r"-?\d[\d.e+-]*", "#", known) == alike:
-                self.reasons[known] += count
-                return
-        known = text if len(self.reasons) < MOST_REASONS else "other reasons"
-        self.reasons[known] = self.reasons.get(known, 0) + count
 
 
 def _plain(value: Any) -> Any:

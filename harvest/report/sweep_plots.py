@@ -10,7 +10,7 @@ import numpy as np
 from harvest.errors import InputError, NoAnswerError
 from harvest.model.batch import Batch
 from harvest.model.case import DECLARATIONS, value_at
-from harvest.model.estimate import search_batch
+from harvest.model.search import search_batch
 from harvest.physics.arrays import FloatArray
 from harvest.quantities import format_quantity, unit_of
 from harvest.report.plots import BLUE, GREEN, VERMILION, new_figure

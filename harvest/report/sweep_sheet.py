@@ -42,9 +42,9 @@ def sweep_report(plan: SweepPlan, found: SweepFindings) -> str:
             value = found.best[path]
             lines.append(f"  {path} = {value if plan.axes[path].labels else display(value, DECLARATIONS[path])}")
         lines.append("Limits and checks are not judged here; harvest estimate judges them.")
-    if found.reasons:
+    if found.reasons.sums:
         lines.append(heading("Without an answer"))
-        lines += [wrapped(f"  {count:,}: ", text, rest="      ") for text, count in found.reasons.items()]
+        lines += [wrapped(f"  {count:,}: ", text, rest="      ") for text, count in found.reasons.sums.items()]
     return "\n".join(lines)
 
 
@@ -55,7 +55,7 @@ def sweep_document(plan: SweepPlan, table: Table, found: SweepFindings, output: 
             "output": output,
             "combinations": found.combinations,
             "valid": found.valid,
-            "reasons": found.reasons,
+            "reasons": found.reasons.sums,
             "best": found.best or None,
             "columns": [
                 {"name": column.name, "header": column.header, "meaning": column.meaning, "form": column.form}

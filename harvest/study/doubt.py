@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import dataclasses
-import re
 from collections.abc import Callable, Iterator
 from dataclasses import dataclass, field
 
@@ -12,14 +11,15 @@ import numpy as np
 from harvest.errors import InputError, NoAnswerError
 from harvest.model.batch import Batch
 from harvest.model.case import DECLARATIONS, Case, value_at
-from harvest.model.design import BETWEEN, SPEC_NUMBERS, stream_excess_air_ratio
-from harvest.model.estimate import SEARCH_CELLS, Outcomes, search_batch
+from harvest.model.design import SPEC_NUMBERS, stream_excess_air_ratio
+from harvest.model.search import SEARCH_CELLS, Outcomes, search_batch
 from harvest.model.stream_sections import HEAT_SINK
 from harvest.model.tolerances import FACTOR, NONE, UNIFORM, Tolerance
-from harvest.physics.arrays import FloatArray, IntArray, ObjectArray
+from harvest.physics.arrays import FloatArray, IntArray
 from harvest.quantities import StandardVolumeFlow
 from harvest.study.common_tolerances import COMMON_TOLERANCES
 from harvest.study.limits import LIMITS, WITHOUT_LOAD, limit_of
+from harvest.study.reasons import counted_reasons
 
 SAMPLES = 4096
 FEWEST_SAMPLES, MOST_SAMPLES = 64, 2**16
@@ -399,7 +399,7 @@ def doubt(case: Case, samples: int = SAMPLES, seed: int = SEED, progress: Progre
     found = answered(case, inputs, at(probabilities(len(inputs), samples, seed)))
     valid = found.problem == ""
     if not valid.any():
-        raise NoAnswerError("\n".join(["no drawn case has an answer", *_counted(found.problem)]))
+        raise NoAnswerError("\n".join(["no drawn case has an answer", *counted_reasons(found.problem)]))
     if progress is not None:
         progress(samples, all_of_them)
     shares = indices(
@@ -426,7 +426,7 @@ def doubt(case: Case, samples: int = SAMPLES, seed: int = SEED, progress: Progre
         samples=samples,
         seed=seed,
         valid=int(valid.sum()),
-        invalid=_counted(found.problem),
+        invalid=counted_reasons(found.problem),
         index_samples=index_samples,
         index_cases=shares.cases,
         index_invalid=shares.invalid,
@@ -491,15 +491,3 @@ def _chances(case: Case, nominal: dict[str, float], scalars: dict[str, FloatArra
         if np.isfinite(limit):
             chance = float((sign * scalars[result] > sign * limit).mean())
             yield LimitChance(name, result, limit, nominal[result], chance)
-
-
-def _counted(problems: ObjectArray) -> dict[str, int]:
-    """Count reasons of cases without an answer, the most frequent first; those that differ in numbers only are one."""
-    texts: dict[str, str] = {}
-    counts: dict[str, int] = {}
-    for problem in problems[problems != ""]:
-        reason = str(problem).split(BETWEEN)[0]
-        key = re.sub(r"-?\d[\d.e+-]*", "#", reason)
-        texts.setdefault(key, reason)
-        counts[key] = counts.get(key, 0) + 1
-    return {texts[key]: counts[key] for key in sorted(counts, key=lambda each: -counts[each])}

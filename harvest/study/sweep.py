@@ -22,9 +22,10 @@ from harvest.model.case_rules import ALTERNATIVES
 from harvest.model.case_text import toml_value
 from harvest.model.checks import FAIL, WARN
 from harvest.model.design import BETWEEN
-from harvest.model.estimate import SEARCHED, SEARCHED_WITHOUT_LOAD, estimate_batch, search_batch
+from harvest.model.estimate import estimate_batch
 from harvest.model.reading import NUMBERS, replace
 from harvest.model.results import OF_SEARCHES, SCALARS
+from harvest.model.search import SEARCHED, SEARCHED_WITHOUT_LOAD, search_batch
 from harvest.model.study_sections import MOST_COMBINATIONS
 from harvest.physics.arrays import FloatArray, IntArray, ObjectArray
 from harvest.study.limits import asks_without_load
