@@ -15,6 +15,7 @@ from harvest.report.documents import plain
 from harvest.report.layout import WIDTH, heading, table, wrapped
 from harvest.report.terminal import title
 from harvest.study.doubt import WORTHWHILE
+from harvest.study.limits import WINDOW, limit_path
 from harvest.version import VERSION
 
 if TYPE_CHECKING:
@@ -129,11 +130,12 @@ def _limits(found: Doubt) -> list[str]:
         return []
     lines = []
     for each in found.limits:
-        kind = DECLARATIONS[f"limits.{each.limit}"].kind
+        kind = DECLARATIONS[limit_path(each.limit)].kind
         limit, nominal = format_quantity(each.value, kind), format_quantity(each.nominal, kind)
         chance = chance_text(each.chance, found.valid)
-        lines.append(wrapped(f"  {each.limit}: ", f"{limit} is broken {chance}; {nominal} as it stands", rest="      "))
-    return [heading("Limits, at the chosen load"), *lines]
+        said = f"{each.bound} {limit}, broken {chance}; {nominal} as it stands"
+        lines.append(wrapped(f"  {each.limit}: ", said, rest="      "))
+    return [heading("Limits, at the chosen load but for those without load"), *lines]
 
 
 def _value(each: UncertainInput) -> str:
@@ -229,6 +231,15 @@ def doubt_report(case: Case, found: Doubt) -> str:
                 "Caution: ",
                 f"{found.samples - found.valid:,} of {found.samples:,} cases have no answer, so the percentiles tell "
                 "of the others only.",
+            )
+        )
+    outside = sum(each.chance for each in found.limits if each.limit == WINDOW)
+    if outside > 0.0 and case.electrical.load != "maximum power":
+        lines.append(
+            wrapped(
+                "Caution: ",
+                f"the terminals are outside the converter's window {chance_text(outside, found.valid)}; the net power "
+                "is that of a converter which would work there too.",
             )
         )
     parts = (_measuring, _results, _limits, _inputs, _sources, _sample)
