@@ -211,6 +211,25 @@ def test_a_fault_is_a_row_that_says_why() -> None:
     assert np.isfinite(found.numbers["net_power"][found.problem == ""]).all()
 
 
+@pytest.mark.parametrize("sample", [None, 4096])
+def test_a_structure_that_one_count_makes_valid_is_found(sample: int | None) -> None:
+    """Blocks of 96 and 100 rows need 196 rows, one of 200 numbers, which no even choice of few need hit."""
+    axes = {"stack.rows": {"from": 1, "to": 200, "step": 1}, "electrical.row_blocks": [[96, 100], [4, 4], [7, 400]]}
+    found = planned(with_axes(load_case(EXAMPLES / "genset-jacket-water.toml"), axes, sample=sample))
+    part = found.solved(np.arange(found.count))
+    values = found.at(np.arange(found.count))
+    valid = part.problem == ""
+    fits = ((values["stack.rows"] == 196) & (values["electrical.row_blocks"] == 0)) | (
+        (values["stack.rows"] == 8) & (values["electrical.row_blocks"] == 1)
+    )
+    assert fits.any()
+    assert (valid == fits).all()
+    assert set(part.problem[values["electrical.row_blocks"] == 2]) == {
+        "none of 265 combinations tried makes a valid case, the first because of electrical.row_blocks: adds up to 407 "
+        "rows, and the stack has 8"
+    }
+
+
 @pytest.mark.parametrize("sequence", ["Sobol", "Halton"])
 def test_a_sample_is_even_and_repeatable(sequence: str) -> None:
     axes = {
