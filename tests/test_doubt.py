@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import dataclasses
 import json
+import re
 import subprocess
 import sys
 from pathlib import Path
@@ -153,6 +154,19 @@ def test_a_converter_that_keeps_its_window_is_not_told_to_break_it() -> None:
     case = load_case(LOOP, ['electrical.converter_window=["21.6 V", "21.7 V"]'])
     found = doubt(case, samples=256)
     assert {each.chance for each in found.limits if each.limit == "converter_window"} == {0.0}
+
+
+def test_the_report_says_how_sure_its_shares_are() -> None:
+    """The widest interval of the JSON; few cases rank nothing."""
+    case = load_case(LOOP)
+    for samples, coarse in ((256, True), (4096, False)):
+        found = doubt(case, samples)
+        widest = max(high - low for each in found.inputs for low, high in (each.first_order_interval,))
+        report = " ".join(doubt_report(case, found).split())
+        told = re.search(r"may be off by up to (\d+) points of 100", report)
+        assert told is not None
+        assert int(told[1]) == pytest.approx(50.0 * widest, abs=1.0)
+        assert ("take more --samples" in report) == coarse
 
 
 def ishigami(points: FloatArray) -> FloatArray:

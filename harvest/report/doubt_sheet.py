@@ -25,6 +25,8 @@ MOST_INPUTS = 12
 """Inputs that stand in the table; the others are summed up."""
 LITTLE = 0.005
 """Share of the variance below which an input is nothing."""
+COARSE = 0.1
+"""Share of the variance by which shares may be off before they rank nothing."""
 MANY_INVALID = 0.05
 """Share of cases without an answer from which the percentiles are not to be trusted."""
 
@@ -177,7 +179,20 @@ def _inputs(found: Doubt) -> list[str]:
             "they stand. +- holds 95 of 100 values of a normal distribution, a factor those of a log-normal one.",
         )
     )
-    return lines
+    return [*lines, wrapped("  ", sureness_of_shares(found))]
+
+
+def sureness_of_shares(found: Doubt) -> str:
+    """How far shares that are estimated from a sample may be off, in words."""
+    intervals = [each for one in found.inputs for each in (one.first_order_interval, one.total_interval)]
+    off = max(0.5 * (high - low) for low, high in intervals)
+    if off == 0.0:
+        return "With one input there is nothing to share out."
+    advice = "; that is too coarse for a ranking, so take more --samples" if off > COARSE else ""
+    return (
+        f"Shares are estimated from the sample: they may be off by up to {np.ceil(100.0 * off):.0f} points of 100 (95 "
+        f"% interval by resampling; --json has that of each){advice}."
+    )
 
 
 def _sources(found: Doubt) -> list[str]:
