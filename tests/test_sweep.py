@@ -211,6 +211,18 @@ def test_a_fault_is_a_row_that_says_why() -> None:
     assert np.isfinite(found.numbers["net_power"][found.problem == ""]).all()
 
 
+def test_a_curve_is_varied_as_a_number() -> None:
+    """The case gives a polynomial; each value is the estimate with that number in its place."""
+    case = load_case(EXAMPLES / "textbook-array.toml", ['module.seebeck=["0.14 V/K", "1e-4 V/K^2"]'])
+    axis = {"module.seebeck": {"from": "0.04 V/K", "to": "0.05 V/K", "points": 2}}
+    found = solved(planned(with_axes(case, axis)))
+    for place, seebeck in enumerate(("0.04 V/K", "0.05 V/K")):
+        single = estimate(replace(case, {"module.seebeck": seebeck}))
+        assert found.numbers["net_power"][place] == pytest.approx(single.net_power, rel=1e-12)
+    with pytest.raises(CaseError, match=r"module.seebeck: is given beside \[module.legs\]"):
+        planned(with_axes(load_case(JACKET), axis))
+
+
 @pytest.mark.parametrize("sample", [None, 4096])
 def test_a_structure_that_one_count_makes_valid_is_found(sample: int | None) -> None:
     """Blocks of 96 and 100 rows need 196 rows, one of 200 numbers, which no even choice of few need hit."""
@@ -358,6 +370,7 @@ def test_forms_of_an_axis() -> None:
         ("hot.mass_flow=0.1 kg/s:0.2 kg/s:3:4", "has 4 parts between colons"),
         ("hot.mass_flow=0.1 kg/s, 0.1 kg/s", "twice; give each value once"),
         ("cold.fluid=water, mud", "sweep.cold.fluid: "),
+        ("hot.mass_flow=0.1 kg/s:0.1 kg/s:3", 'from "0.1 kg/s" to the same value; give one value as a list'),
         ("stack.rows=4:20:6", "do not fall on whole numbers"),
         ("stack.rows", "is not FIELD=VALUES"),
         ("hot.duct.sink_height=1 mm, 2 mm", "no combination makes a valid case"),

@@ -199,6 +199,12 @@ def command(output: Path, *more: str) -> list[str]:
     return [sys.executable, "-m", "harvest", "sweep", str(EXHAUST), *AXES, "-o", str(output), *more]
 
 
+def test_a_field_that_is_varied_twice_is_refused() -> None:
+    told = run("--vary", "hot.mass_flow=0.1 kg/s, 0.2 kg/s", "--vary", "hot.mass_flow=0.3 kg/s")
+    assert told.exit_code == 2
+    assert "--vary hot.mass_flow: is given twice; give all its values at once" in told.stderr
+
+
 def killed_until_done(output: Path, waits: Iterator[float], *more: str) -> int:
     """Kill a sweep at moments, resume it each time, and let the last one end; how often it was killed."""
     kills = 0

@@ -57,7 +57,11 @@ def sweep(
 
     if resume and output is None:
         raise InputError("--resume: goes on with an output; give -o FILE too")
-    axes = dict(map(varied_field, vary))
+    axes: dict[str, Any] = {}
+    for field, axis in map(varied_field, vary):
+        if field in axes:
+            raise InputError(f"--vary {field}: is given twice; give all its values at once")
+        axes[field] = axis
     varied = with_axes(loaded, axes, sample=sample, sequence=sequence, seed=seed, option="--vary")
     plan = planned(varied, full=full)
     from harvest.report.sweep_files import is_finished, print_sweep, sweep_table, write_sweep

@@ -27,6 +27,7 @@ from harvest.model.reading import NUMBERS, replace
 from harvest.model.results import OF_SEARCHES, SCALARS
 from harvest.model.study_sections import MOST_COMBINATIONS
 from harvest.physics.arrays import FloatArray, IntArray, ObjectArray
+from harvest.quantities import unit_of
 from harvest.study.limits import asks_without_load
 from harvest.version import VERSION
 
@@ -368,8 +369,12 @@ def _counts(plan: SweepPlan, numbers: Sequence[str]) -> Iterator[dict[str, float
         yield {path: values[index] for (path, values), index in zip(counts.items(), indices, strict=True)}
 
 
-def _typed(path: str, value: float) -> float | int:
-    return int(value) if DECLARATIONS[path].form == "integer" else float(value)
+def _typed(path: str, value: float) -> float | int | str:
+    """Write a number as a case takes it: one that may also be a curve stands with its unit."""
+    declaration = DECLARATIONS[path]
+    if declaration.form == "integer":
+        return int(value)
+    return float(value) if declaration.form != "curve" else f"{float(value)!r} {unit_of(declaration.kind)}"
 
 
 def _without_use(plan: SweepPlan, structure: Mapping[str, Any]) -> list[str]:
