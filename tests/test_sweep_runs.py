@@ -199,6 +199,20 @@ def command(output: Path, *more: str) -> list[str]:
     return [sys.executable, "-m", "harvest", "sweep", str(EXHAUST), *AXES, "-o", str(output), *more]
 
 
+def test_a_finished_sweep_still_gives_its_plot_and_document(tmp_path: Path) -> None:
+    path, plot = tmp_path / "out.csv", tmp_path / "out.svg"
+    few = ["--vary", "hot.mass_flow=0.08 kg/s:0.1 kg/s:3", "-o", str(path), "--resume"]
+    first = run(*few, "--json")
+    content = path.read_bytes()
+    again = run(*few, "--json", "--plot", str(plot))
+    assert (first.exit_code, again.exit_code) == (0, 0)
+    assert json.loads(again.stdout) == json.loads(first.stdout)
+    assert "is finished already; solved again" in again.stderr
+    assert "the case" in plot.read_text()
+    assert path.read_bytes() == content
+    assert "nothing is left to do" in run(*few).stderr
+
+
 def test_a_field_that_is_varied_twice_is_refused() -> None:
     told = run("--vary", "hot.mass_flow=0.1 kg/s, 0.2 kg/s", "--vary", "hot.mass_flow=0.3 kg/s")
     assert told.exit_code == 2
