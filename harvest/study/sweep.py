@@ -26,9 +26,9 @@ from harvest.model.estimate import SEARCHED, SEARCHED_WITHOUT_LOAD, estimate_bat
 from harvest.model.reading import NUMBERS, replace
 from harvest.model.results import OF_SEARCHES, SCALARS
 from harvest.model.study_sections import MOST_COMBINATIONS
-from harvest.physics.arrays import FloatArray, IntArray, ObjectArray
+from harvest.physics.arrays import BoolArray, FloatArray, IntArray, ObjectArray
 from harvest.quantities import unit_of
-from harvest.study.limits import asks_without_load
+from harvest.study.limits import asks_without_load, broken_limits
 from harvest.version import VERSION
 
 CHUNK_CELLS = 25_000
@@ -171,6 +171,21 @@ class SweepPlan:
             for name, words in found.texts.items():
                 texts[name][which] = words
         return SweepPart(numbers, texts, problem)
+
+    def refused(self, places: IntArray, part: SweepPart) -> BoolArray:
+        """Whether solved combinations are beyond a limit of their case or, where all are made, fail a check."""
+        if self.full:
+            return np.asarray(part.texts["failed_checks"] != "")
+        refused = np.zeros(len(places), dtype=bool)
+        structure = _structure_of(self.axes, self.at(places), len(places))
+        for each in np.unique(structure):
+            which, base = np.flatnonzero(structure == each), self.bases[each]
+            if isinstance(base, Case):
+                for broken in broken_limits(
+                    base, {name: values[which] for name, values in part.numbers.items()}
+                ).values():
+                    refused[which] |= broken
+        return refused
 
     def digest(self) -> str:
         """SHA-256 of everything that the table's values depend on."""
