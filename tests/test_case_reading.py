@@ -587,3 +587,13 @@ def test_names_with_line_ends_stay_in_one_line() -> None:
 def test_no_text_gives_anything_but_faults(text: str) -> None:
     with pytest.raises(CaseError):
         read_case(text)
+
+
+def test_whole_names_may_stand_in_quotes_after_set_as_in_the_file() -> None:
+    example = Path(__file__).parents[1] / "examples" / "genset-jacket-water.toml"
+    bare, quoted = (
+        load_case(example, [f'size.{name}=["2 mm", "3 mm"]', "size.rows=[4]"])
+        for name in ("hot.duct.gap", '"hot.duct.gap"')
+    )
+    assert quoted.size == bare.size
+    assert quoted.size is not None and quoted.size.fields == {"hot.duct.gap": (0.002, 0.003)}

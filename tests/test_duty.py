@@ -364,7 +364,7 @@ def test_a_log_that_runs_backwards_is_read_from_its_end(jacket: Case) -> None:
     np.testing.assert_array_equal(back.time[::-1], ahead.time)
     np.testing.assert_array_equal(back.duration[::-1], ahead.duration)
     assert noted(back) == [(2, "out of order"), (4, "clock changed")]
-    with pytest.raises(CaseError, match="0 readings are left"):
+    with pytest.raises(CaseError, match="0 of its readings can be used"):
         read_duty_log(case, written([("x", 80), ("y", 81)], header))
 
 
@@ -444,8 +444,8 @@ def test_a_bad_reading_is_told_by_its_line(jacket: Case, row: str, kind: str, te
             "site.ambient_pressure: cannot change",
         ),
         ("time, hot.pressure [Pa], hot.duct.gap [mm]\n2026-01-01,1,80\n", "hot.duct.gap: cannot change in a log"),
-        ("time, hot.inlet_temperature [degC]\n2026-01-01,80\n", "1 readings are left with a time of their own"),
-        ("time, hot.inlet_temperature [degC]\n2026-01-01,a\n2026-01-02,b\n", '0 readings are left .*\n.*:2: .*"a"'),
+        ("time, hot.inlet_temperature [degC]\n2026-01-01,80\n", "1 of its readings can be used"),
+        ("time, hot.inlet_temperature [degC]\n2026-01-01,a\n2026-01-02,b\n", '0 of its readings .*\n.*:2: .*"a"'),
         ("time, hot.inlet_temperature [degC]\n", "has a header and no readings"),
         ("hours [h], hot.table [K]\n1,2\n", "hot.table: cannot change in a log"),
     ],
@@ -658,3 +658,76 @@ def test_the_table_is_written_with_units(tmp_path: Path, suffix: str) -> None:
         assert "net_power [W]" in header and header.endswith("valid,problem")
         assert len(rows) == 7
         assert rows[3].startswith("5,2026-03-02T03:00:00,0.0,,") and "false" in rows[3] and "finite number" in rows[3]
+
+
+WEEK = EXAMPLES / "genset-week.toml"
+
+
+def said(result: Result) -> str:
+    return " ".join(result.output.split())
+
+
+@pytest.mark.parametrize("bad", ["1e300", "1e9"])
+@pytest.mark.parametrize("column", ["hours [h]", "time [h]"])
+def test_times_beyond_a_century_are_left_out(column: str, bad: str) -> None:
+    """A slip of the unit made a year of infinite energy, paid back at once."""
+    good = run("duty", str(WEEK), "-", "--json", text=f"{column}, hot.inlet_temperature [degC]\n1, 90\n2, 80\n")
+    log = f"{column}, hot.inlet_temperature [degC]\n1, 90\n2, 80\n{bad}, 70\n"
+    result = run("duty", str(WEEK), "-", "--json", text=log)
+    document = json.loads(result.stdout)
+    assert document["net_energy"] == json.loads(good.stdout)["net_energy"]
+    assert document["log"]["note_counts"] == {"out of range": 1}
+    assert f"{float(bad):g} h" in document["log"]["notes"][0]["text"]
+
+
+def test_a_log_without_any_reading_says_why() -> None:
+    result = run("duty", str(WEEK), "-", text="hours [h], hot.inlet_temperature [degC]\n1e12, 90\n-3, 80\n")
+    assert result.exit_code == 1
+    assert "no reading is left" in result.output
+    assert "record:2: hours: 1e+12 h is more than 1,000,000 h: left out" in result.output
+    assert "record:3: hours: -3 h is below zero: left out" in result.output
+
+
+def test_decimal_commas_between_commas_are_one_fault_with_its_remedy() -> None:
+    lines = "\n".join(f"2026-02-02T{hour:02d}:00,{70 + hour},5,{60 + hour},5" for hour in range(24))
+    result = run("duty", str(WEEK), "-", text=f"{HEADER}\n{lines}\n")
+    assert result.exit_code == 2
+    assert "5 values for 3 columns, and 23 more like it; decimals are written with a point" in result.output
+    assert len(result.output.splitlines()) == 2
+    strict = run("duty", str(JACKET), "-", "--strict", text=f'{HEADER}\n2026-02-02T00:00,"70,5",60\n' + lines)
+    assert strict.exit_code == 2 and strict.output.count("decimals are written with a point") == 1
+
+
+def test_two_flows_of_a_side_are_one_too_many() -> None:
+    log = "time [h], hot.volume_flow [L/min], hot.mass_flow [kg/s]\n0, 60, 1\n1, 60, 1\n"
+    result = run("duty", str(WEEK), "-", text=log)
+    assert result.exit_code == 2
+    assert "record: hot.mass_flow and hot.volume_flow are one flow; leave one column of them" in result.output
+
+
+def test_a_year_is_not_told_by_streams_that_never_flow() -> None:
+    """The week states yearly_operation, and here nothing flows that could be scaled to it."""
+    log = "hours [h], hot.volume_flow [L/min]\n24, 0\n"
+    text = said(run("duty", str(WEEK), "-", text=log))
+    assert "The streams never flow together in this log" in text
+    assert "The year has 8760 h like the time with an answer, 24.00 h." in text
+    assert "like the time in which the streams flow" not in text
+
+
+def test_bins_of_more_than_a_year_are_asked_about() -> None:
+    log = "hours [h], hot.inlet_temperature [degC]\n5000, 90\n{}, 80\n"
+    assert "more than a year: is that meant?" in said(run("duty", str(WEEK), "-", text=log.format(5500)))
+    assert "more than a year" not in said(run("duty", str(WEEK), "-", text=log.format(3760)))
+
+
+def test_a_payback_beyond_the_years_of_use_or_with_interest_says_so() -> None:
+    text = said(run("duty", str(WEEK)))
+    balance = duty(load_case(WEEK))
+    assert f"paid back in {balance.payback_years:.1f} years, longer than the 10 years of use." in text
+    options = ("--set", "cost.years=80", "--set", "cost.discount_rate=0.03")
+    assert f"{balance.payback_years:.1f} years without interest." in said(run("duty", str(WEEK), *options))
+
+
+def test_one_is_singular() -> None:
+    text = said(run("duty", str(JACKET), "-", text="time [h], hot.inlet_temperature [degC]\n0, 90\n1, bad\n2, 90\n"))
+    assert "The log has 1 odd reading; what was done" in text and "unreadable, 1 time: left out" in text

@@ -219,3 +219,46 @@ def test_wirings_are_searched_over_a_log_too() -> None:
     again = duty(searched.best_case, log)
     assert again.net_energy == searched.duty.balance.net_energy
     assert searched.arrangement.net_power == pytest.approx(again.mean_net_power, rel=1e-12)
+
+
+def test_of_wirings_that_give_the_same_over_a_log_one_below_60_volts_is_taken() -> None:
+    """Without mismatch the 16 rows give the same in strings of 16 and of 32, of which those of 32 stand at 77 V."""
+    week = load_case(EXAMPLES / "genset-week.toml", ["size.rows=[16]", "size.columns=[4]", "size.layers=[8]"])
+    given, searched = (size(replace(week, {"size.wiring": wiring})) for wiring in ("as given", "search"))
+    assert given.duty is not None and searched.duty is not None
+    assert searched.duty.balance.net_energy == pytest.approx(given.duty.balance.net_energy, rel=1e-8)
+    assert given.best.open_circuit_voltage > 60 > searched.best.open_circuit_voltage
+    narrow = size(replace(week, {"size.wiring": "search", "electrical.converter_window": ["18 V", "60 V"]}))
+    assert narrow.duty is not None and not any(narrow.duty.balance.time_beyond_limits.values())
+    assert narrow.duty.balance.net_energy >= given.duty.balance.net_energy * (1 - 1e-8)
+
+
+def test_costs_of_the_best_are_those_over_the_whole_log() -> None:
+    found = size(load_case(EXAMPLES / "genset-week.toml", ["size.rows=[12, 16]"]))
+    assert found.duty is not None and found.front is not None
+    assert found.duty.bins < found.duty.conditions
+    cost = found.duty.balance.building_cost
+    assert found.arrangement.building_cost == cost and cost in found.front.building_cost
+    place = int(np.searchsorted(found.curve.module_count, found.arrangement.module_count))
+    generated = found.duty.balance.generated_energy / found.duty.balance.answered_time
+    assert found.curve.generated_power[place] == generated
+
+
+def test_the_report_says_which_powers_are_means_and_which_wiring_gives_as_much() -> None:
+    report = CliRunner().invoke(cli, ["size", str(EXAMPLES / "genset-week.toml")]).stdout
+    said = " ".join(report.split())
+    assert "Powers of arrangements below are means over the log" in said
+    assert "All at the case's own streams, not over the log." in said
+    assert "32 strings of 16 in series (across 4, layers 1, row blocks 1) give 163.1 W too and stand at 38.29 V" in said
+
+
+def test_another_goal_is_not_given_up_for_a_log_in_silence() -> None:
+    week, log = str(EXAMPLES / "genset-week.toml"), str(EXAMPLES / "genset-week.csv")
+    goal = ("--set", 'size.objective="cost per kilowatt-hour"')
+    refused = CliRunner().invoke(cli, ["size", week, *goal, "--duty", log])
+    assert refused.exit_code == 2
+    assert 'size.objective: "cost per kilowatt-hour" is not looked for over a log; set it to' in refused.output
+    power = CliRunner().invoke(
+        cli, ["size", week, "--set", 'size.objective="net power"', "--set", "size.rows=[4]", "--duty", log, "--json"]
+    )
+    assert json.loads(power.stdout)["objective"] == "yearly energy"

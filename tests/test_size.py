@@ -28,6 +28,7 @@ from harvest.model.estimate import estimate, estimate_batch
 from harvest.model.reading import load_case, read_case, replace
 from harvest.model.search import SEARCHED, search_batch
 from harvest.report.files import case_text
+from harvest.report.size_sheet import size_report
 from harvest.study import size as sizing
 from harvest.study.limits import LIMITS, WINDOW
 from harvest.study.size import marginal_power, row_blocks, size
@@ -431,6 +432,49 @@ def test_what_is_given_wrongly_is_named(options: tuple[str, ...], message: str) 
     told = run(str(JACKET), *(part for each in options for part in ("--set", each)))
     assert told.exit_code == 2, told.output
     assert message in told.stderr
+
+
+def test_choices_within_the_limits_are_told_and_a_fault_without_load_has_its_remedy() -> None:
+    """A hot face that only fails without load is no limit of a search, and its check says how to make it one."""
+    axes = ("--set", "size.rows=[10, 14, 20]", "--set", 'size."hot.duct.fin_pitch"=["3 mm", "5 mm"]')
+    report = " ".join(run(str(EXAMPLES / "genset-exhaust.toml"), *axes).stdout.split())
+    assert "Not acceptable as it stands: hot face without load." in report
+    assert "limits.hot_face_temperature_without_load keeps a sizing below" in report
+    document = json.loads(run(str(EXAMPLES / "genset-exhaust.toml"), *axes, "--json").stdout)
+    beyond, within = document["choices_beyond_limits"], document["choices_within_limits"]
+    assert list(beyond) == ["hot_face_temperature"]
+    assert within + sum(beyond.values()) == document["choices_tried"] == 6
+    assert f"{within} of those tried keep to every limit" in report
+
+
+def test_each_line_of_curve_and_front_can_be_built_again() -> None:
+    """With a field varied, arrangement and field of a line give its net power in an estimate of their own."""
+    axes = ["size.rows=[4, 8, 12]", 'size."hot.duct.gap"=["2 mm", "3 mm"]', "cost.module=15", 'cost.currency="EUR"']
+    found = size(load_case(JACKET, axes))
+    assert found.front is not None
+    for told in (found.curve, found.front):
+        for place, gap in enumerate(told.fields["hot.duct.gap"]):
+            alone = estimate(
+                load_case(JACKET, [f"stack.rows={told.rows_count[place]}", f'hot.duct.gap="{float(gap)!r} m"'])
+            )
+            assert alone.net_power == pytest.approx(told.net_power[place], rel=1e-9)
+    assert "Each has its own hot.duct.gap, told by --json." in size_report(load_case(JACKET, axes), found)
+
+
+def test_one_choice_is_singular() -> None:
+    told = run(str(JACKET), "--set", "size.columns=[1, 2, 3]", "--set", "size.rows=[4]")
+    assert told.exit_code == 1
+    assert "with an answer: 1 choice" in told.stderr and "1 choice: beyond" in told.stderr
+    assert "2 choices: electrical.strings_across: must divide columns" in told.stderr
+
+
+def test_a_long_title_is_not_cut_off_and_no_formula(tmp_path: Path) -> None:
+    title = "Two prices, $50 and $60 a module, " * 4
+    plot = tmp_path / "best.svg"
+    told = run(str(JACKET), "--set", "size.rows=[4, 8]", "--set", f'title="{title}"', "--plot", str(plot))
+    assert told.exit_code == 0, told.output
+    lines = [line for line in plot.read_text().splitlines() if "$50" in line or "best arrangement" in line]
+    assert len(lines) > 1 and max(map(len, lines)) < 250
 
 
 def test_files_are_judged_before_the_search(tmp_path: Path) -> None:

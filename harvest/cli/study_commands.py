@@ -49,15 +49,18 @@ def size(
     """How many modules, and how arranged: the best of every choice that [size] in CASE allows."""
     from harvest.report.files import case_text, refuse_existing, write_new
 
-    loaded = read_case_of(case, (*overrides, *(['size.objective="yearly energy"'] if log else [])))
+    loaded = read_case_of(case, overrides)
     if write is not None:
         refuse_existing(Path(write))
     if plot is not None:
         from harvest.report.plots import can_plot, size_figure, write_figure
 
         can_plot(Path(plot))
+    from harvest.study.size import for_yearly_energy
     from harvest.study.size import size as size_case
 
+    if log is not None:
+        loaded = for_yearly_energy(loaded)
     found = size_case(loaded, _progress_in("choices"), log=log)
     if plot is not None:
         write_figure(Path(plot), size_figure(loaded.title, found))

@@ -147,6 +147,7 @@ def _read(
     faults = []
     for override in overrides:
         path, equals, value = (part.strip() for part in override.partition("="))
+        path = path.replace('"', "")  # size."hot.duct.gap", as whole names stand in the file
         try:
             if not equals:
                 raise InputError(f'{one_line(path)}: has no "="; write for example --set hot.mass_flow="0.4 kg/s"')

@@ -2,13 +2,12 @@
 
 from __future__ import annotations
 
-import textwrap
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
 from harvest.report.doubt_sheet import LITTLE
-from harvest.report.plots import BLUE, VERMILION, new_figure
+from harvest.report.plots import BLUE, VERMILION, entitle, new_figure
 
 if TYPE_CHECKING:
     from matplotlib.figure import Figure
@@ -17,7 +16,6 @@ if TYPE_CHECKING:
 
 BINS = 40
 MOST_BARS = 10
-LETTERS_OF_TITLE = 90
 
 
 def doubt_figure(title: str, found: Doubt) -> Figure:
@@ -27,8 +25,7 @@ def doubt_figure(title: str, found: Doubt) -> Figure:
     above, below = figure.subplots(2, 1, height_ratios=(3.0, 1.0 + 0.28 * len(bars)))
     draw_distribution(above, found)
     draw_swings(below, found)
-    heading = textwrap.fill(f"{title}: how sure the net power is", LETTERS_OF_TITLE)
-    figure.suptitle(heading, fontsize=10, parse_math=False)
+    entitle(figure, f"{title}: how sure the net power is")
     return figure
 
 

@@ -6,7 +6,7 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from harvest.report.plots import BLUE, GREEN, VERMILION, new_figure
+from harvest.report.plots import BLUE, GREEN, VERMILION, entitle, new_figure
 
 if TYPE_CHECKING:
     from matplotlib.figure import Figure
@@ -49,5 +49,5 @@ def duty_figure(title: str, found: DutyBalance) -> Figure:
     for axes in panels:
         axes.grid(color="0.85", linewidth=0.6)
         axes.legend(frameon=False)
-    figure.suptitle(f"{title}: {found.net_energy / 3.6e6:.4g} kWh net", fontsize=10)
+    entitle(figure, f"{title}: {found.net_energy / 3.6e6:.4g} kWh net")
     return figure

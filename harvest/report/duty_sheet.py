@@ -10,7 +10,8 @@ from harvest.model.case import Case
 from harvest.model.study_sections import DUTY_DRIVES
 from harvest.quantities import KINDS, format_quantity, significant
 from harvest.report.layout import WIDTH, heading, pairs, table, wrapped
-from harvest.report.terminal import title
+from harvest.report.terminal import counted, title
+from harvest.study.duty import NO_FLOW, STATES, YEAR
 from harvest.study.duty_log import LONGEST_STEPS, NOTES
 from harvest.study.limits import limit_path
 
@@ -54,14 +55,14 @@ def duty_report(case: Case, found: DutyBalance) -> str:
         wrapped(
             "",
             f"Net {kilowatt_hours(found.net_energy)} in {hours(found.answered_time)}, {_w(found.mean_net_power)} on "
-            f"average; in a year {kilowatt_hours(found.yearly_net_energy)}{worth(found)}.",
+            f"average; in a year {kilowatt_hours(found.yearly_net_energy)}{worth(case, found)}.",
         ),
         wrapped(
             "",
             f"On {hours(found.time_on)}, off {hours(off)}; no answer {hours(unanswered)}, not covered by the log "
             f"{hours(found.time_not_covered)}.",
         ),
-        *([f"The log has {len(found.log.notes):,} odd readings; what was done with them stands below."] * odd),
+        *([f"The log has {counted(len(found.log.notes), 'odd reading')}; what was done stands below."] * odd),
         heading("Energy"),
         *pairs(
             [
@@ -94,13 +95,18 @@ def duty_report(case: Case, found: DutyBalance) -> str:
     return "\n".join(lines)
 
 
-def worth(found: DutyBalance) -> str:
+def worth(case: Case, found: DutyBalance) -> str:
     """What a year's energy is worth and when it has paid the stack, as the end of a sentence; "" without prices."""
     text = ""
     if math.isfinite(found.yearly_value):
         text += f", worth {significant(found.yearly_value, 4)} {found.currency}"
-    if math.isfinite(found.payback_years):
-        text += f"; it costs {found.building_cost:,.0f} {found.currency}, paid back in {found.payback_years:.3g} years"
+    if math.isfinite(found.payback_years) and case.cost is not None:
+        text += (
+            f"; it costs {found.building_cost:,.0f} {found.currency}, paid back in "
+            f"{significant(found.payback_years, 3)} years"
+        )
+        text += " without interest" * (case.cost.discount_rate > 0)
+        text += f", longer than the {case.cost.years:g} years of use" * (found.payback_years > case.cost.years)
     elif math.isinf(found.payback_years):
         text += f"; it costs {found.building_cost:,.0f} {found.currency} and is never paid back"
     return text
@@ -141,8 +147,8 @@ def _log(log: DutyLog, found: DutyBalance) -> list[str]:
     lines = [
         wrapped(
             "  ",
-            f"{log.label}: {len(log.lines):,} readings, {found.readings_used:,} used, {found.conditions:,} different; "
-            f"{step}.",
+            f"{log.label}: {counted(len(log.lines), 'reading')}, {found.readings_used:,} used, "
+            f"{found.conditions:,} different; {step}.",
         )
     ]
     if log.held_cells:
@@ -152,7 +158,7 @@ def _log(log: DutyLog, found: DutyBalance) -> list[str]:
     for kind, done in NOTES.items():
         notes = [note for note in log.notes if note.kind == kind]
         if notes:
-            lines.append(wrapped("  ", f"{kind}, {len(notes):,} times: {done}"))
+            lines.append(wrapped("  ", f"{kind}, {counted(len(notes), 'time')}: {done}"))
             lines += [wrapped(f"    line {note.line}: ", note.text, rest="      ") for note in notes[:MOST_NOTES]]
             if len(notes) > MOST_NOTES:
                 lines.append(f"    and {len(notes) - MOST_NOTES:,} more, the last on line {notes[-1].line}")
@@ -173,5 +179,10 @@ def _rules(case: Case, found: DutyBalance) -> Iterable[str]:
         "all the time."
     )
     stated = "site.yearly_operation" not in case.assumed
-    source = "the time in which the streams flow" if stated else "the time with an answer"
+    flowing = found.answered_time - found.time_off.get(STATES[NO_FLOW], 0.0)
+    if stated and not flowing:
+        yield "The streams never flow together in this log, so that site.yearly_operation tells nothing of a year."
+    source = "the time in which the streams flow" if stated and flowing else "the time with an answer"
     yield f"The year has {hours(found.yearly_time)} like {source}, {hours(found.yearly_from_time)}."
+    if found.log.is_bins and found.covered_time > YEAR:
+        yield f"The bins have {hours(found.covered_time)} together, more than a year: is that meant?"

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import io
+import textwrap
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
@@ -22,6 +23,10 @@ SUFFIXES = (".svg", ".png", ".pdf")
 BLUE, VERMILION, GREEN = "#0072B2", "#D55E00", "#009E73"
 
 
+TITLE_WIDTH = 11.0
+"""Letters of a title that fit on an inch."""
+
+
 def new_figure(width: float, height: float) -> Figure:
     """Return an empty figure [inch]; raises MissingExtraError without matplotlib."""
     try:
@@ -34,6 +39,12 @@ def new_figure(width: float, height: float) -> Figure:
     settings: dict[Any, Any] = {"svg.hashsalt": "harvest", "svg.fonttype": "none", "font.family": "DejaVu Sans"}
     mpl.rcParams.update({**settings, "font.size": 9})
     return Figure(figsize=(width, height), layout="constrained")
+
+
+def entitle(figure: Figure, text: str) -> None:
+    """Write the title over a figure, in lines that are not cut off and without reading it as a formula."""
+    widest = int(TITLE_WIDTH * figure.get_figwidth())
+    figure.suptitle(textwrap.fill(text, widest), fontsize=10, parse_math=False)
 
 
 def plot_suffix(path: Path) -> str:
@@ -73,15 +84,16 @@ def size_figure(title: str, found: Sizing) -> Figure:
         panels[0].plot(curve.module_count, values, color=colour, linestyle=style, label=name)
     best = found.arrangement
     panels[0].plot(best.module_count, best.net_power, "o", color="black", fillstyle="none", label="best")
-    panels[0].set(xlabel="modules", ylabel="power [W]")
+    mean = "" if found.duty is None else "mean "
+    panels[0].set(xlabel="modules", ylabel=f"{mean}power [W]")
     if front is not None:
         panels[1].step(front.building_cost, front.net_power, color=BLUE, where="post", label="front")
         panels[1].plot(best.building_cost, best.net_power, "o", color="black", fillstyle="none", label="best")
-        panels[1].set(xlabel=f"cost of building [{found.best.currency or 'currency'}]", ylabel="net power [W]")
+        panels[1].set(xlabel=f"cost of building [{found.best.currency or 'currency'}]", ylabel=f"{mean}net power [W]")
     for axes in panels:
         axes.grid(color="0.85", linewidth=0.6)
         axes.legend(frameon=False)
-    figure.suptitle(f"{title}: best arrangement at each number of modules", fontsize=10)
+    entitle(figure, f"{title}: best arrangement at each number of modules")
     return figure
 
 
@@ -119,7 +131,7 @@ def module_figure(title: str, curve: ModuleCurve, fit: BenchFit | HeatPumpFit | 
         axes.grid(color="0.85", linewidth=0.6)
         axes.spines[["top"]].set_visible(False)
     hot, cold = curve.hot_face_temperature - 273.15, curve.cold_face_temperature - 273.15
-    figure.suptitle(f"{title}: faces at {hot:.0f} and {cold:.0f} degC", fontsize=10)
+    entitle(figure, f"{title}: faces at {hot:.0f} and {cold:.0f} degC")
     return figure
 
 

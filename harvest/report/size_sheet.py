@@ -8,15 +8,21 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from harvest.model.case import DECLARATIONS, Case, display
+from harvest.model.checks import SHOCK_VOLTAGE
 from harvest.model.study_sections import OBJECTIVES
-from harvest.quantities import format_quantity
+from harvest.quantities import format_quantity, significant
 from harvest.report.cost_sheet import cost_sentence
 from harvest.report.duty_sheet import hours, kilowatt_hours, worth
 from harvest.report.layout import WIDTH, heading, table, wrapped
 from harvest.report.terminal import counted, stack_sentence, title, verdict
 from harvest.study.limits import limit_path
+from harvest.study.wirings import own_wiring
 
 if TYPE_CHECKING:
+    from collections.abc import Mapping
+
+    from harvest.model.results import Estimate
+    from harvest.physics.arrays import FloatArray
     from harvest.study.size import Arrangement, AtBound, BindingLimit, CostFront, SizedDuty, Sizing
     from harvest.study.wirings import Wiring
 
@@ -24,6 +30,8 @@ MOST_LINES = 14
 BAR = 16
 MANY_MODULES = 1000
 ROW_BLOCKS = "electrical.row_blocks"
+WITHOUT_LOAD = "hot face without load"
+"""Check of a hot face when the load is lost, which a search looks at only where it has a limit of its own."""
 WORTH_TELLING = 0.001
 """Share of the net power from which another wiring, or a wider window, is worth a sentence."""
 
@@ -80,7 +88,12 @@ def _curve(found: Sizing) -> list[str]:
             )
         )
     header = ("modules", "arrangement", "generated", "drives", "net", "a module adds", "")
-    return [heading("Best arrangement at each number of modules"), *table(header, rows)]
+    return [heading("Best arrangement at each number of modules"), *table(header, rows), *_varied(curve.fields)]
+
+
+def _varied(fields: Mapping[str, FloatArray]) -> list[str]:
+    """Say what else differs between the lines of a table."""
+    return [wrapped("  ", f"Each has its own {' and '.join(fields)}, told by --json.")] if fields else []
 
 
 def _flatness(found: Sizing) -> list[str]:
@@ -132,6 +145,15 @@ def _at_bounds(found: tuple[AtBound, ...]) -> list[str]:
     ]
 
 
+def _beyond_without_load(best: Estimate) -> list[str]:
+    """Say how to keep a sizing from what only the checks look at."""
+    if not any(check.name == WITHOUT_LOAD and check.status == "fail" for check in best.checks):
+        return []
+    return [
+        "limits.hot_face_temperature_without_load keeps a sizing below a hot face temperature when the load is lost."
+    ]
+
+
 def _limit(found: BindingLimit) -> str:
     name = found.limit if " " in found.limit else limit_path(found.limit)
     change = "more" if found.net_power_gain >= 0 else "less"
@@ -159,7 +181,7 @@ def _v(value: float) -> str:
 
 def _wirings(case: Case, found: Sizing) -> list[str]:
     """What other groupings of the best design's modules would give, one for each number of row blocks."""
-    own = _own_wiring(found)
+    own = own_wiring(found.best_case, found.wirings)
     usable = [each for each in found.wirings if not each.problem]
     first: dict[int, Wiring] = {}
     for each in usable:
@@ -187,7 +209,7 @@ def _wirings(case: Case, found: Sizing) -> list[str]:
         f"{len(usable)} of {len(found.wirings)} groupings keep to every limit"
         + (f" with a converter from {_v(window[0])} to {_v(window[1])}" if window else "")
         + "; the best with each number of row blocks is told. Lost is what it generates less than every row with a "
-        "load of its own."
+        "load of its own." + (" All at the case's own streams, not over the log." if found.duty is not None else "")
     )
     lines = [heading("Wiring of the best design"), wrapped("  ", text), *table(header, rows)]
     if found.net_power_without_window is not None:
@@ -207,20 +229,25 @@ def _wirings(case: Case, found: Sizing) -> list[str]:
                 "limits.maximum_open_circuit_voltage keeps a sizing below a voltage.",
             )
         )
+    safe = min(SHOCK_VOLTAGE, highest)
+    safer = next((each for each in usable if each.open_circuit_voltage <= safe), None)
+    if own.open_circuit_voltage > safe and safer is not None and _gives_as_much(safer, own):
+        lines.append(
+            wrapped(
+                "  ",
+                f"{counted(safer.strings, 'string')} of {_in_series(safer)} in series (across "
+                f"{safer.strings_across}, layers {safer.layers_in_series}, row blocks {_blocks(safer)}) give "
+                f"{_w(safer.net_power)} too and stand at {_v(safer.open_circuit_voltage)} without load.",
+            )
+        )
     if usable and usable[0].net_power - own.net_power > WORTH_TELLING * abs(own.net_power):
         lines.append(wrapped("  ", 'Another wiring gives more: try size.wiring = "search".'))
     return lines
 
 
-def _own_wiring(found: Sizing) -> Wiring:
-    """The grouping that the best design has."""
-    electrical = found.best_case.electrical
-    own = (
-        electrical.strings_across,
-        electrical.layers_in_series,
-        electrical.row_blocks or (found.best_case.stack.rows,),
-    )
-    return next(each for each in found.wirings if (each.strings_across, each.layers_in_series, each.row_blocks) == own)
+def _gives_as_much(one: Wiring, other: Wiring) -> bool:
+    """Whether a wiring gives another's net power but for what is not worth telling."""
+    return one.net_power >= other.net_power - WORTH_TELLING * abs(other.net_power)
 
 
 def _front(front: CostFront, currency: str) -> list[str]:
@@ -228,7 +255,7 @@ def _front(front: CostFront, currency: str) -> list[str]:
         (
             f"{front.building_cost[i]:,.0f}",
             _w(front.net_power[i]),
-            f"{front.building_cost[i] / front.net_power[i]:.4g}",
+            significant(front.building_cost[i] / front.net_power[i], 4),
             f"{front.module_count[i]:,}",
             f"{front.rows_count[i]} x {front.columns_count[i]} x {front.layers_count[i]}",
         )
@@ -238,6 +265,7 @@ def _front(front: CostFront, currency: str) -> list[str]:
     return [
         heading("Net power against cost: nothing is both cheaper and stronger"),
         *table((head, "net", "cost per watt", "modules", "rows x columns x layers"), rows),
+        *_varied(front.fields),
     ]
 
 
@@ -249,14 +277,15 @@ def _at_its_streams(case: Case, found: Sizing) -> list[str]:
     ]
 
 
-def _over_log(found: SizedDuty) -> str:
+def _over_log(case: Case, found: SizedDuty) -> str:
     """What the best gives over the log."""
     balance = found.balance
     off = sum(balance.time_off.values())
     return (
-        f"Net {kilowatt_hours(balance.yearly_net_energy)} in a year{worth(balance)}: "
-        f"{kilowatt_hours(balance.net_energy)} in the {hours(balance.answered_time)} of {balance.log.label}, of which "
-        f"it is off for {hours(off)}. Powers below are means over the log."
+        f"Net {kilowatt_hours(balance.yearly_net_energy)} in a year{worth(case, balance)}. The log gives "
+        f"{kilowatt_hours(balance.net_energy)} in {hours(balance.answered_time)} ({balance.log.label}), of which "
+        f"it is off for {hours(off)}. Powers of arrangements below are means over the log; the wiring and the checks "
+        "are told at the case's own streams."
     )
 
 
@@ -266,9 +295,10 @@ def _bins(found: SizedDuty) -> str:
         return f"Every choice was answered in each of the log's {found.conditions:,} conditions."
     mean = found.balance.mean_net_power
     apart = abs(found.binned_net_power / mean - 1.0) if mean else 0.0
+    finalists = "best was" if found.finalists == 1 else f"{found.finalists} best were"
     return (
-        f"The search took {found.bins} bins for the log's {found.conditions:,} conditions, and the {found.finalists} "
-        f"best were answered in each of them: the bins gave {_w(found.binned_net_power)} on average and the log gives "
+        f"The search took {found.bins} bins for the log's {found.conditions:,} conditions, and the {finalists} "
+        f"answered in each of them: the bins gave {_w(found.binned_net_power)} on average and the log gives "
         f"{_w(mean)}, {100 * apart:.2g} % apart."
     )
 
@@ -284,13 +314,13 @@ def size_report(case: Case, found: Sizing) -> str:
         *(
             _at_its_streams(case, found)
             if found.duty is None
-            else [wrapped("", _over_log(found.duty)), wrapped("", _bins(found.duty))]
+            else [wrapped("", _over_log(case, found.duty)), wrapped("", _bins(found.duty))]
         ),
         *_flatness(found),
         wrapped("", stack_sentence(found.best_case, found.best) + "."),
         wrapped("", verdict(found.best)),
     ]
-    lines += [wrapped("Note: ", text) for text in _at_bounds(found.at_bounds)]
+    lines += [wrapped("Note: ", text) for text in (*_at_bounds(found.at_bounds), *_beyond_without_load(found.best))]
     lines += _curve(found)
     if found.front is not None and len(found.front.net_power):
         lines += _front(found.front, found.best.currency)
@@ -306,6 +336,8 @@ def size_report(case: Case, found: Sizing) -> str:
     refined = f", and {found.choices_refined:,} more around the best" if found.choices_refined else ""
     wired = ", each wiring counted" if found.wiring == "search" else ""
     lines.append(f"  {found.choices_tried:,} tried{wired}{refined}")
+    if found.choices_beyond_limits:
+        lines.append(f"  {found.choices_within_limits:,} of those tried keep to every limit; one may break several")
     lines += [f"  {count:,} beyond {limit_path(name)}" for name, count in found.choices_beyond_limits.items()]
     lines += [wrapped(f"  {count:,} without an answer: ", text) for text, count in found.choices_invalid.items()]
     return "\n".join(lines)

@@ -15,7 +15,7 @@ from harvest.model.case import DECLARATIONS, Case, display, value_at
 from harvest.model.search import search_batch
 from harvest.physics.arrays import FloatArray
 from harvest.quantities import format_quantity, unit_of
-from harvest.report.plots import BLUE, GREEN, VERMILION, new_figure
+from harvest.report.plots import BLUE, GREEN, VERMILION, entitle, new_figure
 from harvest.study.limits import LIMITS, limit_of
 from harvest.study.sweep import SweepPlan, is_structure
 
@@ -92,8 +92,7 @@ def sweep_figure(plan: SweepPlan, kept: dict[str, FloatArray]) -> Figure:
     names = _group_names(plan, groups)
     draw = _curves if len(across) == 1 else _maps
     figure = draw(plan, across, by_group, names)
-    heading = textwrap.fill(f"{plan.case.title}: net power", LETTERS_OF_TITLE)
-    figure.suptitle(heading, fontsize=10, parse_math=False)
+    entitle(figure, f"{plan.case.title}: net power")
     return figure
 
 

@@ -142,7 +142,7 @@ def duty(
     log = case_log(case, log, strict=strict)
     course = Course.of(log)
     if not len(course.duration):
-        raise NoAnswerError(f"{log.label}: no reading is left that has a value of every column and lasts a time")
+        raise NoAnswerError(log.without_reading)
     return _balance(case, log, course, answers(case, course.values, progress))
 
 

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import dataclass
 from pathlib import Path
 from typing import Any, NamedTuple
@@ -21,6 +22,8 @@ MOST_READINGS = 1_200_000
 LONGEST_STEPS = 3.0
 """Usual steps for which a reading may hold at most, unless the case says how long."""
 HOUR = 3600.0
+LONGEST_TIME = 1e6 * HOUR
+"""More than a century; a longer one is a slip of the unit or of the decimals."""
 MOST_SAID = 20
 """Notes of one kind that are told one by one; the others are counted."""
 
@@ -95,6 +98,13 @@ class DutyLog:
         return "" if np.isnan(self.time[reading]) else f"{self.time[reading] / HOUR:.6g} h"
 
     @property
+    def without_reading(self) -> str:
+        """Why nothing can be answered where no reading is left."""
+        notes = [f"{self.label}:{note.line}: {note.sentence}" for note in self.notes]
+        said = f"{self.label}: no reading is left that has a value of every column and lasts a time"
+        return "\n".join([said, *_shortened(notes)])
+
+    @property
     def is_bins(self) -> bool:
         """Whether it is a table of conditions with their hours, in no order."""
         return not np.isfinite(self.usual_step)
@@ -139,8 +149,7 @@ def read_duty_log(case: Case, source: str | Path, *, strict: bool = False) -> Du
     reading.judge_ranges({path: fields[path] for path in table.values if path in fields})
     log = reading.bins() if "hours" in table.kinds else reading.course()
     if strict and (bad := [note for note in log.notes if note.kind not in HARMLESS]):
-        more = [f"and {len(bad) - MOST_SAID} more like these"] if len(bad) > MOST_SAID else []
-        raise CaseError([*(f"{log.label}:{note.line}: {note.text}" for note in bad[:MOST_SAID]), *more])
+        raise CaseError(reading.said(bad))
     return log
 
 
@@ -154,6 +163,10 @@ def _raise_header_faults(table: MeasurementTable) -> None:
     if len(times) != 1:
         said = "missing; write time, time [h], or hours [h] in a table of bins" if not times else "stands beside hours"
         raise CaseError([f"{table.label}: time: {said}"])
+    for side in ("hot", "cold"):
+        several = [path for path in FLOWS if path in table.kinds and path.startswith(side)]
+        if len(several) > 1:
+            raise CaseError([f"{table.label}: {' and '.join(several)} are one flow; leave one column of them"])
     if len(table.kinds) < 2:
         raise CaseError(
             [
@@ -161,6 +174,11 @@ def _raise_header_faults(table: MeasurementTable) -> None:
                 f"hot.inlet_temperature [degC]; may change: {', '.join(logged_fields())}"
             ]
         )
+
+
+def _shortened(said: list[str]) -> list[str]:
+    more = [f"and {len(said) - MOST_SAID} more like these"] if len(said) > MOST_SAID else []
+    return [*said[:MOST_SAID], *more]
 
 
 def usual_step(time: FloatArray) -> float:
@@ -184,6 +202,12 @@ class _Reading:
     def leave_out(self, reading: int, kind: str, text: str) -> None:
         self.note(reading, kind, text)
         self.problem[reading] = self.problem[reading] or text
+
+    def said(self, notes: Sequence[LogNote]) -> list[str]:
+        """Notes as faults, the first of them; decimal commas are one, with what to do about them."""
+        commas = {fault.text for fault in self.table.faulty if fault.is_comma}
+        others = [f"{self.table.label}:{note.line}: {note.text}" for note in notes if note.text not in commas]
+        return _shortened([*(self.table.cell_faults[:1] if commas else []), *others])
 
     def judge_ranges(self, fields: dict[str, Declaration]) -> None:
         """Leave out readings with a number that its field cannot have; a flow may be zero."""
@@ -211,9 +235,12 @@ class _Reading:
                 self.leave_out(reading, "incomplete", f"{name}: empty; a bin needs every value")
         for reading in np.flatnonzero(hours < 0).tolist():
             self.leave_out(reading, "out of range", f"hours: {hours[reading] / HOUR:g} h is below zero")
+        for reading in np.flatnonzero(hours > LONGEST_TIME).tolist():
+            said = f"hours: {hours[reading] / HOUR:g} h is more than {LONGEST_TIME / HOUR:,.0f} h"
+            self.leave_out(reading, "out of range", said)
         duration = np.where(self.problem == "", hours, 0.0)
         nothing = np.full(len(hours), np.nan)
-        lost = float(np.nansum(np.where(self.problem == "", 0.0, np.maximum(hours, 0.0))))
+        lost = float(np.nansum(np.where((self.problem == "") | (hours > LONGEST_TIME), 0.0, np.maximum(hours, 0.0))))
         return self.log(nothing, nothing, duration, lost)
 
     def course(self) -> DutyLog:
@@ -226,7 +253,11 @@ class _Reading:
                     self.leave_out(reading, "unreadable", text)
             time, offset, repeated = read.seconds, read.offset, read.repeated
         else:
-            time = self.table.values["time"]
+            time = self.table.values["time"].copy()
+            for reading in np.flatnonzero(np.abs(time) > LONGEST_TIME).tolist():
+                said = f"time: {time[reading] / HOUR:g} h is beyond {LONGEST_TIME / HOUR:,.0f} h"
+                self.leave_out(reading, "out of range", said)
+                time[reading] = np.nan
             offset, repeated = np.full(len(time), np.nan), np.zeros(len(time), dtype=bool)
         for reading in np.flatnonzero(np.isnan(time) & (self.problem == "")).tolist():
             self.leave_out(reading, "unreadable", "time: empty")
@@ -234,9 +265,9 @@ class _Reading:
         if len(order) < 2:
             raise CaseError(
                 [
-                    f"{self.table.label}: {len(order)} readings are left with a time of their own; at least two are "
-                    "needed, or hours [h] in a table of bins",
-                    *(f"{self.table.label}:{note.line}: {note.text}" for note in self.notes[:MOST_SAID]),
+                    f"{self.table.label}: {len(order)} of its readings can be used and have a time of their own; at "
+                    "least two are needed, or hours [h] in a table of bins",
+                    *self.said(self.notes),
                 ]
             )
         steps = np.diff(time[order])

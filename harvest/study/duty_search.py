@@ -47,7 +47,7 @@ class DutyMeasure:
         """
         course = Course.of(log)
         if not len(course.duration):
-            raise NoAnswerError(f"{log.label}: no reading is left that has a value of every column and lasts a time")
+            raise NoAnswerError(log.without_reading)
         batch, standing = logged_batch(case, course.values)
         still = standing["hot"] | standing["cold"]
         problem = fluid_problem(batch)

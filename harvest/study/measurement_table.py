@@ -106,7 +106,8 @@ def read_measurement_table(
     """
     label, numbered = _numbered_lines(source, largest)
     if not numbered:
-        raise CaseError([f"{label}: is empty; its first line names the columns, {_example_header(columns, needed)}"])
+        example = f", {_example_header(columns, needed)}" if needed else ", name [unit] for each"
+        raise CaseError([f"{label}: is empty; its first line names the columns{example}"])
     header_line, header = numbered[0]
     body = numbered[1:]
     if len(body) > most_readings:

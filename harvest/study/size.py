@@ -26,7 +26,17 @@ from harvest.study.duty_log import DutyLog
 from harvest.study.duty_search import DutyMeasure
 from harvest.study.limits import asks_without_load, bounded_results, broken_limits, limit_path
 from harvest.study.reasons import Reasons
-from harvest.study.wirings import MOST_BLOCKS, WIRING, Wiring, even_blocks, groupings, wired, wirings
+from harvest.study.wirings import (
+    MOST_BLOCKS,
+    WIRING,
+    Wiring,
+    compared,
+    even_blocks,
+    groupings,
+    own_wiring,
+    wired,
+    wirings,
+)
 
 MOST_CHOICES = 2_000_000
 REFINED_POINTS = 5
@@ -71,7 +81,8 @@ class Arrangement:
 class SizeCurve:
     """The arrangement with the most net power at each number of modules, ascending; arrays (counts,).
 
-    `marginal_power` [W] is what a module adds between this count and the one before on the upper hull of the curve.
+    `marginal_power` [W] is what a module adds between this count and the one before on the upper hull of the curve;
+    `fields` are the SI values of the further fields that were varied.
     """
 
     module_count: IntArray
@@ -82,6 +93,7 @@ class SizeCurve:
     drive_power: FloatArray
     net_power: FloatArray
     marginal_power: FloatArray
+    fields: dict[str, FloatArray] = field(default_factory=dict)
 
 
 @dataclass(frozen=True)
@@ -94,6 +106,7 @@ class CostFront:
     rows_count: IntArray
     columns_count: IntArray
     layers_count: IntArray
+    fields: dict[str, FloatArray] = field(default_factory=dict)
 
 
 @dataclass(frozen=True)
@@ -151,6 +164,7 @@ class Sizing:
     choices_refined: int = 0
     choices_invalid: dict[str, int] = field(default_factory=dict)
     choices_beyond_limits: dict[str, int] = field(default_factory=dict)
+    choices_within_limits: int = 0
     binding_limits: tuple[BindingLimit, ...] = ()
     limits_together: BindingLimit | None = None
     at_bounds: tuple[AtBound, ...] = ()
@@ -383,6 +397,12 @@ def _whole(found: _Found, name: str, places: IntArray) -> IntArray:
     return found.numbers[name][places].astype(np.int64)
 
 
+def _fields(found: _Found, places: IntArray) -> dict[str, FloatArray]:
+    """Further fields that were varied, by path, (places,)."""
+    varied = found.case.size.fields or {} if found.case.size else {}
+    return {path: found.numbers[path][places] for path in varied}
+
+
 def _curve(found: _Found, among: BoolArray) -> tuple[SizeCurve, IntArray]:
     """Strongest choice at each number of modules, and their places."""
     places = np.flatnonzero(among)
@@ -401,6 +421,7 @@ def _curve(found: _Found, among: BoolArray) -> tuple[SizeCurve, IntArray]:
         found.numbers["drive_power"][chosen],
         net,
         marginal_power(counts, net),
+        _fields(found, chosen),
     )
     return curve, chosen
 
@@ -432,11 +453,15 @@ def _front(found: _Found, among: BoolArray) -> CostFront | None:
     order = np.lexsort((-net, cost))
     before = np.concatenate([[-np.inf], np.maximum.accumulate(net[order])])[: len(order)]
     chosen = places[order[net[order] > before]]
+    rows, columns, layers = (_whole(found, path, chosen) for path in COUNTS)
     return CostFront(
         found.numbers["building_cost"][chosen],
         found.numbers["net_power"][chosen],
         _whole(found, "module_count", chosen),
-        *(_whole(found, path, chosen) for path in COUNTS),
+        rows,
+        columns,
+        layers,
+        _fields(found, chosen),
     )
 
 
@@ -510,6 +535,16 @@ def _binding(found: _Found, order: IntArray) -> tuple[tuple[BindingLimit, ...], 
     return single, None if single else without("all limits together", tuple(found.beyond))
 
 
+def for_yearly_energy(case: Case) -> Case:
+    """The case with the objective "yearly energy"; raises InputError where it asks for a goal of its own."""
+    objective = case.size.objective if case.size is not None else YEARLY_ENERGY
+    if objective not in ("net power", YEARLY_ENERGY):
+        raise InputError(
+            f'size.objective: "{objective}" is not looked for over a log; set it to "{YEARLY_ENERGY}", or give no log'
+        )
+    return replace(case, {"size.objective": YEARLY_ENERGY})
+
+
 def size(case: Case, progress: Progress | None = None, *, log: DutyLog | str | Path | None = None) -> Sizing:
     """Solve every choice in [size] and find the best that keeps to [limits].
 
@@ -534,6 +569,7 @@ def size(case: Case, progress: Progress | None = None, *, log: DutyLog | str | P
     if not found.numbers or not len(found.numbers["net_power"]):
         raise NoAnswerError("\n".join(["no choice has an answer", *_said(tally)]))
     beyond = {name: int(wrong.sum()) for name, wrong in found.beyond.items() if wrong.any()}
+    within_limits = int(found.allowed().sum())
     refined = _refine(tally, axes)
     found = tally.all()
     order = found.order(found.allowed())
@@ -581,6 +617,7 @@ def size(case: Case, progress: Progress | None = None, *, log: DutyLog | str | P
         choices_refined=refined,
         choices_invalid=tally.reasons.sums,
         choices_beyond_limits=beyond,
+        choices_within_limits=within_limits,
         binding_limits=single,
         limits_together=together,
         at_bounds=_at_bounds(axes, chosen),
@@ -599,23 +636,55 @@ def _over_whole_log(
     """
     balances: dict[int, DutyBalance] = {}
     binned = found.numbers["net_power"].copy()
+
+    def answer(place: int) -> None:
+        balance = duty(designed(case, found.values(place, axes)), log)
+        if any(balance.time_beyond_limits.values()):
+            found.numbers["net_power"][place] = -np.inf
+            return
+        balances[place] = balance
+        for name, value in _means(balance).items():
+            found.numbers[name][place] = value
+
     answered = 0
     for place in order[:MOST_WITHOUT_ESTIMATE].tolist():
         answered += 1
-        balance = duty(designed(case, found.values(place, axes)), log)
-        kept = not any(balance.time_beyond_limits.values())
-        found.numbers["net_power"][place] = balance.mean_net_power if kept else -np.inf
-        if kept:
-            balances[place] = balance
+        answer(place)
         if len(balances) == FINALISTS:
             break
     if not balances:
         raise NoAnswerError(f"the {answered} best choices break a limit at a reading of the log")
+    finalists = len(balances)
     best = max(balances, key=lambda place: balances[place].mean_net_power)
+    chosen = found.values(best, axes)
+    if BLOCKS in chosen:
+        alike = found.with_wiring(best, _alike_wiring(designed(case, chosen)))
+        if alike not in balances:
+            answer(alike)
+        if alike in balances and compared(balances[alike].mean_net_power) >= compared(balances[best].mean_net_power):
+            best = alike
     struck = np.isneginf(found.numbers["net_power"][order])
     rest = order[~struck & (order != best)]
-    sized = SizedDuty(balances[best], balances[best].conditions, len(measure.share), float(binned[best]), len(balances))
+    sized = SizedDuty(balances[best], balances[best].conditions, len(measure.share), float(binned[best]), finalists)
     return np.concatenate([[best], rest]), sized
+
+
+def _alike_wiring(case: Case) -> Wiring:
+    """Of the wirings that give a design's net power at its own streams, the one to be preferred."""
+    every = wirings(case)
+    own = own_wiring(case, every)
+    return next((each for each in every if compared(each.net_power) == compared(own.net_power)), own)
+
+
+def _means(balance: DutyBalance) -> dict[str, float]:
+    """Results of a choice at every reading, in place of those over the bins."""
+    drives = balance.hot_drive_energy + balance.cold_drive_energy
+    return {
+        "net_power": balance.mean_net_power,
+        "generated_power": balance.generated_energy / balance.answered_time,
+        "drive_power": drives / balance.answered_time,
+        "building_cost": balance.building_cost,
+    }
 
 
 def _without_window(case: Case, best: Estimate) -> float | None:
@@ -629,15 +698,19 @@ def _without_window(case: Case, best: Estimate) -> float | None:
 
 
 def _said(tally: _Tally) -> list[str]:
-    return [f"{count:,} choices: {text}" for text, count in tally.reasons.sums.items()]
+    return [f"{_choices(count)}: {text}" for text, count in tally.reasons.sums.items()]
+
+
+def _choices(count: int) -> str:
+    return f"{count:,} choice{'s' * (count != 1)}"
 
 
 def _none_meets(found: _Found, beyond: dict[str, int], tally: _Tally) -> list[str]:
     """Why no choice is left."""
-    lines = [f"no choice keeps to the limits: {len(found.numbers['net_power']):,} have an answer"]
+    lines = [f"no choice keeps to the limits; with an answer: {_choices(len(found.numbers['net_power']))}"]
     if found.allowed().any():
         lines = [f"no choice meets the objective; the most net power within the limits is {_most(found):.6g} W"]
-    return [*lines, *(f"{count:,} choices: beyond {limit_path(name)}" for name, count in beyond.items()), *_said(tally)]
+    return [*lines, *(f"{_choices(count)}: beyond {limit_path(name)}" for name, count in beyond.items()), *_said(tally)]
 
 
 def _most(found: _Found) -> float:

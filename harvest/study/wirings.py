@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import dataclasses
-from collections.abc import Iterator
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
 from fractions import Fraction
 
@@ -164,10 +164,22 @@ def _beyond(broken: dict[str, BoolArray], index: int) -> str:
     return f"beyond {' and '.join(paths)}" if paths else ""
 
 
+def compared(power: float) -> float:
+    """A power with the digits to which wirings are compared."""
+    return float(f"{power:.{ALIKE_DIGITS}g}")
+
+
+def own_wiring(case: Case, every: Sequence[Wiring]) -> Wiring:
+    """The grouping that a design has, of every one that it may have."""
+    electrical = case.electrical
+    own = electrical.strings_across, electrical.layers_in_series, electrical.row_blocks or (case.stack.rows,)
+    return next(each for each in every if (each.strings_across, each.layers_in_series, each.row_blocks) == own)
+
+
 def _rank(case: Case, found: Wiring) -> tuple[bool, float, bool, int, float]:
     """Sort key of a grouping, the best first."""
     window, opened = case.electrical.converter_window, found.open_circuit_voltage
     above = not opened <= min(SHOCK_VOLTAGE, window[1] if window else np.inf)
     lost = not np.isfinite(found.net_power)
-    net = np.inf if lost else -float(f"{found.net_power:.{ALIKE_DIGITS}g}")
+    net = np.inf if lost else -compared(found.net_power)
     return found.problem != "", net, above, len(found.row_blocks), 0.0 if lost else opened if above else -opened
