@@ -20,6 +20,7 @@ if TYPE_CHECKING:
     from harvest.model.module_curve import ModuleCurve, module_curve
     from harvest.model.reading import load_case, load_streams, replace
     from harvest.model.results import Estimate, Estimates
+    from harvest.report.memo.compose import Memo, memo
     from harvest.report.sweep_files import sweep
     from harvest.study.bench_record import fit_bench_record, read_bench_record
     from harvest.study.doubt import Doubt, doubt
@@ -51,6 +52,8 @@ _HOMES = {
     "load_case": "harvest.model.reading",
     "load_streams": "harvest.model.reading",
     "load_module": "harvest.study.modules",
+    "Memo": "harvest.report.memo.compose",
+    "memo": "harvest.report.memo.compose",
     "ModuleCurve": "harvest.model.module_curve",
     "module_curve": "harvest.model.module_curve",
     "read_bench_record": "harvest.study.bench_record",
@@ -80,6 +83,7 @@ __all__ = [
     "Estimates",
     "HarvestError",
     "InputError",
+    "Memo",
     "ModuleCurve",
     "NoAnswerError",
     "RangeError",
@@ -97,6 +101,7 @@ __all__ = [
     "load_case",
     "load_module",
     "load_streams",
+    "memo",
     "module_curve",
     "read_bench_record",
     "read_duty_log",

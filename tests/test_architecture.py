@@ -118,11 +118,18 @@ def test_each_library_has_one_home(library: str) -> None:
 
 @pytest.mark.parametrize("library", ["CoolProp", "pint", "matplotlib", "jinja2", "pyarrow", "xarray", "distributed"])
 def test_heavy_libraries_are_imported_where_they_are_used(library: str) -> None:
+    # the sandbox derives from Jinja2's classes, so that it counts as the library itself
+    sandbox = PACKAGE / "report/memo/sandbox.py"
+    wanted = (library, "harvest.report.memo.sandbox" if library == "jinja2" else library)
     for path in MODULES:
+        if path == sandbox:
+            continue
         for node in ast.parse(path.read_text("utf-8")).body:
             if isinstance(node, ast.Import | ast.ImportFrom):
                 names = [alias.name for alias in node.names] if isinstance(node, ast.Import) else [str(node.module)]
-                assert all(name.split(".")[0] != library for name in names), f"{path} imports {library} at once"
+                assert all(name not in wanted and name.split(".")[0] != library for name in names), (
+                    f"{path} imports {library} at once"
+                )
 
 
 def test_physics_touches_no_files_and_prints_nothing() -> None:

@@ -15,6 +15,7 @@ from harvest.model.estimate import estimate
 from harvest.model.reading import load_case
 from harvest.model.results import ROW_RESULTS, SCALARS
 from harvest.physics.ducts import LAMINAR_LIMIT, OFFSET_STRIP_REYNOLDS_RANGE, TURBULENT_LIMIT
+from harvest.report.memo.reference import value_reference
 from harvest.report.reference import CheckedNumber, case_reference, check_list, result_reference
 from harvest.study.screen import NUMBERS
 from tests.test_published import CHECKS
@@ -66,7 +67,13 @@ def test_page_of_checks_is_up_to_date() -> None:
 
 
 @pytest.mark.parametrize(
-    ("name", "made"), [("case-file.md", case_reference()), ("results.md", result_reference())], ids=["case", "results"]
+    ("name", "made"),
+    [
+        ("case-file.md", case_reference()),
+        ("results.md", result_reference()),
+        ("memo-values.md", value_reference()),
+    ],
+    ids=["case", "results", "memo"],
 )
 def test_page_from_declarations_is_up_to_date(name: str, made: str) -> None:
     assert (DOCS / name).read_text(encoding="utf-8") == made, REGENERATE

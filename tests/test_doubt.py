@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import dataclasses
 import json
+import re
 import subprocess
 import sys
 from pathlib import Path
@@ -19,8 +20,9 @@ from harvest.cli import cli
 from harvest.errors import CaseError, InputError, NoAnswerError
 from harvest.model.batch import Batch
 from harvest.model.case import DECLARATIONS, Case, case_hash, value_at
-from harvest.model.estimate import estimate_batch, search_batch
+from harvest.model.estimate import estimate_batch
 from harvest.model.reading import load_case, read_case, replace
+from harvest.model.search import search_batch
 from harvest.model.tolerances import FACTOR, NORMAL, UNIFORM, Tolerance
 from harvest.physics.arrays import FloatArray
 from harvest.report.doubt_sheet import chance_text, doubt_report
@@ -114,6 +116,58 @@ def test_chance_of_a_negative_net_and_of_a_broken_limit() -> None:
     assert chances["minimum_hot_outlet_temperature"].chance == pytest.approx(0.5, abs=0.01)
     assert chances["minimum_hot_outlet_temperature"].result == "hot_outlet_temperature"
     assert chances["hot_pressure_drop"].chance == 0.0
+
+
+def test_chances_of_what_stands_without_load_and_of_the_converter_window_are_those_of_estimates() -> None:
+    """Each limit at a percentile of estimates of the same draws: so many of 100 cases are beyond it."""
+    case = only(
+        load_case(LOOP, ["electrical.load=matched"]), {"hot.inlet_temperature": "3 K", "hot.volume_flow": "20 %"}
+    )
+    inputs, _ = drawn_inputs(case)
+    points = np.random.default_rng(5).random((2, 1000))
+    values = {each.path: each.values(row) for each, row in zip(inputs, points, strict=True)}
+    estimates = estimate_batch(Batch(case, 1000, values), grid=True)
+    scalars = estimates.scalars
+    low, high = np.quantile(scalars["voltage"], [0.3, 0.8])
+    opened = np.quantile(scalars["open_circuit_voltage"], 0.6)
+    hot = np.quantile(scalars["open_circuit_face_temperature"], 0.25)
+    limited = replace(
+        case,
+        {
+            "electrical.converter_window": [f"{low} V", f"{high} V"],
+            "limits.maximum_open_circuit_voltage": float(opened),
+            "limits.hot_face_temperature_without_load": float(hot),
+        },
+    )
+    found = doubt(limited, samples=1024)
+    chances = {(each.limit, each.bound): each.chance for each in found.limits}
+    assert chances["converter_window", "at least"] == pytest.approx(0.3, abs=0.04)
+    assert chances["converter_window", "at most"] == pytest.approx(0.2, abs=0.04)
+    assert chances["maximum_open_circuit_voltage", "at most"] == pytest.approx(0.4, abs=0.04)
+    assert chances["hot_face_temperature_without_load", "at most"] == pytest.approx(0.75, abs=0.04)
+    report = " ".join(doubt_report(limited, found).split())
+    assert "Caution: the terminals are outside the converter's window with a chance of" in report
+    assert f"converter_window: at least {low:.2f} V, broken with a chance of" in report
+
+
+def test_a_converter_that_keeps_its_window_is_not_told_to_break_it() -> None:
+    """At maximum power the voltage stays within; rounding at the edge is no fault."""
+    case = load_case(LOOP, ['electrical.converter_window=["21.6 V", "21.7 V"]'])
+    found = doubt(case, samples=256)
+    assert {each.chance for each in found.limits if each.limit == "converter_window"} == {0.0}
+
+
+def test_the_report_says_how_sure_its_shares_are() -> None:
+    """The widest interval of the JSON; few cases rank nothing."""
+    case = load_case(LOOP)
+    for samples, coarse in ((256, True), (4096, False)):
+        found = doubt(case, samples)
+        widest = max(high - low for each in found.inputs for low, high in (each.first_order_interval,))
+        report = " ".join(doubt_report(case, found).split())
+        told = re.search(r"may be off by up to (\d+) points of 100", report)
+        assert told is not None
+        assert int(told[1]) == pytest.approx(50.0 * widest, abs=1.0)
+        assert ("take more --samples" in report) == coarse
 
 
 def ishigami(points: FloatArray) -> FloatArray:
@@ -508,9 +562,9 @@ def test_few_fluids_are_made_and_their_rounding_does_not_show(monkeypatch: pytes
     values = np.stack([each.values(row) for each, row in zip(inputs, points, strict=True)])
     asked: list[Batch] = []
 
-    def recorded(batch: Batch) -> Any:
+    def recorded(batch: Batch, *, without_load: bool) -> Any:
         asked.append(batch)
-        return search_batch(batch)
+        return search_batch(batch, without_load=without_load)
 
     monkeypatch.setattr(doubting, "search_batch", recorded)
     found = answered(case, inputs, values)

@@ -24,8 +24,9 @@ from harvest.cli import cli
 from harvest.errors import CaseError, NoAnswerError
 from harvest.model.batch import Batch
 from harvest.model.case import Case
-from harvest.model.estimate import SEARCHED, estimate, estimate_batch, search_batch
+from harvest.model.estimate import estimate, estimate_batch
 from harvest.model.reading import load_case, read_case, replace
+from harvest.model.search import SEARCHED, search_batch
 from harvest.report.files import case_text
 from harvest.report.size_sheet import size_report
 from harvest.study import size as sizing

@@ -16,8 +16,9 @@ from harvest.errors import CaseError, InputError
 from harvest.model.batch import Batch
 from harvest.model.case import DECLARATIONS, Case, value_at
 from harvest.model.case_fields import Declaration
-from harvest.model.estimate import Outcomes, estimate, search_batch
+from harvest.model.estimate import estimate
 from harvest.model.reading import load_case, replace
+from harvest.model.search import Outcomes, search_batch
 from harvest.quantities import example_of, parse_quantity
 from harvest.study.sweep import SweepPart, SweepPlan, planned, varied_field, with_axes
 
@@ -211,6 +212,37 @@ def test_a_fault_is_a_row_that_says_why() -> None:
     assert np.isfinite(found.numbers["net_power"][found.problem == ""]).all()
 
 
+def test_a_curve_is_varied_as_a_number() -> None:
+    """The case gives a polynomial; each value is the estimate with that number in its place."""
+    case = load_case(EXAMPLES / "textbook-array.toml", ['module.seebeck=["0.14 V/K", "1e-4 V/K^2"]'])
+    axis = {"module.seebeck": {"from": "0.04 V/K", "to": "0.05 V/K", "points": 2}}
+    found = solved(planned(with_axes(case, axis)))
+    for place, seebeck in enumerate(("0.04 V/K", "0.05 V/K")):
+        single = estimate(replace(case, {"module.seebeck": seebeck}))
+        assert found.numbers["net_power"][place] == pytest.approx(single.net_power, rel=1e-12)
+    with pytest.raises(CaseError, match=r"module.seebeck: is given beside \[module.legs\]"):
+        planned(with_axes(load_case(JACKET), axis))
+
+
+@pytest.mark.parametrize("sample", [None, 4096])
+def test_a_structure_that_one_count_makes_valid_is_found(sample: int | None) -> None:
+    """Blocks of 96 and 100 rows need 196 rows, one of 200 numbers, which no even choice of few need hit."""
+    axes = {"stack.rows": {"from": 1, "to": 200, "step": 1}, "electrical.row_blocks": [[96, 100], [4, 4], [7, 400]]}
+    found = planned(with_axes(load_case(EXAMPLES / "genset-jacket-water.toml"), axes, sample=sample))
+    part = found.solved(np.arange(found.count))
+    values = found.at(np.arange(found.count))
+    valid = part.problem == ""
+    fits = ((values["stack.rows"] == 196) & (values["electrical.row_blocks"] == 0)) | (
+        (values["stack.rows"] == 8) & (values["electrical.row_blocks"] == 1)
+    )
+    assert fits.any()
+    assert (valid == fits).all()
+    assert set(part.problem[values["electrical.row_blocks"] == 2]) == {
+        "none of 265 combinations tried makes a valid case, the first because of electrical.row_blocks: adds up to 407 "
+        "rows, and the stack has 8"
+    }
+
+
 @pytest.mark.parametrize("sequence", ["Sobol", "Halton"])
 def test_a_sample_is_even_and_repeatable(sequence: str) -> None:
     axes = {
@@ -339,6 +371,7 @@ def test_forms_of_an_axis() -> None:
         ("hot.mass_flow=0.1 kg/s:0.2 kg/s:3:4", "has 4 parts between colons"),
         ("hot.mass_flow=0.1 kg/s, 0.1 kg/s", "twice; give each value once"),
         ("cold.fluid=water, mud", "sweep.cold.fluid: "),
+        ("hot.mass_flow=0.1 kg/s:0.1 kg/s:3", 'from "0.1 kg/s" to the same value; give one value as a list'),
         ("stack.rows=4:20:6", "do not fall on whole numbers"),
         ("stack.rows", "is not FIELD=VALUES"),
         ("hot.duct.sink_height=1 mm, 2 mm", "no combination makes a valid case"),

@@ -19,8 +19,10 @@ from click.testing import CliRunner, Result
 
 from harvest.cli import cli
 from harvest.errors import InputError, NoAnswerError
-from harvest.model.reading import load_case
-from harvest.report.sweep_files import is_finished, journal_path, packed, unpacked, write_sweep
+from harvest.model.estimate import estimate
+from harvest.model.reading import load_case, replace
+from harvest.report.sweep_files import is_finished, journal_path, packed, print_sweep, unpacked, write_sweep
+from harvest.report.sweep_sheet import sweep_report
 from harvest.study.runs import Journal, run_chunks
 from harvest.study.sweep import SweepPlan, planned, with_axes
 
@@ -197,6 +199,72 @@ def run(*arguments: str) -> Result:
 
 def command(output: Path, *more: str) -> list[str]:
     return [sys.executable, "-m", "harvest", "sweep", str(EXHAUST), *AXES, "-o", str(output), *more]
+
+
+def test_a_finished_sweep_still_gives_its_plot_and_document(tmp_path: Path) -> None:
+    path, plot = tmp_path / "out.csv", tmp_path / "out.svg"
+    few = ["--vary", "hot.mass_flow=0.08 kg/s:0.1 kg/s:3", "-o", str(path), "--resume"]
+    first = run(*few, "--json")
+    content = path.read_bytes()
+    again = run(*few, "--json", "--plot", str(plot))
+    assert (first.exit_code, again.exit_code) == (0, 0)
+    assert json.loads(again.stdout) == json.loads(first.stdout)
+    assert "is finished already; solved again" in again.stderr
+    assert "the case" in plot.read_text()
+    assert path.read_bytes() == content
+    assert "nothing is left to do" in run(*few).stderr
+
+
+@pytest.mark.parametrize("full", [False, True])
+def test_the_most_net_power_is_told_with_and_without_what_is_refused(full: bool) -> None:
+    """Against single estimates of each combination: their results and limits, or their failed checks."""
+    axes = {"hot.mass_flow": [0.06, 0.1, 0.16], "hot.inlet_temperature": [650.0, 720.0, 850.0]}
+    case = load_case(EXHAUST)
+    singles = [
+        estimate(replace(case, {"hot.mass_flow": flow, "hot.inlet_temperature": hot}))
+        for flow in axes["hot.mass_flow"]
+        for hot in axes["hot.inlet_temperature"]
+    ]
+    limit, drop = case.module.maximum_hot_face_temperature, case.limits.back_pressure
+    assert limit is not None and drop is not None
+    kept = [
+        not any(check.status == "fail" for check in each.checks)
+        if full
+        else each.hottest_face_temperature <= limit and each.hot_pressure_drop <= drop
+        for each in singles
+    ]
+    plan = planned(with_axes(case, axes), full=full)
+    found = print_sweep(plan, None)
+    assert 0 < sum(kept) < len(kept)
+    assert found.within_limits == sum(kept)
+    best = max(one.net_power for one in singles)
+    within = max(one.net_power for one, is_kept in zip(singles, kept, strict=True) if is_kept)
+    assert best > 1.1 * within
+    assert found.best["net_power"] == pytest.approx(best, rel=1e-12)
+    assert found.best_within_limits["net_power"] == pytest.approx(within, rel=1e-12)
+    report = sweep_report(plan, found)
+    for words in (
+        ("there a check fails", "Most net power without a failed check: ")
+        if full
+        else ("there it is beyond a limit of the case", "Most net power within the limits of the case: ")
+    ):
+        assert words in report
+    assert f"{sum(kept)} of 9 combinations with an answer are with" in report
+    assert f"{within:.1f} W" in report
+
+
+def test_a_sweep_of_nothing_but_broken_limits_says_so() -> None:
+    case = load_case(EXHAUST, ['limits.back_pressure="1 Pa"'])
+    plan = planned(with_axes(case, {"hot.mass_flow": [0.08, 0.09]}))
+    found = print_sweep(plan, None)
+    assert (found.valid, found.within_limits, found.best_within_limits) == (2, 0, {})
+    assert "None of 2 combinations with an answer are within the limits of the case" in sweep_report(plan, found)
+
+
+def test_a_field_that_is_varied_twice_is_refused() -> None:
+    told = run("--vary", "hot.mass_flow=0.1 kg/s, 0.2 kg/s", "--vary", "hot.mass_flow=0.3 kg/s")
+    assert told.exit_code == 2
+    assert "--vary hot.mass_flow: is given twice; give all its values at once" in told.stderr
 
 
 def killed_until_done(output: Path, waits: Iterator[float], *more: str) -> int:

@@ -17,8 +17,9 @@ from harvest.cli import cli
 from harvest.errors import CaseError, NoAnswerError
 from harvest.model.batch import Batch
 from harvest.model.case import Case
-from harvest.model.estimate import SEARCHED_WITHOUT_LOAD, estimate, search_batch
+from harvest.model.estimate import estimate
 from harvest.model.reading import load_case, replace
+from harvest.model.search import SEARCHED_WITHOUT_LOAD, search_batch
 from harvest.report.files import case_text
 from harvest.study.limits import LIMITS, WINDOW
 from harvest.study.size import size

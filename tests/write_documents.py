@@ -15,6 +15,7 @@ from click.testing import CliRunner
 from harvest.cli import cli
 from harvest.model.case import DECLARATIONS
 from harvest.physics.fluids import FluidBatch, FluidSpec, fluid_table
+from harvest.report.memo.reference import value_reference
 from harvest.report.reference import CheckedNumber, case_reference, check_list, result_reference
 from harvest.study.common_tolerances import COMMON_TOLERANCES
 from tests.test_published import SOURCES, as_argument
@@ -146,6 +147,7 @@ def documents() -> dict[Path, str]:
         DOCS / "method.md": method(),
         DOCS / "case-file.md": case_reference(),
         DOCS / "results.md": result_reference(),
+        DOCS / "memo-values.md": value_reference(),
         DOCS / "command-line.md": command_line(),
         DOCS / "checks.md": check_list(checked_numbers()),
     }

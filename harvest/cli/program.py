@@ -83,7 +83,7 @@ def read_streams_of(case: str, overrides: tuple[str, ...]) -> Streams:
     return load_streams(Path(case), overrides)
 
 
-def _with_line(case: str, fault: str) -> str:
+def with_line(case: str, fault: str) -> str:
     """Name the file and line of the field that a fault begins with, where the case is a file that gives it."""
     from harvest.model.case_text import bounded_text, key_lines
 
@@ -98,7 +98,7 @@ def require_answer(case: str, answer: Estimate | Screening) -> None:
     if answer.valid:
         return
     if answer.bad_input:
-        raise CaseError([_with_line(case, fault) for fault in answer.faults])
+        raise CaseError([with_line(case, fault) for fault in answer.faults])
     raise NoAnswerError(f"no valid answer: {answer.problem}")
 
 

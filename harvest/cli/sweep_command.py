@@ -57,7 +57,11 @@ def sweep(
 
     if resume and output is None:
         raise InputError("--resume: goes on with an output; give -o FILE too")
-    axes = dict(map(varied_field, vary))
+    axes: dict[str, Any] = {}
+    for field, axis in map(varied_field, vary):
+        if field in axes:
+            raise InputError(f"--vary {field}: is given twice; give all its values at once")
+        axes[field] = axis
     varied = with_axes(loaded, axes, sample=sample, sequence=sequence, seed=seed, option="--vary")
     plan = planned(varied, full=full)
     from harvest.report.sweep_files import is_finished, print_sweep, sweep_table, write_sweep
@@ -89,13 +93,17 @@ def sweep(
     else:
         path = Path(output)
         if is_finished(plan, path, resume=resume):
-            click.echo(f"{path} is finished already; nothing is left to do", err=True)
-            return
-        try:
-            found = write_sweep(plan, path, command=command, **run)
-        except KeyboardInterrupt:
-            click.echo(f"\nharvest: interrupted; finished chunks are kept, --resume goes on with {path}", err=True)
-            raise
+            if plot is None and not as_json:
+                click.echo(f"{path} is finished already; nothing is left to do", err=True)
+                return
+            click.echo(f"{path} is finished already; solved again for what else is asked", err=True)
+            found = print_sweep(plan, None, **run)
+        else:
+            try:
+                found = write_sweep(plan, path, command=command, **run)
+            except KeyboardInterrupt:
+                click.echo(f"\nharvest: interrupted; finished chunks are kept, --resume goes on with {path}", err=True)
+                raise
     if plot is not None and found.valid:
         from harvest.report.plots import write_figure
         from harvest.report.sweep_plots import sweep_figure
@@ -111,4 +119,4 @@ def sweep(
 
         click.echo(sweep_report(plan, found))
     if not found.valid:
-        raise NoAnswerError(f"no combination has an answer: {'; '.join(found.reasons)}")
+        raise NoAnswerError(f"no combination has an answer: {'; '.join(found.reasons.sums)}")

@@ -27,7 +27,7 @@ from harvest.physics.thermoelectrics import figure_of_merit, maximum_efficiency
 from harvest.quantities import format_quantity
 
 if TYPE_CHECKING:
-    from harvest.model.estimate import Solved
+    from harvest.model.solution import Solved
 
 from harvest.model.module_checks import checks_of_the_module, checks_of_the_module_data
 from harvest.model.stream_checks import checks_of_a_stream, checks_of_heat_sinks

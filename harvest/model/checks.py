@@ -12,7 +12,7 @@ from harvest.physics.arrays import BoolArray, FloatArray, IntArray
 from harvest.quantities import format_quantity
 
 if TYPE_CHECKING:
-    from harvest.model.estimate import Solved
+    from harvest.model.solution import Solved
 
 CLOSURE_LIMIT = 1e-8
 GRID_LIMIT = 0.01

@@ -33,7 +33,7 @@ from harvest.physics.thermoelectrics import figure_of_merit
 from harvest.quantities import format_quantity
 
 if TYPE_CHECKING:
-    from harvest.model.estimate import Solved
+    from harvest.model.solution import Solved
 
 
 def checks_of_the_module(solved: Solved) -> Iterator[BatchCheck]:

@@ -677,6 +677,8 @@ class _Reading:
                 if (highest - lowest) % (points - 1) or lowest == highest:
                     raise QuantityError(f"points: {points} of them do not fall on whole numbers; give step instead")
                 return list(range(int(lowest), int(highest) + 1, int(highest - lowest) // (points - 1)))
+            if lowest == highest:
+                raise QuantityError(f"goes from {shown(raw['from'])} to the same value; give one value as a list")
             width = (highest - lowest) / (points - 1)
             return [lowest + width * place for place in range(points - 1)] + [highest]
         if whole:

@@ -36,7 +36,7 @@ from harvest.quantities import format_quantity
 
 if TYPE_CHECKING:
     from harvest.model.design import Stream
-    from harvest.model.estimate import Solved
+    from harvest.model.solution import Solved
     from harvest.physics.natural_convection import FinnedSink
 
 

@@ -15,6 +15,7 @@ from harvest.report.documents import plain
 from harvest.report.layout import WIDTH, heading, table, wrapped
 from harvest.report.terminal import title
 from harvest.study.doubt import WORTHWHILE
+from harvest.study.limits import WINDOW, limit_path
 from harvest.version import VERSION
 
 if TYPE_CHECKING:
@@ -24,6 +25,8 @@ MOST_INPUTS = 12
 """Inputs that stand in the table; the others are summed up."""
 LITTLE = 0.005
 """Share of the variance below which an input is nothing."""
+COARSE = 0.1
+"""Share of the variance by which shares may be off before they rank nothing."""
 MANY_INVALID = 0.05
 """Share of cases without an answer from which the percentiles are not to be trusted."""
 
@@ -129,11 +132,12 @@ def _limits(found: Doubt) -> list[str]:
         return []
     lines = []
     for each in found.limits:
-        kind = DECLARATIONS[f"limits.{each.limit}"].kind
+        kind = DECLARATIONS[limit_path(each.limit)].kind
         limit, nominal = format_quantity(each.value, kind), format_quantity(each.nominal, kind)
         chance = chance_text(each.chance, found.valid)
-        lines.append(wrapped(f"  {each.limit}: ", f"{limit} is broken {chance}; {nominal} as it stands", rest="      "))
-    return [heading("Limits, at the chosen load"), *lines]
+        said = f"{each.bound} {limit}, broken {chance}; {nominal} as it stands"
+        lines.append(wrapped(f"  {each.limit}: ", said, rest="      "))
+    return [heading("Limits, at the chosen load but for those without load"), *lines]
 
 
 def _value(each: UncertainInput) -> str:
@@ -175,7 +179,20 @@ def _inputs(found: Doubt) -> list[str]:
             "they stand. +- holds 95 of 100 values of a normal distribution, a factor those of a log-normal one.",
         )
     )
-    return lines
+    return [*lines, wrapped("  ", sureness_of_shares(found))]
+
+
+def sureness_of_shares(found: Doubt) -> str:
+    """How far shares that are estimated from a sample may be off, in words."""
+    intervals = [each for one in found.inputs for each in (one.first_order_interval, one.total_interval)]
+    off = max(0.5 * (high - low) for low, high in intervals)
+    if off == 0.0:
+        return "With one input there is nothing to share out."
+    advice = "; that is too coarse for a ranking, so take more --samples" if off > COARSE else ""
+    return (
+        f"Shares are estimated from the sample: they may be off by up to {np.ceil(100.0 * off):.0f} points of 100 (95 "
+        f"% interval by resampling; --json has that of each){advice}."
+    )
 
 
 def _sources(found: Doubt) -> list[str]:
@@ -229,6 +246,15 @@ def doubt_report(case: Case, found: Doubt) -> str:
                 "Caution: ",
                 f"{found.samples - found.valid:,} of {found.samples:,} cases have no answer, so the percentiles tell "
                 "of the others only.",
+            )
+        )
+    outside = sum(each.chance for each in found.limits if each.limit == WINDOW)
+    if outside > 0.0 and case.electrical.load != "maximum power":
+        lines.append(
+            wrapped(
+                "Caution: ",
+                f"the terminals are outside the converter's window {chance_text(outside, found.valid)}; the net power "
+                "is that of a converter which would work there too.",
             )
         )
     parts = (_measuring, _results, _limits, _inputs, _sources, _sample)

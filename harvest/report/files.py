@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import contextlib
-import copy
 import os
 import tempfile
 from collections.abc import Iterator
@@ -55,7 +54,7 @@ def case_text(case: Case) -> str:
     """A case as TOML text that reads back as the same case from any folder."""
     import tomli_w
 
-    document = copy.deepcopy(case.given)
+    document = _as_given(case.given)
     for path, declaration in DECLARATIONS.items():
         *parents, name = path.split(".")
         table: Any = document
@@ -82,3 +81,17 @@ def write_new(path: Path, content: str) -> None:
     if path.exists():
         raise InputError(f"{path}: exists already; remove it or choose another name")
     write_whole(path, content)
+
+
+def case_source(case: Case) -> str:
+    """A case as TOML text as it was given, paths as they were written."""
+    import tomli_w
+
+    return tomli_w.dumps(_as_given(case.given))
+
+
+def _as_given(document: Any) -> Any:
+    """A copy of a document without the fields that were taken out of it by None."""
+    if isinstance(document, dict):
+        return {name: _as_given(value) for name, value in document.items() if value is not None}
+    return [_as_given(each) for each in document] if isinstance(document, list | tuple) else document

@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import json
-import re
 import struct
 from collections import Counter
 from collections.abc import Generator, Mapping
@@ -15,7 +14,7 @@ import numpy as np
 
 from harvest.errors import InputError
 from harvest.model.case import DECLARATIONS, Case, case_hash
-from harvest.physics.arrays import FloatArray
+from harvest.physics.arrays import BoolArray, FloatArray
 from harvest.quantities import unit_of
 from harvest.report.files import refuse_existing
 from harvest.report.tables import (
@@ -35,6 +34,7 @@ from harvest.report.tables import (
     write_netcdf,
     write_parquet,
 )
+from harvest.study.reasons import Reasons
 from harvest.study.runs import Journal, Progress, run_chunks
 from harvest.study.sweep import SweepPart, SweepPlan, is_structure, planned, with_axes
 from harvest.version import VERSION
@@ -50,37 +50,42 @@ _LENGTHS = struct.Struct("<QQ")
 
 @dataclass
 class SweepFindings:
-    """What is kept of a sweep beside its table: counts, the most net power, and whole columns that were asked for."""
+    """What is kept of a sweep beside its table: counts, the most net power, and whole columns that were asked for.
+
+    `within_limits` counts combinations with an answer that keep the limits of the case, or fail no check where all are
+    made, and `best_within_limits` is the one of those with the most net power.
+    """
 
     combinations: int
     valid: int = 0
-    reasons: dict[str, int] = field(default_factory=dict)
+    within_limits: int = 0
+    reasons: Reasons[int] = field(default_factory=lambda: Reasons(MOST_REASONS))
     best: dict[str, Any] = field(default_factory=dict)
+    best_within_limits: dict[str, Any] = field(default_factory=dict)
     kept: dict[str, FloatArray] = field(default_factory=dict)
 
-    def add(self, columns: Columns, places: Any) -> None:
-        """Count a part of the table."""
-        problem, net = columns["problem"], columns["net_power"]
-        answered = columns["valid"]
+    def add(self, columns: Columns, places: Any, refused: BoolArray) -> None:
+        """Count a part of the table, of which some is beyond a limit."""
+        problem, answered = columns["problem"], columns["valid"]
+        kept = answered & ~refused
         self.valid += int(answered.sum())
+        self.within_limits += int(kept.sum())
         for text, count in Counter(problem[~answered].tolist()).items():
-            self._note(text, count)
-        if answered.any():
-            place = int(np.nanargmax(net))
-            if not self.best or net[place] > self.best["net_power"]:
-                self.best = {name: _plain(values[place]) for name, values in columns.items()}
+            self.reasons.add(text, count)
+        self.best = _better(self.best, columns, answered)
+        self.best_within_limits = _better(self.best_within_limits, columns, kept)
         for name, whole in self.kept.items():
             whole[places] = columns[name]
 
-    def _note(self, text: str, count: int) -> None:
-        """Count a reason; those that differ in numbers only are one."""
-        alike = re.sub(r"-?\d[\d.e+-]*", "#", text)
-        for known in self.reasons:
-            if re.sub(r"-?\d[\d.e+-]*", "#", known) == alike:
-                self.reasons[known] += count
-                return
-        known = text if len(self.reasons) < MOST_REASONS else "other reasons"
-        self.reasons[known] = self.reasons.get(known, 0) + count
+
+def _better(best: dict[str, Any], columns: Columns, among: BoolArray) -> dict[str, Any]:
+    """Row with the most net power of the best one so far and those `among` a part of the table."""
+    if not among.any():
+        return best
+    place = int(np.argmax(np.where(among, columns["net_power"], -np.inf)))
+    if best and columns["net_power"][place] <= best["net_power"]:
+        return best
+    return {name: _plain(values[place]) for name, values in columns.items()}
 
 
 def _plain(value: Any) -> Any:
@@ -280,7 +285,8 @@ def _parts(plan: SweepPlan, journal: Journal, found: SweepFindings) -> Generator
     for index, content in enumerate(journal.chunks(plan.chunks)):
         part, lines = unpacked(content)
         columns = sweep_columns(plan, index, part)
-        found.add(columns, plan.chunk(index))
+        places = plan.chunk(index)
+        found.add(columns, places, plan.refused(places, part))
         yield columns, lines
 
 

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+import textwrap
+from collections.abc import Iterator
 from dataclasses import dataclass
 from typing import TYPE_CHECKING, Any
 
@@ -9,8 +11,8 @@ import numpy as np
 
 from harvest.errors import InputError, NoAnswerError
 from harvest.model.batch import Batch
-from harvest.model.case import DECLARATIONS, value_at
-from harvest.model.estimate import search_batch
+from harvest.model.case import DECLARATIONS, Case, display, value_at
+from harvest.model.search import search_batch
 from harvest.physics.arrays import FloatArray
 from harvest.quantities import format_quantity, unit_of
 from harvest.report.plots import BLUE, GREEN, VERMILION, entitle, new_figure
@@ -21,6 +23,7 @@ if TYPE_CHECKING:
     from matplotlib.figure import Figure
 
 MOST_PANELS = 6
+LETTERS_OF_TITLE = 90
 LEVELS = 11
 # further Okabe-Ito colours, for curves of several choices
 COLOURS = (BLUE, VERMILION, GREEN, "#CC79A7", "#E69F00", "#56B4E9")
@@ -30,6 +33,7 @@ SHOWN: dict[str, tuple[str, float, float]] = {
     "temperature": ("degC", 1.0, -273.15),
     "length": ("mm", 1e3, 0.0),
     "pressure": ("kPa", 1e-3, 0.0),
+    "volume flow": ("m^3/h", 3600.0, 0.0),
 }
 """Units in which axes are drawn where the SI unit is not what a person reads: unit, factor, what is added."""
 
@@ -66,10 +70,11 @@ def _drawn_axes(plan: SweepPlan) -> list[str]:
 
 def _limits(plan: SweepPlan) -> dict[str, tuple[str, float]]:
     """Limits that the case has, with the results they bound, where the sweep has them."""
+    cases = [base for base in plan.bases if isinstance(base, Case)]
     return {
         name: bound
         for name, bound in LIMITS.items()
-        if np.isfinite(limit_of(plan.case, name)) and bound[0] in plan.results
+        if bound[0] in plan.results and any(np.isfinite(limit_of(case, name)) for case in cases)
     }
 
 
@@ -98,7 +103,8 @@ def _group_names(plan: SweepPlan, groups: list[str]) -> list[tuple[str, bool]]:
         words, own = [], True
         for path, index in zip(groups, place, strict=True):
             axis = plan.axes[path]
-            words.append(axis.labels[index] if axis.labels else f"{path} = {axis.values[index]:g}")
+            value = axis.values[index]
+            words.append(axis.labels[index] if axis.labels else f"{path} = {display(value, DECLARATIONS[path])}")
             own = own and axis.values[index] == value_at(plan.case, path)
         found.append((", ".join(words), own))
     return found
@@ -116,23 +122,21 @@ def _axis_label(path: str) -> str:
     return f"{path} [{SHOWN.get(declaration.kind, (unit_of(declaration.kind),))[0]}]"
 
 
-def _limits_of(plan: SweepPlan, values: dict[str, FloatArray], group: int) -> list[Limit]:
-    return [
-        Limit(_limit_words(plan, name), limit_of(plan.case, name), sign, values[result][group])
-        for name, (result, sign) in _limits(plan).items()
-    ]
-
-
-def _limit_words(plan: SweepPlan, name: str) -> str:
-    kind = DECLARATIONS[f"limits.{name}"].kind
-    return f"{name.replace('_', ' ')} {format_quantity(limit_of(plan.case, name), kind)}"
+def _limits_of(plan: SweepPlan, values: dict[str, FloatArray], group: int) -> Iterator[Limit]:
+    """Limits of a combination of choices; a module brings its own."""
+    case = plan.bases[group]
+    for name, (result, sign) in _limits(plan).items():
+        if isinstance(case, Case) and np.isfinite(limit := limit_of(case, name)):
+            words = f"{name.replace('_', ' ')} {format_quantity(limit, DECLARATIONS[f'limits.{name}'].kind)}"
+            yield Limit(words, limit, sign, values[result][group])
 
 
 def _design(plan: SweepPlan, across: list[str]) -> tuple[list[float], float] | None:
-    """Where the case itself lies on the axes, and its net power; None where it has no place or no answer."""
+    """Where the case itself lies within the axes, and its net power; None where it has no place or no answer."""
     place = [value_at(plan.case, path) for path in across]
-    if any(not isinstance(each, int | float) for each in place):
-        return None
+    for path, each in zip(across, place, strict=True):
+        if not isinstance(each, int | float) or not min(plan.axes[path].values) <= each <= max(plan.axes[path].values):
+            return None
     net = float(search_batch(Batch(plan.case)).scalars["net_power"][0])
     drawn = [float(_as_drawn(path, each)) for path, each in zip(across, place, strict=True)]
     return (drawn, net) if np.isfinite(net) else None
@@ -145,9 +149,11 @@ def _curves(plan: SweepPlan, across: list[str], values: dict[str, FloatArray], n
     order = np.argsort(places)
     for group, (name, _) in enumerate(names):
         net, colour = values["net_power"][group], COLOURS[group]
-        beyond = np.zeros(len(places), dtype=bool)
+        beyond, broken = np.zeros(len(places), dtype=bool), []
         for limit in _limits_of(plan, values, group):
-            beyond |= limit.sign * limit.result > limit.sign * limit.value
+            over = limit.sign * limit.result > limit.sign * limit.value
+            beyond |= over
+            broken += [limit.label] if over.any() else []
             for crossing in _crossings(places[order], limit.result[order] - limit.value):
                 axes.axvline(crossing, color=colour, linewidth=0.8, linestyle=":")
                 axes.annotate(
@@ -156,7 +162,7 @@ def _curves(plan: SweepPlan, across: list[str], values: dict[str, FloatArray], n
                 )  # fmt: skip
         axes.plot(places[order], net[order], color=colour, linestyle=STYLES[group], label=name or "net power")
         if beyond.any():
-            axes.plot(places[beyond], net[beyond], "x", color=colour, markersize=4, label=_beyond(name))
+            axes.plot(places[beyond], net[beyond], "x", color=colour, markersize=4, label=_beyond(name, broken))
     if (point := _design(plan, across)) is not None:
         axes.plot(*point[0], point[1], "o", color="black", fillstyle="none", label="the case")
     axes.set(xlabel=_axis_label(across[0]), ylabel="net power [W]")
@@ -165,8 +171,9 @@ def _curves(plan: SweepPlan, across: list[str], values: dict[str, FloatArray], n
     return figure
 
 
-def _beyond(name: str) -> str:
-    return f"{name}, beyond a limit" if name else "beyond a limit"
+def _beyond(name: str, limits: list[str]) -> str:
+    words = f"beyond {', '.join(limits)}"
+    return f"{name}, {words}" if name else words
 
 
 def _crossings(places: FloatArray, excess: FloatArray) -> list[float]:
@@ -205,14 +212,18 @@ def _maps(plan: SweepPlan, across: list[str], values: dict[str, FloatArray], nam
         shown = []
         for limit, style in zip(_limits_of(plan, values, group), LIMIT_STYLES * 3, strict=False):
             excess = limit.sign * (ordered(limit.result) - limit.value)
-            if not (excess.min() is not np.ma.masked and excess.min() < 0.0 < excess.max()):
+            if excess.max() is np.ma.masked or excess.max() <= 0.0:
                 continue
-            axes.contour(x[x_order], y[y_order], excess, [0.0], colors=VERMILION, linestyles=[style])
             axes.contourf(x[x_order], y[y_order], excess, [0.0, np.inf], colors="none", hatches=["///"])
-            shown += axes.plot([], [], color=VERMILION, linestyle=style, label=limit.label)
+            everywhere = excess.min() > 0.0
+            if not everywhere:
+                axes.contour(x[x_order], y[y_order], excess, [0.0], colors=VERMILION, linestyles=[style])
+            label = f"beyond {limit.label} everywhere" if everywhere else limit.label
+            shown += axes.plot([], [], color=VERMILION, linestyle="none" if everywhere else style, label=label)
         if point is not None and own:
             shown += axes.plot(*point[0], "o", color="white", markeredgecolor="black", label="the case")
-        axes.set(xlabel=_axis_label(across[0]), ylabel=_axis_label(across[1]), title=name)
+        axes.set(xlabel=_axis_label(across[0]), ylabel=_axis_label(across[1]))
+        axes.set_title(textwrap.fill(name, LETTERS_OF_TITLE // 2), fontsize=9, parse_math=False)
         if shown:
             axes.legend(handles=shown, fontsize=7, loc="best")
     for axes in panels[len(names) :]:

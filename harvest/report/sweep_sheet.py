@@ -29,6 +29,22 @@ def axis_text(plan: SweepPlan, path: str) -> str:
     return f"{low} to {high}, {'drawn between' if axis.between else f'{len(axis.values):,} values'}"
 
 
+_WORDS = {
+    False: ("there it is beyond a limit of the case", "within the limits of the case"),
+    True: ("there a check fails", "without a failed check"),
+}
+"""What is said of combinations that are refused and of those that are kept, by whether all checks are made."""
+
+
+def _best(plan: SweepPlan, name: str, best: dict[str, Any]) -> list[str]:
+    """Net power of a row and where it lies."""
+    lines = [f"{name}: {format_quantity(best['net_power'], 'power')} at"]
+    for path, axis in plan.axes.items():
+        value = best[path]
+        lines.append(f"  {path} = {value if axis.labels else display(value, DECLARATIONS[path])}")
+    return lines
+
+
 def sweep_report(plan: SweepPlan, found: SweepFindings) -> str:
     """Counts, the combination with the most net power, and why others have no answer."""
     how = f"drawn by {plan.case.sweep.sequence} points" if plan.case.sweep and plan.sampled else "every one of the grid"
@@ -37,14 +53,18 @@ def sweep_report(plan: SweepPlan, found: SweepFindings) -> str:
         *(f"  {path}: {axis_text(plan, path)}" for path in plan.axes),
     ]
     if found.best:
-        lines += ["", f"Most net power: {format_quantity(found.best['net_power'], 'power')} at"]
-        for path in plan.axes:
-            value = found.best[path]
-            lines.append(f"  {path} = {value if plan.axes[path].labels else display(value, DECLARATIONS[path])}")
-        lines.append("Limits and checks are not judged here; harvest estimate judges them.")
-    if found.reasons:
+        lines += ["", *_best(plan, "Most net power", found.best)]
+        beyond, within = _WORDS[plan.full]
+        if found.best_within_limits != found.best:
+            lines.append(f"  {beyond}")
+            if found.best_within_limits:
+                lines += ["", *_best(plan, f"Most net power {within}", found.best_within_limits)]
+        told = "the column failed_checks names what fails" if plan.full else "harvest estimate judges the other checks"
+        count = f"{found.within_limits:,}" if found.within_limits else "None"
+        lines += ["", f"{count} of {found.valid:,} combinations with an answer are {within}; {told}."]
+    if found.reasons.sums:
         lines.append(heading("Without an answer"))
-        lines += [wrapped(f"  {count:,}: ", text, rest="      ") for text, count in found.reasons.items()]
+        lines += [wrapped(f"  {count:,}: ", text, rest="      ") for text, count in found.reasons.sums.items()]
     return "\n".join(lines)
 
 
@@ -55,8 +75,10 @@ def sweep_document(plan: SweepPlan, table: Table, found: SweepFindings, output: 
             "output": output,
             "combinations": found.combinations,
             "valid": found.valid,
-            "reasons": found.reasons,
+            "within_limits": found.within_limits,
+            "reasons": found.reasons.sums,
             "best": found.best or None,
+            "best_within_limits": found.best_within_limits or None,
             "columns": [
                 {"name": column.name, "header": column.header, "meaning": column.meaning, "form": column.form}
                 for column in table.columns

@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import dataclasses
-import re
 from collections.abc import Callable, Iterator
 from dataclasses import dataclass, field
 
@@ -12,14 +11,16 @@ import numpy as np
 from harvest.errors import InputError, NoAnswerError
 from harvest.model.batch import Batch
 from harvest.model.case import DECLARATIONS, Case, value_at
-from harvest.model.design import BETWEEN, SPEC_NUMBERS, stream_excess_air_ratio
-from harvest.model.estimate import SEARCH_CELLS, Outcomes, search_batch
+from harvest.model.checks import AT_LEAST
+from harvest.model.design import SPEC_NUMBERS, stream_excess_air_ratio
+from harvest.model.search import SEARCH_CELLS, Outcomes, search_batch
 from harvest.model.stream_sections import HEAT_SINK
 from harvest.model.tolerances import FACTOR, NONE, UNIFORM, Tolerance
-from harvest.physics.arrays import FloatArray, IntArray, ObjectArray
+from harvest.physics.arrays import FloatArray, IntArray
 from harvest.quantities import StandardVolumeFlow
 from harvest.study.common_tolerances import COMMON_TOLERANCES
-from harvest.study.limits import LIMITS, WITHOUT_LOAD, limit_of
+from harvest.study.limits import LIMITS, ROUNDING, WINDOW, asks_without_load, limit_of
+from harvest.study.reasons import counted_reasons
 
 SAMPLES = 4096
 FEWEST_SAMPLES, MOST_SAMPLES = 64, 2**16
@@ -115,12 +116,14 @@ class UncertainInput:
 class LimitChance:
     """How likely a limit is broken: the name of the `limit`, the `result` it bounds, its `value` [SI].
 
-    `nominal` [SI] is the result of the case as it stands, `chance` [-] the share of valid cases beyond the limit.
+    The result must be "at most" or "at least" the value, as `bound` says; a converter's window is two limits. `nominal`
+    [SI] is the result of the case as it stands, `chance` [-] the share of valid cases beyond the limit.
     """
 
     limit: str
     result: str
     value: float
+    bound: str
     nominal: float
     chance: float
 
@@ -276,15 +279,19 @@ def _is_asked(case: Case, path: str) -> bool:
 # ---- The model that is asked
 
 
-def answered(case: Case, inputs: tuple[Drawn, ...], values: FloatArray) -> Outcomes:
-    """Results of the case with its uncertain fields at `values` [SI], (inputs, cases); in bearable chunks."""
+def answered(case: Case, inputs: tuple[Drawn, ...], values: FloatArray, *, without_load: bool = False) -> Outcomes:
+    """Results of the case with its uncertain fields at `values` [SI], (inputs, cases); in bearable chunks.
+
+    With `without_load` they hold what limits without load look at, which takes a solution of its own.
+    """
     cases = values.shape[1]
     chunk = max(1, SEARCH_CELLS // (case.stack.rows * case.stack.segments))
     parts = []
     for first in range(0, cases, chunk):
         some = values[:, first : first + chunk]
         varied = {each.path: each.in_steps(numbers) for each, numbers in zip(inputs, some, strict=True)}
-        parts.append(search_batch(_with_few_gases(Batch(case, some.shape[1], varied))))
+        batch = _with_few_gases(Batch(case, some.shape[1], varied))
+        parts.append(search_batch(batch, without_load=without_load))
     return Outcomes(
         {name: np.concatenate([part.scalars[name] for part in parts]) for name in parts[0].scalars},
         np.concatenate([part.problem for part in parts]),
@@ -396,10 +403,11 @@ def doubt(case: Case, samples: int = SAMPLES, seed: int = SEED, progress: Progre
         return np.stack([each.values(row) for each, row in zip(inputs, points, strict=True)])
 
     nominal, swings = _one_at_a_time(case, inputs)
-    found = answered(case, inputs, at(probabilities(len(inputs), samples, seed)))
+    points = probabilities(len(inputs), samples, seed)
+    found = answered(case, inputs, at(points), without_load=asks_without_load(case))
     valid = found.problem == ""
     if not valid.any():
-        raise NoAnswerError("\n".join(["no drawn case has an answer", *_counted(found.problem)]))
+        raise NoAnswerError("\n".join(["no drawn case has an answer", *counted_reasons(found.problem)]))
     if progress is not None:
         progress(samples, all_of_them)
     shares = indices(
@@ -426,7 +434,7 @@ def doubt(case: Case, samples: int = SAMPLES, seed: int = SEED, progress: Progre
         samples=samples,
         seed=seed,
         valid=int(valid.sum()),
-        invalid=_counted(found.problem),
+        invalid=counted_reasons(found.problem),
         index_samples=index_samples,
         index_cases=shares.cases,
         index_invalid=shares.invalid,
@@ -440,7 +448,7 @@ def _one_at_a_time(case: Case, inputs: tuple[Drawn, ...]) -> tuple[dict[str, flo
     values = np.tile(np.array([each.nominal for each in inputs])[:, None], 1 + 2 * count)
     for place, each in enumerate(inputs):
         values[place, 1 + place], values[place, 1 + count + place] = each.values(np.array([0.1, 0.9]))
-    found = answered(case, inputs, values)
+    found = answered(case, inputs, values, without_load=asks_without_load(case))
     if found.problem[0]:
         raise NoAnswerError(f"the case has no answer as it stands: {found.problem[0]}")
     first = {name: float(each[0]) for name, each in found.scalars.items()}
@@ -487,19 +495,24 @@ def _is_told(case: Case, result: str) -> bool:
 
 def _chances(case: Case, nominal: dict[str, float], scalars: dict[str, FloatArray]) -> Iterator[LimitChance]:
     for name, (result, sign) in LIMITS.items():
-        limit = np.nan if name in WITHOUT_LOAD else limit_of(case, name)
+        limit = limit_of(case, name)
         if np.isfinite(limit):
-            chance = float((sign * scalars[result] > sign * limit).mean())
-            yield LimitChance(name, result, limit, nominal[result], chance)
+            yield _chance(name, result, limit, sign, nominal, scalars)
+    window = case.electrical.converter_window
+    if window is not None and not case.electrical.independent:
+        for limit, sign in zip(window, (-1.0, 1.0), strict=True):
+            yield _chance(WINDOW, "voltage", limit, sign, nominal, scalars, ROUNDING * limit)
 
 
-def _counted(problems: ObjectArray) -> dict[str, int]:
-    """Count reasons of cases without an answer, the most frequent first; those that differ in numbers only are one."""
-    texts: dict[str, str] = {}
-    counts: dict[str, int] = {}
-    for problem in problems[problems != ""]:
-        reason = str(problem).split(BETWEEN)[0]
-        key = re.sub(r"-?\d[\d.e+-]*", "#", reason)
-        texts.setdefault(key, reason)
-        counts[key] = counts.get(key, 0) + 1
-    return {texts[key]: counts[key] for key in sorted(counts, key=lambda each: -counts[each])}
+def _chance(
+    name: str,
+    result: str,
+    limit: float,
+    sign: float,
+    nominal: dict[str, float],
+    scalars: dict[str, FloatArray],
+    rounding: float = 0.0,
+) -> LimitChance:
+    """Chance of a limit from above, `sign` 1, or from below, -1."""
+    broken = sign * scalars[result] > sign * limit + rounding
+    return LimitChance(name, result, limit, "at most" if sign > 0 else AT_LEAST, nominal[result], float(broken.mean()))

@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import re
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass, field
 from pathlib import Path
@@ -14,13 +13,13 @@ from harvest.errors import InputError, NoAnswerError
 from harvest.model.batch import Batch
 from harvest.model.case import Case, case_hash
 from harvest.model.costs import building_cost
-from harvest.model.design import BETWEEN
-from harvest.model.estimate import SEARCH_CELLS, drive_power_without_heat, search_batch
 from harvest.model.reading import replace
+from harvest.model.search import SEARCH_CELLS, drive_power_without_heat, search_batch
 from harvest.model.study_sections import ALWAYS_ON
 from harvest.physics.arrays import BoolArray, FloatArray, IntArray, ObjectArray
 from harvest.study.duty_log import FLOWS, DutyLog, read_duty_log
 from harvest.study.limits import asks_without_load, bounded_results, broken_limits
+from harvest.study.reasons import Reasons
 from harvest.version import VERSION
 
 YEAR = 8760.0 * 3600.0
@@ -371,12 +370,10 @@ def exceeded(power: FloatArray, time: FloatArray, shares: FloatArray) -> FloatAr
 
 def grouped_time(problem: ObjectArray, time: FloatArray) -> dict[str, float]:
     """Time by the reason why there is no answer; reasons that differ in numbers only are one."""
-    found: dict[str, tuple[str, float]] = {}
+    found = Reasons[float]()
     for place in np.flatnonzero(problem != ""):
-        reason = problem[place].split(BETWEEN)[0]
-        text, before = found.get(key := re.sub(r"-?\d[\d.e+-]*", "#", reason), (reason, 0.0))
-        found[key] = (text, before + float(time[place]))
-    return dict(found.values())
+        found.add(problem[place], float(time[place]))
+    return found.sums
 
 
 def duty_year(case: Case, net_energy: float, answered: float, flowing: float) -> dict[str, float]:

@@ -12,7 +12,7 @@ from harvest.model.batch import Batch, StreamBatch
 from harvest.model.case import Case
 from harvest.model.costs import costs
 from harvest.model.design import Faults, stream_fluid
-from harvest.model.estimate import Outcomes
+from harvest.model.search import Outcomes
 from harvest.physics.arrays import BoolArray, FloatArray, IntArray, ObjectArray
 from harvest.study.duty import NO_ANSWER, ON, Course, duty_year, logged_batch, switched_answers
 from harvest.study.duty_log import DutyLog

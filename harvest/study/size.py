@@ -5,7 +5,6 @@ from __future__ import annotations
 import copy
 import dataclasses
 import functools
-import re
 from collections.abc import Callable, Iterator
 from dataclasses import dataclass, field
 from pathlib import Path
@@ -17,15 +16,16 @@ from harvest.errors import InputError, NoAnswerError
 from harvest.model.batch import Batch
 from harvest.model.case import DECLARATIONS, Case
 from harvest.model.case_fields import MOST_MODULES
-from harvest.model.design import BETWEEN
-from harvest.model.estimate import SEARCH_CELLS, Outcomes, estimate, search_batch
+from harvest.model.estimate import estimate
 from harvest.model.reading import replace
 from harvest.model.results import Estimate
+from harvest.model.search import SEARCH_CELLS, Outcomes, search_batch
 from harvest.physics.arrays import BoolArray, FloatArray, IntArray
 from harvest.study.duty import DutyBalance, case_log, duty
 from harvest.study.duty_log import DutyLog
 from harvest.study.duty_search import DutyMeasure
 from harvest.study.limits import asks_without_load, bounded_results, broken_limits, limit_path
+from harvest.study.reasons import Reasons
 from harvest.study.wirings import (
     MOST_BLOCKS,
     WIRING,
@@ -254,7 +254,7 @@ class _Tally:
         self.parts: list[dict[str, FloatArray]] = []
         self.kept = sorted({*KEPT, *bounded_results(case)})
         self.searches_wiring = case.size is not None and case.size.wiring == "search"
-        self.reasons: dict[str, tuple[str, int]] = {}
+        self.reasons = Reasons[int]()
         self.choices = 0
 
     def add(self, values: dict[str, FloatArray], *, counted: bool = True) -> None:
@@ -263,7 +263,7 @@ class _Tally:
         bearable = counts <= MOST_MODULES
         if not bearable.all():
             if counted:
-                self.note("stack.rows: too many modules to be solved", int((~bearable).sum()))
+                self.reasons.add("stack.rows: too many modules to be solved", int((~bearable).sum()))
                 self.choices += int((~bearable).sum())
             if bearable.any():
                 self.add({path: each[bearable] for path, each in values.items()}, counted=counted)
@@ -282,7 +282,7 @@ class _Tally:
             if counted:
                 self.choices += batch.cases
                 for problem in found.problem[found.problem != ""]:
-                    self.note(problem.split(BETWEEN)[0], 1)
+                    self.reasons.add(problem, 1)
             self.keep(part, found)
 
     def structures(self, values: dict[str, FloatArray]) -> Iterator[tuple[tuple[int, ...] | None, BoolArray]]:
@@ -312,12 +312,6 @@ class _Tally:
             **{name: scalars[name] for name in self.kept},
         }
         self.parts.append({name: np.asarray(each)[valid] for name, each in part.items()})
-
-    def note(self, reason: str, count: int) -> None:
-        """Count a reason; reasons that differ in numbers only are one."""
-        key = re.sub(r"-?\d[\d.e+-]*", "#", reason)
-        text, before = self.reasons.get(key, (reason, 0))
-        self.reasons[key] = (text, before + count)
 
     def all(self) -> _Found:
         """Every choice with an answer so far."""
@@ -593,7 +587,7 @@ def size(case: Case, progress: Progress | None = None, *, log: DutyLog | str | P
         best = estimate(best_case)
         if best.valid:
             break
-        tally.note(best.problem.split(BETWEEN)[0], 1)
+        tally.reasons.add(best.problem, 1)
         found.numbers["net_power"][wired_alike] = -np.inf
     else:
         raise NoAnswerError(f"the best choices have no estimate: {best.problem}")
@@ -621,7 +615,7 @@ def size(case: Case, progress: Progress | None = None, *, log: DutyLog | str | P
         worthwhile=_worthwhile(found, allowed, wanted.least_net_watts_per_module),
         choices_tried=tally.choices,
         choices_refined=refined,
-        choices_invalid=dict(tally.reasons.values()),
+        choices_invalid=tally.reasons.sums,
         choices_beyond_limits=beyond,
         choices_within_limits=within_limits,
         binding_limits=single,
@@ -704,7 +698,7 @@ def _without_window(case: Case, best: Estimate) -> float | None:
 
 
 def _said(tally: _Tally) -> list[str]:
-    return [f"{_choices(count)}: {text}" for text, count in tally.reasons.values()]
+    return [f"{_choices(count)}: {text}" for text, count in tally.reasons.sums.items()]
 
 
 def _choices(count: int) -> str:

@@ -22,20 +22,22 @@ from harvest.model.case_rules import ALTERNATIVES
 from harvest.model.case_text import toml_value
 from harvest.model.checks import FAIL, WARN
 from harvest.model.design import BETWEEN
-from harvest.model.estimate import SEARCHED, SEARCHED_WITHOUT_LOAD, estimate_batch, search_batch
+from harvest.model.estimate import estimate_batch
 from harvest.model.reading import NUMBERS, replace
 from harvest.model.results import OF_SEARCHES, SCALARS
+from harvest.model.search import SEARCHED, SEARCHED_WITHOUT_LOAD, search_batch
 from harvest.model.study_sections import MOST_COMBINATIONS
-from harvest.physics.arrays import FloatArray, IntArray, ObjectArray
-from harvest.study.limits import asks_without_load
+from harvest.physics.arrays import BoolArray, FloatArray, IntArray, ObjectArray
+from harvest.quantities import unit_of
+from harvest.study.limits import asks_without_load, broken_limits
 from harvest.version import VERSION
 
 CHUNK_CELLS = 25_000
 """Rows times combinations that are solved at a time: few enough for the caches, and to share among processes."""
 CHUNK_CASES = 5_000
 MOST_STRUCTURES = 2_000
-MOST_TRIED = 64
-"""Combinations of numbers that are tried, spread over all, until one of them makes a valid case of a structure."""
+MOST_TRIED, MOST_COUNTS_TRIED = 64, 1_000
+"""Combinations of numbers, spread over all, and then of counts alone, tried until a structure is a valid case."""
 STRUCTURAL = frozenset(
     {
         "site.ambient_pressure",  # gauge pressures and defaults are made of it when a case is read
@@ -170,6 +172,21 @@ class SweepPlan:
             for name, words in found.texts.items():
                 texts[name][which] = words
         return SweepPart(numbers, texts, problem)
+
+    def refused(self, places: IntArray, part: SweepPart) -> BoolArray:
+        """Whether solved combinations are beyond a limit of their case or, where all are made, fail a check."""
+        if self.full:
+            return np.asarray(part.texts["failed_checks"] != "")
+        refused = np.zeros(len(places), dtype=bool)
+        structure = _structure_of(self.axes, self.at(places), len(places))
+        for each in np.unique(structure):
+            which, base = np.flatnonzero(structure == each), self.bases[each]
+            if isinstance(base, Case):
+                for broken in broken_limits(
+                    base, {name: values[which] for name, values in part.numbers.items()}
+                ).values():
+                    refused[which] |= broken
+        return refused
 
     def digest(self) -> str:
         """SHA-256 of everything that the table's values depend on."""
@@ -323,34 +340,57 @@ def _base(plan: SweepPlan, structure: dict[str, Any]) -> Case | str:
     """Valid case of a structure, to which numbers are applied; or why there is none.
 
     Numbers that the case gives stay as they are unless they do not go with the structure, and then those of some
-    combinations are tried.
+    combinations are tried, and last every combination of counts, which is what a structure most often hangs on.
     """
     case = plan.case
     numbers = [path for path, axis in plan.axes.items() if not is_structure(path, axis)]
     changes = {**dict.fromkeys(_without_use(plan, structure)), **structure}
     first = plan.at(np.zeros(1, dtype=np.int64))
     # a number that is not written in the case is written, so that it is judged whether it applies
-    absent = {path: first[path] for path in numbers if not _is_given(case, path)}
+    absent = {path: first[path][0] for path in numbers if not _is_given(case, path)}
     spread = np.unique(np.linspace(0, plan.count - 1, MOST_TRIED).astype(np.int64))
     tried = plan.at(spread)
-    said = ""
-    for place in range(-1, len(spread)):
-        chosen = {path: each[0] for path, each in absent.items()}
-        if place >= 0:
-            chosen = {path: tried[path][place] for path in numbers}
-        try:
-            base = replace(case, {**changes, **{path: _typed(path, each) for path, each in chosen.items()}})
-        except CaseError as error:
-            said = said or BETWEEN.join(fault.removeprefix("case: ") for fault in error.faults)
-            if not numbers:
-                break
-        else:
-            return dataclasses.replace(base, sweep=None)
-    return said
+    said: list[str] = []
+    # where the reason does not change with the numbers, more of them are of no use
+    for candidates in (
+        [absent, *({path: tried[path][place] for path in numbers} for place in range(len(spread)))],
+        ({**absent, **counts} for counts in _counts(plan, numbers)),
+    ):
+        for chosen in candidates:
+            try:
+                base = replace(case, {**changes, **{path: _typed(path, each) for path, each in chosen.items()}})
+            except CaseError as error:
+                said.append(BETWEEN.join(fault.removeprefix("case: ") for fault in error.faults))
+                if not numbers:
+                    return said[0]
+            else:
+                return dataclasses.replace(base, sweep=None)
+        if len(set(said)) == 1:
+            return said[0]
+    return f"none of {len(said):,} combinations tried makes a valid case, the first because of {said[0]}"
 
 
-def _typed(path: str, value: float) -> float | int:
-    return int(value) if DECLARATIONS[path].form == "integer" else float(value)
+def _counts(plan: SweepPlan, numbers: Sequence[str]) -> Iterator[dict[str, float]]:
+    """Combinations of the numbers that are whole, spread over all of them."""
+    counts = {
+        path: np.arange(axis.between[0], axis.between[1] + 1) if axis.between else np.array(axis.values)
+        for path, axis in plan.axes.items()
+        if path in numbers and DECLARATIONS[path].form == "integer"
+    }
+    if not counts:
+        return
+    shape = tuple(map(len, counts.values()))
+    for place in np.unique(np.linspace(0, math.prod(shape) - 1, MOST_COUNTS_TRIED).astype(np.int64)):
+        indices = np.unravel_index(place, shape)
+        yield {path: values[index] for (path, values), index in zip(counts.items(), indices, strict=True)}
+
+
+def _typed(path: str, value: float) -> float | int | str:
+    """Write a number as a case takes it: one that may also be a curve stands with its unit."""
+    declaration = DECLARATIONS[path]
+    if declaration.form == "integer":
+        return int(value)
+    return float(value) if declaration.form != "curve" else f"{float(value)!r} {unit_of(declaration.kind)}"
 
 
 def _without_use(plan: SweepPlan, structure: Mapping[str, Any]) -> list[str]:

@@ -12,8 +12,9 @@ import numpy as np
 from harvest.model.batch import Batch
 from harvest.model.case import Case
 from harvest.model.checks import SHOCK_VOLTAGE
-from harvest.model.estimate import MOST_APART, Outcomes, search_batch
 from harvest.model.loads import MAXIMUM_POWER
+from harvest.model.search import Outcomes, search_batch
+from harvest.model.solution import MOST_APART
 from harvest.physics.arrays import BoolArray, FloatArray, IntArray
 from harvest.study.limits import broken_limits, limit_path
 
