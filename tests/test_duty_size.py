@@ -262,3 +262,11 @@ def test_another_goal_is_not_given_up_for_a_log_in_silence() -> None:
         cli, ["size", week, "--set", 'size.objective="net power"', "--set", "size.rows=[4]", "--duty", log, "--json"]
     )
     assert json.loads(power.stdout)["objective"] == "yearly energy"
+
+
+def test_a_best_that_gives_nothing_over_a_log_is_not_worth_it() -> None:
+    week = ["size", str(EXAMPLES / "genset-week.toml")]
+    never_on = ["--set", "size.rows=[4]", "--set", 'limits.hot_pressure_drop="0.01 kPa"']
+    sentence = "Not worth it: no choice gives more over the log than it takes."
+    assert sentence in CliRunner().invoke(cli, [*week, *never_on]).stdout
+    assert sentence not in CliRunner().invoke(cli, [*week, "--set", "size.rows=[4]"]).stdout

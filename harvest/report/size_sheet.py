@@ -289,6 +289,10 @@ def _over_log(case: Case, found: SizedDuty) -> str:
     )
 
 
+def _is_loss(found: SizedDuty) -> bool:
+    return found.balance.net_energy <= 0
+
+
 def _bins(found: SizedDuty) -> str:
     """How the log was searched."""
     if found.bins == found.conditions:
@@ -314,7 +318,11 @@ def size_report(case: Case, found: Sizing) -> str:
         *(
             _at_its_streams(case, found)
             if found.duty is None
-            else [wrapped("", _over_log(case, found.duty)), wrapped("", _bins(found.duty))]
+            else [
+                wrapped("", _over_log(case, found.duty)),
+                *(["Not worth it: no choice gives more over the log than it takes."] * _is_loss(found.duty)),
+                wrapped("", _bins(found.duty)),
+            ]
         ),
         *_flatness(found),
         wrapped("", stack_sentence(found.best_case, found.best) + "."),
