@@ -58,7 +58,8 @@ Names are those of the library's `Estimate` and of `harvest estimate --json`, wh
 All numbers are SI, of the whole stack, at its terminals; where a number does not apply, it is NaN in the library
 and null in JSON; a case without an answer has `valid` false, says why in `problem`, and has no numbers at all.
 Beside the tables below an estimate holds `checks` (each with name, kind, value, limit, bound, status and text),
-`sources`, `version` and `case_hash`.
+`sources`, `version` and `case_hash`. The results of a sizing and of a study of doubt, with units and meanings, are in
+[memo-values.md](memo-values.md); the JSON of every study has the `units` of its numbers.
 
 This page is made from the declarations in `harvest/model/results.py`.
 """
