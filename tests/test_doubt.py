@@ -329,6 +329,7 @@ TEXT = LOOP.read_text("utf-8")
         ('"hot.inlet_temperature" = { even = "2 K" }', 'is no tolerance; write for example "2 K"'),
         ('"hot.inlet_temperature" = { uniform = "2 K" }', "is not a pair of differences"),
         ('"hot.inlet_temperature" = { uniform = ["2 K", "-1 K"] }', "give the lower end first"),
+        ('"hot.volume_flow" = { uniform = ["-150 %", "5 %"] }', "takes away more than all of it; give at least -100 %"),
         ('"hot.volume_flow" = { uniform = ["-2 %", "1 L/min"] }', "one end is in % and the other is not"),
         ('"hot.volume_flow" = { factor = 0.5 }', "give above 1 and at most 100"),
         ('"site.ambient_pressure" = "1 kPa"', "give hot.pressure or cold.pressure a tolerance"),

@@ -71,6 +71,15 @@ def test_a_whole_memo_with_its_range_and_costs() -> None:
     assert f"`{first}`" in text[text.index("## What to measure next") :]
 
 
+def test_a_memo_tells_the_chances_of_limits_without_load_and_of_the_converter_window() -> None:
+    case = replace(load_case(WATER), {"limits.maximum_open_circuit_voltage": "43 V"})
+    made = memo(case, date=DAY, without=("size",))
+    assert_shows_results(made)
+    text = made.markdown().replace("\N{NO-BREAK SPACE}", " ")
+    assert "| maximum open circuit voltage, at most | 43.00 V | " in text
+    assert "| converter window, at least | 12.00 V | 0.00 % |" in text
+
+
 @pytest.mark.slow
 @every_case
 def test_whole_memos_of_all_cases(path: Path) -> None:

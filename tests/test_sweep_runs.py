@@ -201,6 +201,19 @@ def command(output: Path, *more: str) -> list[str]:
     return [sys.executable, "-m", "harvest", "sweep", str(EXHAUST), *AXES, "-o", str(output), *more]
 
 
+def test_a_file_that_came_between_is_not_written_over(tmp_path: Path) -> None:
+    """A run is stopped, and somebody puts a file in the place of its table meanwhile."""
+    path, plan = tmp_path / "out.csv", small_plan(30)
+    write_sweep(plan, path)
+    Journal(journal_path(path), {"run": plan.digest(), "suffix": ".csv", "command": ""}).close()
+    assert not is_finished(plan, path, resume=True)
+    path.with_name("out.csv-metadata.json").unlink()
+    path.write_text("of somebody else")
+    with pytest.raises(InputError, match=r"out\.csv: exists already"):
+        is_finished(plan, path, resume=True)
+    assert path.read_text() == "of somebody else"
+
+
 def test_a_finished_sweep_still_gives_its_plot_and_document(tmp_path: Path) -> None:
     path, plot = tmp_path / "out.csv", tmp_path / "out.svg"
     few = ["--vary", "hot.mass_flow=0.08 kg/s:0.1 kg/s:3", "-o", str(path), "--resume"]

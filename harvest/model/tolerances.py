@@ -126,6 +126,8 @@ def _uniform(raw: Any, kind: str) -> Tolerance:
     (low, low_share), (high, high_share) = (_difference(each, kind) for each in raw)
     if low_share != high_share:
         raise QuantityError("uniform: one end is in % and the other is not; write both alike")
+    if low_share and low < -1.0:
+        raise QuantityError(f"uniform: {shown(raw[0])} takes away more than all of it; give at least -100 %")
     if low >= high:
         raise QuantityError(f"uniform: {shown(raw[0])} is not below {shown(raw[1])}; give the lower end first")
     return Tolerance(UNIFORM, low, high, low_share)

@@ -199,12 +199,11 @@ def is_finished(plan: SweepPlan, path: Path, *, resume: bool) -> bool:
     """Whether a run to go on with is finished already; raises InputError where a file is in the way."""
     table_suffix(path)
     journal = journal_path(path)
-    if journal.exists():
-        if not resume:
-            raise InputError(f"{journal}: is of an unfinished run; go on with it by --resume, or remove it")
-        return False
+    if journal.exists() and not resume:
+        raise InputError(f"{journal}: is of an unfinished run; go on with it by --resume, or remove it")
     if resume and path.exists() and read_about(path).get("run") == plan.digest():
-        return True
+        # a run that was stopped after its table was written still has its journal, and writes the same again
+        return not journal.exists()
     refuse_existing(path)
     return False
 

@@ -141,7 +141,7 @@ class InputDoubt:
 class LimitDoubt:
     """How likely a limit is broken."""
 
-    limit: str = told("Name of the limit.")
+    limit: str = told("Name of the limit, and on which side of it a result must be.")
     value: Value = told("The limit.", unit="SI")
     chance: Value = told("Share of the cases in which it is broken.", unit="1")
 
@@ -163,7 +163,7 @@ class DoubtContents:
     inputs: tuple[InputDoubt, ...] = told("Fields in doubt, those that matter most first.", of=InputDoubt, many=True)
     most: tuple[InputDoubt, ...] = told("Those of them that bring more than a trace.", of=InputDoubt, many=True)
     measure: tuple[InputDoubt, ...] = told("Those of them that are worth measuring.", of=InputDoubt, many=True)
-    limits: tuple[LimitDoubt, ...] = told("Limits, at the chosen load.", of=LimitDoubt, many=True)
+    limits: tuple[LimitDoubt, ...] = told("Limits, at the chosen load or without load.", of=LimitDoubt, many=True)
 
 
 @dataclass(frozen=True)

@@ -58,6 +58,7 @@ from harvest.report.memo.values import (
 )
 from harvest.report.terminal import fluid_words, stack_sentence, title, verdict
 from harvest.study.doubt import Doubt, doubt
+from harvest.study.limits import limit_path
 from harvest.study.size import Sizing, size
 from harvest.version import VERSION
 
@@ -476,8 +477,8 @@ def _doubt(found: Doubt | None, path: str) -> DoubtContents | None:
         measure=tuple(line for name in found.worth_measuring for line in lines if line.field == name),
         limits=tuple(
             LimitDoubt(
-                each.limit.replace("_", " "),
-                Value(each.value, DECLARATIONS[f"limits.{each.limit}"].kind, f"{path}.limits[{i}].value", 4),
+                f"{each.limit.replace('_', ' ')}, {each.bound}",
+                Value(each.value, DECLARATIONS[limit_path(each.limit)].kind, f"{path}.limits[{i}].value", 4),
                 share(each.chance, f"limits[{i}].chance", 3),
             )
             for i, each in enumerate(found.limits)
