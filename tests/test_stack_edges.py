@@ -380,3 +380,15 @@ def test_gas_cooled_below_the_cold_inlet_keeps_its_properties() -> None:
         "H", "T", found.hot_outlet_temperature, "P", 101325.0, "Air"
     )
     assert found.hot_heat_flow == pytest.approx(0.01 * fall, rel=1e-8)
+
+
+@pytest.mark.parametrize(("lowest", "expected"), [("5 V", "pass"), ("19 V", "fail")])
+def test_the_window_of_converters_of_their_own_holds_for_every_string(lowest: str, expected: str) -> None:
+    changes = [f'electrical.converter_window=["{lowest}", "60 V"]', "electrical.independent=true"]
+    found = estimate(
+        load_case(Path(__file__).parents[1] / "examples" / "genset-exhaust.toml", [*changes, "electrical.load=matched"])
+    )
+    (check,) = (each for each in found.checks if each.name == "converter window")
+    assert check.status == expected
+    assert check.value == pytest.approx(13.84, abs=0.01)
+    assert "each converter works from" in check.text

@@ -288,18 +288,28 @@ def _of_electricity(solved: Solved, scalars: dict[str, FloatArray]) -> Iterator[
         yield _limit_check("maximum open circuit voltage", "voltage", highest, allowed, "at most")
     window = solved.made.batch.base.electrical.converter_window
     if window is not None:
-        voltage = scalars["voltage"]
-        outside = (voltage < window[0] * (1 - 1e-9)) | (voltage > window[1] * (1 + 1e-9))
+        strings = solved.chosen.state.string_voltage
+        least, most = strings.min(axis=0), strings.max(axis=0)
+        outside = ~((least >= window[0] * (1 - 1e-9)) & (most <= window[1] * (1 + 1e-9)))
+        own = solved.made.problem.circuit.independent
+
+        def of_converter(i: int) -> str:
+            spread = format_quantity(least[i], "voltage")
+            if own and most[i] > least[i]:
+                spread += f" to {format_quantity(most[i], 'voltage')}"
+            return (
+                f"{'Voltages at the strings are' if own else 'The terminal voltage is'} {spread}; "
+                f"{'each' if own else 'the'} converter works from {format_quantity(window[0], 'voltage')} to "
+                f"{format_quantity(window[1], 'voltage')}."
+            )
+
         yield BatchCheck(
             "converter window",
             "voltage",
-            voltage,
+            least,
             for_all(solved, window[0]),
             graded(outside),
-            lambda i: (
-                f"The terminal voltage is {format_quantity(voltage[i], 'voltage')}; the converter works from "
-                f"{format_quantity(window[0], 'voltage')} to {format_quantity(window[1], 'voltage')}."
-            ),
+            of_converter,
             bound=AT_LEAST,
         )
         yield BatchCheck(
