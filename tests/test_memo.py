@@ -321,6 +321,18 @@ def test_what_is_not_modelled_stands_in_the_method() -> None:
     assert ", ".join(NOT_MODELLED).lower() in method.lower()
 
 
+def test_the_verdict_tells_both_a_failed_check_and_a_loss() -> None:
+    case = replace(load_case(WATER), {"electrical.load": "fixed voltage", "electrical.load_voltage": 80.0})
+    said = memo(case, date=DAY, without=QUICK).markdown()
+    assert "Not acceptable as it stands: converter window. Nothing is generated at this load." in said
+
+
+def test_a_drawing_tells_where_it_is_not_to_scale() -> None:
+    long = memo(replace(load_case(WATER), {"stack.rows": 60}), date=DAY, without=QUICK).html()
+    assert "thin parts are drawn thicker than to scale" in long
+    assert "thin parts" not in memo_of(WATER).html()
+
+
 def test_the_curve_passes_through_the_design() -> None:
     results = memo_of(WATER).results
     curve = results["size"]["curve"]
