@@ -272,6 +272,25 @@ def test_the_case_file_and_command_repeat_the_result(tmp_path: Path) -> None:
     assert again.net_power == pytest.approx(document["estimate"]["net_power"], rel=1e-12)
 
 
+def test_files_that_the_case_names_stand_in_the_memo(tmp_path: Path) -> None:
+    record = 'footprint = ["40 mm", "40 mm"]\nseebeck = [["300 K", "0.05 V/K"], ["400 K", "0.054 V/K"]]\n'
+    (tmp_path / "own.toml").write_text(f'{record}resistance = "2 ohm"\nconductance = "0.6 W/K"\n', "utf-8")
+    text = WATER.read_text("utf-8").replace("demo-bismuth-telluride-40", "own.toml")
+    made = memo(read_case(text, folder=tmp_path), date=DAY, without=QUICK, sources=(text,))
+    written = made.markdown()
+    assert "The file that it names, `own.toml`" in written and record in written
+    assert "`module.seebeck` |  | as in the module's record below | derived" in written
+    assert "that it names" not in memo_of(WATER).markdown()
+
+
+def test_the_best_number_of_modules_tells_what_for_and_its_warnings() -> None:
+    around = memo(load_case(WATER), date=DAY, without=("doubt",)).markdown()
+    assert "Warnings of the best: open-circuit voltage, converter without load" in around
+    wanted = {"size.objective": "fewest modules", "size.target_net_power": 40.0, "size.wiring": "as given"}
+    case = replace(load_case(ROOT / "harvest/data/starters/coolant-to-water.toml"), wanted)
+    assert "The best by fewest modules has" in memo(case, date=DAY, without=("doubt",)).markdown()
+
+
 def test_inputs_are_marked_given_default_or_derived() -> None:
     text = memo_of(WATER).markdown()
 
@@ -291,9 +310,36 @@ def test_cautions_hold_this_cases_numbers() -> None:
     assert "carbon monoxide" not in memo_of(WATER).markdown()
 
 
+@pytest.mark.parametrize(
+    ("name", "said", "unsaid"),
+    [
+        ("genset-exhaust", ["swept volume flow", "tanh(", "exp(", "From legs"], ["Bought blocks", "Reservoir"]),
+        ("workshop-water-blocks", ["Bought blocks", "exp("], ["Shah and London", "swept", "Bar-Cohen"]),
+        ("stove-wall-sensor", ["Reservoir", "Bar-Cohen"], ["exp(", "Shah and London", "A pump or fan"]),
+        ("cooler-from-the-drawer", ["Lineykin", "Shah and London"], ["From legs", "Bought blocks"]),
+    ],
+)
+def test_the_method_is_that_of_the_case(name: str, said: list[str], unsaid: list[str]) -> None:
+    text = memo_of(ROOT / f"examples/{name}.toml").markdown()
+    method = text[text.index("## Method") : text.index("Sources of properties")]
+    assert all(each in method for each in said) and not any(each in method for each in unsaid)
+
+
 def test_what_is_not_modelled_stands_in_the_method() -> None:
     method = " ".join((ROOT / "docs/method.md").read_text("utf-8").split())
     assert ", ".join(NOT_MODELLED).lower() in method.lower()
+
+
+def test_the_verdict_tells_both_a_failed_check_and_a_loss() -> None:
+    case = replace(load_case(WATER), {"electrical.load": "fixed voltage", "electrical.load_voltage": 80.0})
+    said = memo(case, date=DAY, without=QUICK).markdown()
+    assert "Not acceptable as it stands: converter window. Nothing is generated at this load." in said
+
+
+def test_a_drawing_tells_where_it_is_not_to_scale() -> None:
+    long = memo(replace(load_case(WATER), {"stack.rows": 60}), date=DAY, without=QUICK).html()
+    assert "thin parts are drawn thicker than to scale" in long
+    assert "thin parts" not in memo_of(WATER).html()
 
 
 def test_the_curve_passes_through_the_design() -> None:

@@ -69,6 +69,11 @@ def test_word_document_is_whole_and_the_same_bytes() -> None:
     assert [each.text for each in document.paragraphs if each.style.name == "Heading 1"] == [made.title]
     cells = [cell.text for table in document.tables for row in table.rows for cell in row.cells]
     assert any("Net, after pumps" in cell for cell in cells)
+    for table in document.tables:
+        widths = [column.width for column in table.columns]
+        assert sum(widths) <= 170.1 * 36_000 or len(widths) == 1
+        if table.cell(0, 0).text == "field" and len(widths) == 4:
+            assert widths[0] == max(widths)
     archive = zipfile.ZipFile(io.BytesIO(content))
     assert archive.testzip() is None
     assert {item.date_time for item in archive.infolist()} == {(1980, 1, 1, 0, 0, 0)}

@@ -76,6 +76,9 @@ def nothing_is_computed(monkeypatch: pytest.MonkeyPatch) -> None:
         ("{{" + "(" * 3000 + "1" + ")" * 3000 + "}}", "recursion"),
         ("{{ " + "9" * 6000 + " }}", "limit"),
         ("x" * 300_000, "more than 262144 bytes"),
+        ("\ue0000\ue001", "'\\ue000', which is no text"),
+        ("\0", "'\\x00', which is no text"),
+        ("\x1b[31m", "'\\x1b', which is no text"),
     ],
 )
 def test_faults_are_found_before_computing(tmp_path: Path, text: str, words: str) -> None:
@@ -130,6 +133,19 @@ def test_hostile_or_faulty_work_ends_in_one_line(tmp_path: Path, text: str, word
     assert words in str(raised.value) and "own.md.j2" in str(raised.value)
     assert "\n" not in str(raised.value)
     assert time.monotonic() - start < 20
+
+
+@pytest.mark.parametrize(
+    ("text", "words"), [("", "gives no text"), (" \n", "gives no text"), ("::: a\n" * 3000, "stand in each other")]
+)
+def test_templates_without_end_or_text_end_in_one_line(tmp_path: Path, text: str, words: str) -> None:
+    with pytest.raises(InputError, match=words):
+        memo(CASE, template=written(tmp_path, text), date=DAY, without=QUICK)
+
+
+def test_lines_of_code_without_an_end_go_to_the_end(tmp_path: Path) -> None:
+    made = memo(CASE, template=written(tmp_path, "\ufeff# a\n```\nb\n"), date=DAY, without=QUICK)
+    assert made.markdown() == "# a\n\n```\nb\n```\n"
 
 
 def test_a_template_of_ones_own(tmp_path: Path) -> None:

@@ -241,11 +241,16 @@ def verdict(answer: Estimate) -> str:
     """One sentence on the answer."""
     failed = [check.name for check in answer.checks if check.status == "fail"]
     warned = [check.name for check in answer.checks if check.status == "warn"]
-    if failed:
-        return f"Not acceptable as it stands: {', '.join(failed)}."
+    worthless = ""
     if answer.net_power <= 0:
         nothing = answer.generated_power <= 0
-        return "Nothing is generated at this load." if nothing else "Not worth it: driving it takes more than it gives."
+        worthless = (
+            "Nothing is generated at this load." if nothing else "Not worth it: driving it takes more than it gives."
+        )
+    if failed:
+        return f"Not acceptable as it stands: {', '.join(failed)}. {worthless}".rstrip()
+    if worthless:
+        return worthless
     if warned:
         return f"Read the warnings before relying on it: {', '.join(warned)}."
     return "All checks pass."

@@ -139,6 +139,8 @@ def memo(
     if page is None:
         return Memo(values.title, day, results, (), text)
     blocks = read_markup(text, rendering.inserted)
+    if not blocks:
+        raise InputError(f"template: {found.name} gives no text")
     from markupsafe import Markup
 
     of_page = {

@@ -93,10 +93,19 @@ class AssumptionLine:
 
 
 @dataclass(frozen=True)
+class FileLine:
+    """A file that the case names."""
+
+    name: str = told("Its path, from the folder of the case where it lies inside.")
+    text: CodeText = told("Its text, as a block of lines.")
+
+
+@dataclass(frozen=True)
 class SizeContents:
     """How the number of modules was judged."""
 
     given: bool = told("Whether the case has a section [size]; else rows around the design were tried.")
+    objective: str = told("What the best is best in, as in the case file.")
     tried: Value = told("Choices tried.", unit="1")
     module_count: Value = told("Modules of the best choice.", unit="1")
     rows: Value = told("Rows of the best choice.", unit="1")
@@ -106,6 +115,8 @@ class SizeContents:
     fewest_within_5_percent: Value = told("Fewest modules within 5 % of the most net power.", unit="1")
     last_module_power: Value = told("What the last module of the best choice adds.", unit="W")
     at_bound: bool = told("Whether the best lies at an end of what was tried.")
+    failed: str = told("Names of the checks that the best choice fails; empty where there is none.")
+    warned: str = told("Names of the checks that warn of the best choice; empty where there is none.")
 
 
 @dataclass(frozen=True)
@@ -212,6 +223,9 @@ class Contents:
     command: str = told("Command that wrote the memo.")
     case_hash: str = told("Digest of what the result depends on.")
     case_file: CodeText = told("The case file, as a block of lines.")
+    files: tuple[FileLine, ...] = told(
+        "Files that the case names: records of modules and materials, tables of fluids.", of=FileLine, many=True
+    )
     verdict: str = told("The answer in one sentence.")
     arrangement: Said = told("Modules, layers, rows, columns and strings in one sentence.")
     load: str = told("Load of the stack.")

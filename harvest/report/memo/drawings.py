@@ -45,6 +45,8 @@ NOMINAL_DUCT, NOMINAL_MODULE = 0.02, 0.004
 """Heights [m] drawn where a case gives none; the drawing then says so."""
 MOST_MODULES_DRAWN = 1500
 MOST_LAYERS_DRAWN = 16
+THINNEST = 1.0
+"""Height of a slab below which it could not be seen [px]."""
 FIN_STEP = 7.0
 """Distance of a heat sink's fins as drawn [px]."""
 
@@ -106,7 +108,7 @@ def stack_drawing(
     scale = min(room / length, 190 / total, 190 / width)
     left = (WIDTH - scale * length) / 2
     top = 44.0
-    bottom = top + max(scale * total, 34.0)
+    bottom = top + max(sum(max(scale * slab.height, THINNEST) for slab in slabs), 34.0)
     plan_top = bottom + 86
     height = plan_top + scale * width + 40
     canvas = Canvas(f"{prefix}stack", height)
@@ -122,6 +124,8 @@ def stack_drawing(
         note += "; sixteen of the layers are drawn"
     if not heights_known:
         note += "; heights are not all given, and not to scale"
+    elif scale * min(slab.height for slab in slabs) < THINNEST:
+        note += "; thin parts are drawn thicker than to scale"
     canvas.text((WIDTH / 2, bottom + 40), note, size=10, anchor="middle", colour=GREY)
     canvas.text((WIDTH / 2, plan_top - 10), "One layer seen from above", size=10, anchor="middle", colour=GREY)
     _draw_plan(canvas, case, (left, plan_top), scale)
@@ -153,7 +157,7 @@ def _draw_side(canvas: Canvas, case: Case, slabs: Sequence[_Slab], at: Point, sc
     middles: dict[str, list[float]] = {"hot": [], "cold": []}
     foot = (case.module.footprint or (0.9 * case.stack.row_pitch,))[0]
     for slab in slabs:
-        height = max(scale * slab.height, 1.0)
+        height = max(scale * slab.height, THINNEST)
         if slab.kind == "module":
             canvas.rectangle((left, y), (length, height), "#f4f4f4")
             single = case.stack.rows * len(slabs) <= MOST_MODULES_DRAWN

@@ -7,6 +7,7 @@ import math
 import re
 from collections.abc import Mapping
 from dataclasses import dataclass
+from pathlib import Path
 from typing import Any
 
 import numpy as np
@@ -14,6 +15,7 @@ import numpy as np
 from harvest.errors import InputError, NoAnswerError
 from harvest.model.case import DECLARATIONS, Case, case_hash, display, value_at
 from harvest.model.case_fields import Declaration
+from harvest.model.case_text import bounded_text
 from harvest.model.checks import STATUS_NAMES, Check
 from harvest.model.results import ROW_RESULTS, SCALARS, Estimate
 from harvest.model.stream_sections import HEAT_SINK
@@ -37,6 +39,7 @@ from harvest.report.memo.contents import (
     DoubtContents,
     Drawings,
     EnergyLine,
+    FileLine,
     InputDoubt,
     InputLine,
     InputSection,
@@ -77,6 +80,7 @@ LETTERS = ("A", "B", "C", "D", "E", "F", "G", "H")
 LONGEST_GIVEN = 90
 SMALLEST_WHOLE_AMOUNT = 100.0
 """Money from which no fractions are printed."""
+IN_THE_CASE, IN_A_FILE = "as given, in the case file below", "as in the module's record below"
 GIVEN, DEFAULT, DERIVED = "given", "default", "derived"
 
 
@@ -152,6 +156,7 @@ def contents(
         command=command,
         case_hash=case_hash(case),
         case_file=CodeText(_printable(source)),
+        files=_files(case),
         verdict=verdict(answer),
         arrangement=Said(_sentence(stack_sentence(case, answer)), f"{prefix}arrangement"),
         load=case.electrical.load,
@@ -190,6 +195,25 @@ def contents(
 def _printable(text: str) -> str:
     """Text with its lines, without signs that are no text."""
     return "".join(sign if sign.isprintable() or sign == "\n" else " " for sign in text.replace("\r\n", "\n"))
+
+
+def _files(case: Case) -> tuple[FileLine, ...]:
+    """Files that a case names, each once; records and materials of the package are told by their names."""
+    folder = case.folder.resolve()
+    found: list[Path] = []
+    for path, declaration in DECLARATIONS.items():
+        value = value_at(case, path)
+        if declaration.form == "file" and value is not None and Path(value).is_absolute():
+            found.append(Path(value).resolve())
+        elif declaration.form == "fluid table" and isinstance(named := _typed(case.given, path), str):
+            found.append((folder / named).resolve())
+    return tuple(
+        FileLine(
+            one_line(str(file.relative_to(folder) if file.is_relative_to(folder) else file), 300),
+            CodeText(_printable(bounded_text(file))),
+        )
+        for file in dict.fromkeys(found)
+    )
 
 
 def _fields(case: Case, path: str) -> Group:
@@ -317,7 +341,7 @@ def _inputs(case: Case, scalars: Group, path: str) -> tuple[InputSection, ...]:
             field,
             declaration.meaning,
             given or "",
-            _si_values(value, declaration, f"{path}.{field}"),
+            _si_values(value, declaration, f"{path}.{field}") or (IN_A_FILE if mark == DERIVED else IN_THE_CASE,),
             mark,
             declaration.reason if mark == DEFAULT else "",
         )
@@ -344,15 +368,21 @@ def _applies(case: Case, path: str, declaration: Declaration) -> bool:
     return value_at(case, f"{owner}.{selector}") in allowed
 
 
-def _given(document: Any, path: str) -> str | None:
-    """A field as it was written; None where it was not."""
+def _typed(document: Any, path: str) -> Any:
+    """What was typed for a field; None where nothing was."""
     for name in path.split("."):
         if isinstance(document, list):
             found = [each[name] for each in document if isinstance(each, Mapping) and name in each]
             document = found or None
         else:
             document = document.get(name) if isinstance(document, Mapping) else None
-    return None if document is None else one_line(_written(document), LONGEST_GIVEN)
+    return document
+
+
+def _given(document: Any, path: str) -> str | None:
+    """A field as it was written, in one line; None where it was not."""
+    typed = _typed(document, path)
+    return None if typed is None else one_line(_written(typed), LONGEST_GIVEN)
 
 
 def _written(value: Any) -> str:
@@ -384,6 +414,7 @@ def _of_record(case: Case, path: str, declaration: Declaration) -> bool:
 
 
 def _si_values(value: Any, declaration: Declaration, path: str) -> tuple[Value | str, ...]:
+    """A field in SI; nothing of a curve or a list of them, which stands where it was written."""
     if isinstance(value, tuple) and declaration.form in ("pair", "quantity", "integers", "integer"):
         return tuple(
             Value(float(each), declaration.kind, f"{path}[{i}]", 6, "si")
@@ -398,7 +429,7 @@ def _si_values(value: Any, declaration: Declaration, path: str) -> tuple[Value |
         return (Value(value.amount, ENERGY_PRICE, f"{path}.amount", 6, "si"), f"in {one_line(value.currency)}")
     if declaration.form in ("choice", "boolean", "text", "file"):
         return (display(value, declaration),)
-    return ("as given, in the case file below",)
+    return ()
 
 
 def _size(computed: Computed, path: str) -> SizeContents | None:
@@ -412,6 +443,7 @@ def _size(computed: Computed, path: str) -> SizeContents | None:
     best = found.arrangement
     return SizeContents(
         given=computed.case.size is not None,
+        objective=found.objective,
         tried=whole(found.choices_tried, "choices_tried"),
         module_count=whole(best.module_count, "best.module_count"),
         rows=whole(best.rows_count, "best.rows_count"),
@@ -421,7 +453,14 @@ def _size(computed: Computed, path: str) -> SizeContents | None:
         fewest_within_5_percent=whole(found.fewest_within_5_percent, "fewest_within_5_percent"),
         last_module_power=Value(found.last_module_power, "power", f"{path}.last_module_power", 2),
         at_bound=bool(found.at_bounds),
+        failed=_names_of(found.best, "fail"),
+        warned=_names_of(found.best, "warn"),
     )
+
+
+def _names_of(answer: Estimate, status: str) -> str:
+    """Names of the checks that came out so."""
+    return ", ".join(check.name for check in answer.checks if check.status == status)
 
 
 def _costs(case: Case, answer: Estimate, scalars: Group, prefix: str) -> Costs | None:

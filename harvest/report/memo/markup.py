@@ -10,8 +10,10 @@ from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
 from typing import Any
 
+from harvest.errors import InputError
 from harvest.report.memo.values import CodeText, Drawing, Said, Value
 
+MOST_DEPTH = 10
 OPEN, CLOSE = "\ue000", "\ue001"
 MARK = re.compile(f"{OPEN}([0-9]+){CLOSE}")
 _INLINE = re.compile(
@@ -115,8 +117,7 @@ class Inserted:
 def read_markup(text: str, inserted: Inserted) -> tuple[Block, ...]:
     """Blocks of a rendered template."""
     lines = text.splitlines()
-    blocks, end = _Reader(lines, inserted).blocks(0, "")
-    assert end == len(lines)
+    blocks, _ = _Reader(lines, inserted).blocks(0, 0)
     return tuple(blocks)
 
 
@@ -125,24 +126,26 @@ class _Reader:
         self.lines = lines
         self.inserted = inserted
 
-    def blocks(self, at: int, box: str) -> tuple[list[Block], int]:
-        """Blocks from a line on, to the end of the text or of the box that they stand in."""
+    def blocks(self, at: int, depth: int) -> tuple[list[Block], int]:
+        """Blocks from a line on, to the end of the text or of the box that they stand in, so many around it."""
+        if depth > MOST_DEPTH:
+            raise InputError(f"template: more than {MOST_DEPTH} blocks between ::: stand in each other; close each")
         found: list[Block] = []
         while at < len(self.lines):
             line = self.lines[at].strip()
-            if box and line == ":::":
+            if depth and line == ":::":
                 return found, at + 1
             if not line:
                 at += 1
             elif line.startswith(":::") and line[3:].strip():
                 name = line[3:].strip()
-                inside, at = self.blocks(at + 1, name)
+                inside, at = self.blocks(at + 1, depth + 1)
                 found.append(Box(name, tuple(inside)))
             elif line.startswith("```"):
                 end = next((i for i in range(at + 1, len(self.lines)) if self.lines[i].startswith("```")), None)
                 end = len(self.lines) if end is None else end
                 found.append(Code(self.plain("\n".join(self.lines[at + 1 : end]))))
-                at = end + 1
+                at = min(end + 1, len(self.lines))
             elif heading := re.fullmatch(r"(#{1,4})\s+(.+)", line):
                 found.append(Heading(len(heading[1]), self.inline(heading[2])))
                 at += 1

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import unicodedata
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass
 from pathlib import Path
@@ -23,6 +24,8 @@ TEMPLATES = {
 }
 MARKUP, PAGE = ".md.j2", ".html.j2"
 SUFFIXES = (MARKUP, PAGE, ".md", ".html")
+STRANGE = ("Cc", "Co", "Cs", "Cn")
+"""Categories of signs that formats refuse, or that stand for what is inserted."""
 LARGEST_TEMPLATE = 256 * 1024
 
 
@@ -89,7 +92,11 @@ def _source(folder: Path, name: str) -> str:
             content = file.read(LARGEST_TEMPLATE + 1)
         if len(content) > LARGEST_TEMPLATE:
             raise InputError(f"template {shown}: more than {LARGEST_TEMPLATE} bytes")
-        return content.decode("utf-8")
+        text = content.decode("utf-8-sig")
+        strange = next((sign for sign in text if not sign.isspace() and unicodedata.category(sign) in STRANGE), "")
+        if strange:
+            raise InputError(f"template {shown}: holds the sign {strange!a}, which is no text; take it out")
+        return text
     except UnicodeDecodeError:
         raise InputError(f"template {shown}: not UTF-8 text") from None
     except OSError as error:

@@ -23,11 +23,18 @@ from harvest.report.memo.markup import (
     Span,
     Table,
     is_to_fill_in,
+    words_of,
 )
 from harvest.report.memo.pdf_page import drawing_width, png, typst_library
 from harvest.report.memo.values import Drawing
 
 ZIP_DATE = (1980, 1, 1, 0, 0, 0)
+LONGEST_NUMBER, LONGEST_COLUMN = 18, 60
+"""Signs up to which a cell stands in one line, and beyond which a column grows no wider."""
+SIGN, BESIDE = 62_000, 4
+"""Width of a sign in a table [EMU], and signs that the margins of a cell take."""
+LEAST_FOR_WORDS = 0.3
+MOST_ROWS_TOGETHER = 12
 FILLS = {"failed": "FDF1EA", "warning": "FDF6E6", "answer": "F4F4F2"}
 SVG_EXTENSION = "{96DAC541-7B7A-43D3-8B79-37D633B846F1}"
 
@@ -135,8 +142,16 @@ class _Writer:
         self.shade(cell, FILLS[box.name])
         cell._element.remove(cell.paragraphs[0]._element)
         self.blocks(box.blocks, cell)
-        cell.add_paragraph()
-        into.add_paragraph()
+        self.gap(cell)
+        self.gap(into)
+
+    @staticmethod
+    def gap(into: Any) -> None:
+        """A low empty paragraph, without which Word joins tables."""
+        from docx.shared import Pt
+
+        form = into.add_paragraph().paragraph_format
+        form.space_before, form.space_after, form.line_spacing = Pt(0), Pt(0), Pt(7)
 
     def runs(self, paragraph: Any, line: Line, **style: bool) -> None:
         for each in line:
@@ -192,18 +207,42 @@ class _Writer:
         for side in ("top", "bottom", "insideH"):
             self.element(borders, f"w:{side}", {"w:val": "single", "w:sz": "4", "w:color": "C9C9C9"})
         to_fill_in = is_to_fill_in(table)
-        for cells, row in zip(made.rows, [*header, *table.rows], strict=True):
+        widths = self.widths(table)
+        made.autofit = False
+        for column, width in zip(made.columns, widths, strict=True):
+            column.width = width
+        lines = [*header, *table.rows]
+        for i, (cells, row) in enumerate(zip(made.rows, lines, strict=True)):
+            together = len(lines) <= MOST_ROWS_TOGETHER and i < len(lines) - 1
             if to_fill_in and row is not table.header:
                 cells.height = Pt(34)
-            for cell, line, right in zip(cells.cells, row, table.right, strict=True):
+            for cell, line, right, width in zip(cells.cells, row, table.right, widths, strict=True):
+                cell.width = width
                 paragraph = cell.paragraphs[0]
                 paragraph.paragraph_format.space_after = Pt(1)
+                paragraph.paragraph_format.keep_with_next = together
                 if right:
                     paragraph.alignment = WD_ALIGN_PARAGRAPH.RIGHT
                 self.runs(paragraph, line, **({"bold": True} if header and row is table.header else {}))
                 for run in paragraph.runs:
                     run.font.size = Pt(8.5)
-        into.add_paragraph()
+        self.gap(into)
+
+    def widths(self, table: Table) -> list[int]:
+        """Widths of the columns: numbers stand in one line, longer words share what is left by their length."""
+        page: Any = self.document.sections[0]
+        room = page.page_width - page.left_margin - page.right_margin
+        count = len(table.right)
+        if is_to_fill_in(table):
+            return [round(room / count)] * count
+        body = [max((len(words_of(row[i])) for row in table.rows), default=0) for i in range(count)]
+        head = [max(map(len, words_of(cell).split()), default=0) for cell in table.header]
+        signs = [min(max(pair), LONGEST_COLUMN) for pair in zip(body, head, strict=True)]
+        short = [SIGN * (each + BESIDE) if each <= LONGEST_NUMBER else 0.0 for each in signs]
+        words = sum(each for each in signs if each > LONGEST_NUMBER)
+        left = max(room - sum(short), LEAST_FOR_WORDS * room if words else 0.0)
+        wanted = [width or left * each / words for width, each in zip(short, signs, strict=True)]
+        return [round(room * each / sum(wanted)) for each in wanted]
 
     def caption(self, paragraph: Any, words: str) -> None:
         from docx.enum.text import WD_ALIGN_PARAGRAPH
