@@ -367,8 +367,6 @@ def _limit_check(name: str, kind: str, value: FloatArray, limit: FloatArray, bou
     wrong = value < limit if bound == AT_LEAST else value > limit
 
     def text(i: int) -> str:
-        return (
-            f"{name}: {format_quantity(value[i], kind)}; the case asks for {bound} {format_quantity(limit[i], kind)}."
-        )
+        return f"It is {format_quantity(value[i], kind)}; the case asks for {bound} {format_quantity(limit[i], kind)}."
 
     return BatchCheck(name, kind, value, limit, graded(wrong), text, bound)

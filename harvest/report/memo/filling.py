@@ -427,7 +427,9 @@ def _si_values(value: Any, declaration: Declaration, path: str) -> tuple[Value |
         return (Value(value.volume_flow, "volume flow", f"{path}.volume_flow", 6, "si"), "at the reference")
     if isinstance(value, EnergyPrice):
         return (Value(value.amount, ENERGY_PRICE, f"{path}.amount", 6, "si"), f"in {one_line(value.currency)}")
-    if declaration.form in ("choice", "boolean", "text", "file"):
+    if declaration.form == "file":  # where a file lies is of this machine, and its content stands in the memo
+        return (one_line(Path(value).name),)
+    if declaration.form in ("choice", "boolean", "text"):
         return (display(value, declaration),)
     return ()
 
