@@ -4,14 +4,22 @@ from __future__ import annotations
 
 import pytest
 
+LEFT_OUT = {
+    "slow": ("--run-slow", "run the slow tests too"),
+    "study": ("--run-studies", "run the statistical studies of many seeds too, which take minutes"),
+}
+"""Markers of tests that run only with an option."""
+
 
 def pytest_addoption(parser: pytest.Parser) -> None:
-    parser.addoption("--run-slow", action="store_true", help="run the slow studies too")
+    for option, meaning in LEFT_OUT.values():
+        parser.addoption(option, action="store_true", help=meaning)
 
 
 def pytest_collection_modifyitems(config: pytest.Config, items: list[pytest.Item]) -> None:
-    if not config.getoption("--run-slow"):
-        skip = pytest.mark.skip(reason="slow study; run with --run-slow")
-        for item in items:
-            if "slow" in item.keywords:
-                item.add_marker(skip)
+    for marker, (option, _) in LEFT_OUT.items():
+        if not config.getoption(option):
+            skip = pytest.mark.skip(reason=f"{marker}; run with {option}")
+            for item in items:
+                if marker in item.keywords:
+                    item.add_marker(skip)

@@ -153,7 +153,7 @@ def test_planted_outliers_are_named() -> None:
     assert tally.accused <= 0.04
 
 
-@pytest.mark.slow
+@pytest.mark.study
 @pytest.mark.parametrize(
     "how",
     [{}, {"slopes": SLOPES}, {"readings": 12}, {"cold_heat": True}, {"by_load": True}, {"current_noise": 0.01}],
@@ -167,7 +167,7 @@ def test_intervals_cover_the_truth_in_a_thousand_seeds(how: dict[str, object]) -
         assert np.all(tally.half_width <= 1.3 * 1.96 * smallest_standard_errors(24, 0.01))
 
 
-@pytest.mark.slow
+@pytest.mark.study
 @pytest.mark.parametrize(
     "how",
     [{}, {"slopes": SLOPES}, {"readings": 12}, {"cold_heat": True}, {"by_load": True}, {"current_noise": 0.01}],

@@ -109,7 +109,7 @@ def test_intervals_hold_the_truth_and_errors_are_honest() -> None:
     assert 0.85 < over_error < 1.25
 
 
-@pytest.mark.slow
+@pytest.mark.study
 def test_intervals_hold_the_truth_in_five_hundred_seeds() -> None:
     share, over_error = coverage(range(500))
     assert np.all(share >= 0.92) and np.all(share <= 0.98)
