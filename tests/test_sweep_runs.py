@@ -475,3 +475,13 @@ def test_a_wrong_call_loads_nothing_heavy() -> None:
     )
     done = subprocess.run([sys.executable, "-c", program], capture_output=True, text=True, check=True)
     assert done.stdout.strip() == "set()"
+
+
+def test_a_best_within_the_limits_is_told_once() -> None:
+    case = load_case(EXHAUST, ['limits.back_pressure="6 kPa"'])
+    plan = planned(with_axes(case, {"hot.mass_flow": [0.08, 0.09]}))
+    found = print_sweep(plan, None)
+    assert found.within_limits == found.valid == 2
+    report = sweep_report(plan, found)
+    assert report.count("Most net power") == 1
+    assert "beyond a limit" not in report

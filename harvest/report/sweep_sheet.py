@@ -55,10 +55,11 @@ def sweep_report(plan: SweepPlan, found: SweepFindings) -> str:
     if found.best:
         lines += ["", *_best(plan, "Most net power", found.best)]
         beyond, within = _WORDS[plan.full]
-        if found.best_within_limits != found.best:
+        within_too = found.best_within_limits
+        if not within_too or any(within_too[path] != found.best[path] for path in plan.axes):
             lines.append(f"  {beyond}")
-            if found.best_within_limits:
-                lines += ["", *_best(plan, f"Most net power {within}", found.best_within_limits)]
+            if within_too:
+                lines += ["", *_best(plan, f"Most net power {within}", within_too)]
         told = "the column failed_checks names what fails" if plan.full else "harvest estimate judges the other checks"
         count = f"{found.within_limits:,}" if found.within_limits else "None"
         lines += ["", f"{count} of {found.valid:,} combinations with an answer are {within}; {told}."]
