@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-from importlib import resources
 from pathlib import Path
 from typing import TYPE_CHECKING
 
@@ -15,13 +14,15 @@ if TYPE_CHECKING:
     from harvest.study.modules import LoadedModule
 
 
+STARTERS = Path(__file__).parents[1] / "data" / "starters"
+
+
 def _start_kinds() -> dict[str, str]:
     """Kinds of starter files with their first comment line."""
-    folder = resources.files("harvest") / "data" / "starters"
     kinds = {}
-    for item in sorted(folder.iterdir(), key=lambda each: each.name):
-        if item.name.endswith(".toml"):
-            kinds[item.name.removesuffix(".toml")] = item.read_text("utf-8").splitlines()[0].lstrip("# ")
+    for item in sorted(STARTERS.iterdir()):
+        if item.suffix == ".toml":
+            kinds[item.stem] = item.read_text("utf-8").splitlines()[0].lstrip("# ")
     return kinds
 
 
@@ -225,7 +226,7 @@ def start(kind: str | None, output: str | None) -> None:
         return
     if kind not in kinds:
         raise InputError(f"start: {kind!r} is no kind of starter file; known are {', '.join(kinds)}")
-    text = (resources.files("harvest") / "data" / "starters" / f"{kind}.toml").read_text("utf-8")
+    text = (STARTERS / f"{kind}.toml").read_text("utf-8")
     if output is None:
         click.echo(text, nl=False)
         return
