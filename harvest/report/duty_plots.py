@@ -49,5 +49,5 @@ def duty_figure(title: str, found: DutyBalance) -> Figure:
     for axes in panels:
         axes.grid(color="0.85", linewidth=0.6)
         axes.legend(frameon=False)
-    entitle(figure, f"{title}: {found.net_energy / 3.6e6:.4g} kWh net")
+    entitle(figure, f"{title}: {found.net_energy / 3.6e6:.4g}\N{NO-BREAK SPACE}kWh net")
     return figure
