@@ -3,12 +3,11 @@
 from __future__ import annotations
 
 import shlex
-import sys
 from pathlib import Path
 
 import click
 
-from harvest.cli.program import case_arguments, cli, read_case_of, standard_input
+from harvest.cli.program import case_arguments, cli, progress_in, read_case_of, standard_input
 
 OPTIONS = {"drives": "duty.drives", "longest_hold": "duty.longest_hold", "time_zone": "duty.time_zone"}
 
@@ -62,7 +61,7 @@ def duty(
         loaded,
         standard_input(LARGEST_LOG) + "\n" if log == "-" else log,
         strict=strict,
-        progress=_progress if sys.stderr.isatty() else None,
+        progress=progress_in("conditions"),
     )
     if output is not None:
         from harvest.report.duty_files import write_duty
@@ -82,7 +81,3 @@ def duty(
         from harvest.report.duty_sheet import duty_report
 
         click.echo(duty_report(loaded, found))
-
-
-def _progress(done: int, all_of_them: int) -> None:
-    click.echo(f"\r{done:,} of {all_of_them:,} conditions", nl=done == all_of_them, err=True)

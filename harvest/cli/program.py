@@ -116,6 +116,15 @@ def standard_input(largest: int | None = None) -> str:
         raise InputError("stdin: not UTF-8 text; save the file as UTF-8") from None
 
 
+def progress_in(noun: str) -> Callable[[int, int], None] | None:
+    """What tells a terminal how far a search is; None where standard error is none."""
+
+    def tell(done: int, all_of_them: int) -> None:
+        click.echo(f"\r{done:,} of {all_of_them:,} {noun}", nl=done == all_of_them, err=True)
+
+    return tell if sys.stderr.isatty() else None
+
+
 @click.group(cls=_Group, context_settings={"help_option_names": ["-h", "--help"], "max_content_width": 100})
 @click.version_option(VERSION, prog_name="harvest")
 def cli() -> None:

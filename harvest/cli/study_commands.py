@@ -2,14 +2,12 @@
 
 from __future__ import annotations
 
-import sys
-from collections.abc import Callable
 from pathlib import Path
 from typing import Any
 
 import click
 
-from harvest.cli.program import case_arguments, cli, read_case_of
+from harvest.cli.program import case_arguments, cli, progress_in, read_case_of
 
 
 @cli.command()
@@ -61,7 +59,7 @@ def size(
 
     if log is not None:
         loaded = for_yearly_energy(loaded)
-    found = size_case(loaded, _progress_in("choices"), log=log)
+    found = size_case(loaded, progress_in("choices"), log=log)
     if plot is not None:
         write_figure(Path(plot), size_figure(loaded.title, found))
     if write is not None:
@@ -90,7 +88,7 @@ def doubt(case: str, overrides: tuple[str, ...], as_json: bool, samples: int, se
         can_plot(Path(plot))
     from harvest.study.doubt import doubt as doubt_case
 
-    found = doubt_case(loaded, samples, seed, _progress_in("cases"))
+    found = doubt_case(loaded, samples, seed, progress_in("cases"))
     if plot is not None:
         from harvest.report.doubt_plots import doubt_figure
         from harvest.report.plots import write_figure
@@ -104,12 +102,3 @@ def doubt(case: str, overrides: tuple[str, ...], as_json: bool, samples: int, se
         click.echo(json_text(doubt_document(found)))
     else:
         click.echo(doubt_report(loaded, found))
-
-
-def _progress_in(noun: str) -> Callable[[int, int], None] | None:
-    """What tells a terminal how far a search is; None where standard error is none."""
-
-    def tell(done: int, all_of_them: int) -> None:
-        click.echo(f"\r{done:,} of {all_of_them:,} {noun}", nl=done == all_of_them, err=True)
-
-    return tell if sys.stderr.isatty() else None
