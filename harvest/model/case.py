@@ -8,7 +8,7 @@ given and has no default is None.
 from __future__ import annotations
 
 import json
-from collections.abc import Iterator
+from collections.abc import Iterator, Mapping
 from dataclasses import dataclass, field
 from pathlib import Path
 from typing import Any, NamedTuple
@@ -108,6 +108,24 @@ def value_at(case: Streams, path: str) -> Any:
             return None if all(each is None for each in inside) else inside
         value = getattr(value, name, None)
     return value
+
+
+def typed_at(document: Any, path: str) -> Any:
+    """What a document gives for a field; None where it gives nothing, a list of what tables of a list give."""
+    for name in path.split("."):
+        if isinstance(document, list):
+            document = [each[name] for each in document if isinstance(each, Mapping) and name in each] or None
+        else:
+            document = document.get(name) if isinstance(document, Mapping) else None
+    return document
+
+
+def selector_path(path: str, selector: str) -> str:
+    """Path of the field named `selector` that stands beside a field, or else above it."""
+    owner = path.rpartition(".")[0]
+    while owner and f"{owner}.{selector}" not in DECLARATIONS:
+        owner = owner.rpartition(".")[0]
+    return f"{owner}.{selector}"
 
 
 def nearest_name(name: str, known: list[str]) -> str:

@@ -8,6 +8,7 @@ from typing import Any
 
 import numpy as np
 
+from harvest.model.case import selector_path
 from harvest.model.case_fields import MOST_MODULES, Declaration
 from harvest.model.loads import FIXED_RESISTANCE, FIXED_VOLTAGE
 from harvest.model.stream_sections import GASES, GLYCOLS, HEAT_SINK, RATED
@@ -52,16 +53,8 @@ def applies(declaration: Declaration, path: str, values: Values) -> tuple[str, A
     if declaration.applies is None:
         return None
     selector, allowed = declaration.applies
-    owner = selector_path(selector, path, values)
+    owner = selector_path(path, selector)
     return None if values[owner] in allowed else (owner, values[owner])
-
-
-def selector_path(selector: str, path: str, values: Values) -> str:
-    """Path of the field of that name beside or above a field."""
-    owner = path.rpartition(".")[0]
-    while owner and f"{owner}.{selector}" not in values and f"{owner}.{selector}" not in values.faulty:
-        owner = owner.rpartition(".")[0]
-    return f"{owner}.{selector}"
 
 
 def flow_is_given_once(side: str, values: Values) -> Faults:

@@ -14,7 +14,7 @@ from pathlib import Path
 from typing import Any, NamedTuple, TypeVar
 
 from harvest.errors import CaseError, InputError, QuantityError
-from harvest.model.case import DECLARATIONS, Case, Streams, limits_text, nearest_field, nearest_name
+from harvest.model.case import DECLARATIONS, Case, Streams, limits_text, nearest_field, nearest_name, selector_path
 from harvest.model.case_fields import (
     REQUIRED,
     Curve,
@@ -33,7 +33,6 @@ from harvest.model.case_rules import (
     Values,
     applies,
     broken_rules,
-    selector_path,
     without_effect,
 )
 from harvest.model.case_text import bounded_text, key_lines, toml_document, toml_value
@@ -477,7 +476,7 @@ class _Reading:
             return self.values[declaration.default_from]
         if declaration.default_by is not None and asked:
             selector, defaults = declaration.default_by
-            return defaults[self.values[selector_path(selector, path, self.values)]]
+            return defaults[self.values[selector_path(path, selector)]]
         if declaration.form == "choice" and not asked:
             return None
         return declaration.default

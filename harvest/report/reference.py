@@ -6,7 +6,7 @@ from collections.abc import Iterable, Iterator, Sequence
 from itertools import groupby
 from typing import NamedTuple
 
-from harvest.model.case import DECLARATIONS, default_text, display, limits_text
+from harvest.model.case import DECLARATIONS, default_text, display, limits_text, selector_path
 from harvest.model.case_fields import Declaration
 from harvest.model.results import ROW_RESULTS, SCALARS
 from harvest.quantities import KINDS, allowed_units, example_of, unit_of
@@ -179,10 +179,7 @@ def _where_it_applies(path: str, declaration: Declaration) -> str:
     if declaration.applies is None:
         return ""
     selector, allowed = declaration.applies
-    owner = path
-    while f"{owner}.{selector}" not in DECLARATIONS:
-        owner = owner.rpartition(".")[0]
-    excluded = [choice for choice in DECLARATIONS[f"{owner}.{selector}"].choices if choice not in allowed]
+    excluded = [choice for choice in DECLARATIONS[selector_path(path, selector)].choices if choice not in allowed]
     if len(excluded) < len(allowed):
         return f" Not for `{selector}` {', '.join(excluded)}."
     return f" For `{selector}` {', '.join(allowed)}."

@@ -16,7 +16,7 @@ import numpy as np
 
 from harvest.errors import CaseError, InputError
 from harvest.model.batch import Batch
-from harvest.model.case import DECLARATIONS, Case, case_hash, value_at
+from harvest.model.case import DECLARATIONS, Case, case_hash, selector_path, typed_at, value_at
 from harvest.model.case_fields import SweepAxis
 from harvest.model.case_rules import ALTERNATIVES
 from harvest.model.case_text import toml_value
@@ -347,7 +347,7 @@ def _base(plan: SweepPlan, structure: dict[str, Any]) -> Case | str:
     changes = {**dict.fromkeys(_without_use(plan, structure)), **structure}
     first = plan.at(np.zeros(1, dtype=np.int64))
     # a number that is not written in the case is written, so that it is judged whether it applies
-    absent = {path: first[path][0] for path in numbers if not _is_given(case, path)}
+    absent = {path: first[path][0] for path in numbers if typed_at(case.given, path) is None}
     spread = np.unique(np.linspace(0, plan.count - 1, MOST_TRIED).astype(np.int64))
     tried = plan.at(spread)
     said: list[str] = []
@@ -400,19 +400,10 @@ def _without_use(plan: SweepPlan, structure: Mapping[str, Any]) -> list[str]:
         if declaration.applies is None or path in plan.axes:
             continue
         selector, allowed = declaration.applies
-        owner = path.rpartition(".")[0]
-        while owner and f"{owner}.{selector}" not in DECLARATIONS:
-            owner = owner.rpartition(".")[0]
-        if structure.get(f"{owner}.{selector}", allowed[0]) not in allowed and _is_given(plan.case, path):
+        chosen = structure.get(selector_path(path, selector), allowed[0])
+        if chosen not in allowed and typed_at(plan.case.given, path) is not None:
             found.append(path)
     return found
-
-
-def _is_given(case: Case, path: str) -> bool:
-    table: Any = case.given
-    for name in path.split("."):
-        table = table.get(name) if isinstance(table, Mapping) else None
-    return table is not None
 
 
 def _lean(batch: Batch, without_load: bool) -> SweepPart:

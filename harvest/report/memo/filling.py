@@ -13,7 +13,7 @@ from typing import Any
 import numpy as np
 
 from harvest.errors import InputError, NoAnswerError
-from harvest.model.case import DECLARATIONS, Case, case_hash, display, value_at
+from harvest.model.case import DECLARATIONS, Case, case_hash, display, selector_path, typed_at, value_at
 from harvest.model.case_fields import Declaration
 from harvest.model.case_text import bounded_text
 from harvest.model.checks import STATUS_NAMES, Check
@@ -205,7 +205,7 @@ def _files(case: Case) -> tuple[FileLine, ...]:
         value = value_at(case, path)
         if declaration.form == "file" and value is not None and Path(value).is_absolute():
             found.append(Path(value).resolve())
-        elif declaration.form == "fluid table" and isinstance(named := _typed(case.given, path), str):
+        elif declaration.form == "fluid table" and isinstance(named := typed_at(case.given, path), str):
             found.append((folder / named).resolve())
     return tuple(
         FileLine(
@@ -362,26 +362,12 @@ def _applies(case: Case, path: str, declaration: Declaration) -> bool:
     if declaration.applies is None:
         return True
     selector, allowed = declaration.applies
-    owner = path.rpartition(".")[0]
-    while owner and f"{owner}.{selector}" not in DECLARATIONS:
-        owner = owner.rpartition(".")[0]
-    return value_at(case, f"{owner}.{selector}") in allowed
-
-
-def _typed(document: Any, path: str) -> Any:
-    """What was typed for a field; None where nothing was."""
-    for name in path.split("."):
-        if isinstance(document, list):
-            found = [each[name] for each in document if isinstance(each, Mapping) and name in each]
-            document = found or None
-        else:
-            document = document.get(name) if isinstance(document, Mapping) else None
-    return document
+    return value_at(case, selector_path(path, selector)) in allowed
 
 
 def _given(document: Any, path: str) -> str | None:
     """A field as it was written, in one line; None where it was not."""
-    typed = _typed(document, path)
+    typed = typed_at(document, path)
     return None if typed is None else one_line(_written(typed), LONGEST_GIVEN)
 
 
