@@ -36,6 +36,7 @@ from harvest.physics.ratings import (
     temperature_line,
 )
 from harvest.physics.thermoelectrics import LegModule, efficiency_at_load_ratio, figure_of_merit, maximum_efficiency
+from harvest.report.terminal import check_report
 from tests.case_texts import BETWEEN_PLATES
 
 ROOT = Path(__file__).parent.parent
@@ -602,3 +603,12 @@ def test_any_points_give_a_sound_module_or_faults(points: list[dict[str, Any]]) 
     temperatures = np.linspace(200.0, 700.0, 11)[:, None]
     found = described_module(Batch(case)).model.parameters(temperatures, temperatures)[:3]
     assert all(np.all(np.isfinite(each)) and np.all(each > 0) for each in found)
+
+
+def test_a_check_tells_the_ratings_that_a_case_gives() -> None:
+    rating = '[[module.generator_rating]]\nhot_face_temperature = "250 degC"\ncold_face_temperature = "30 degC"\n'
+    rating += 'matched_power = "10 W"\nmatched_voltage = "4 V"\nefficiency = 0.045\n'
+    report = check_report(read_case(START + rating))
+    given = report.partition("Assumed")[0]
+    assert "module.generator_rating.matched_power = 10.00 W" in given
+    assert "module.generator_rating.efficiency = 0.045" in given

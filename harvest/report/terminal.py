@@ -3,10 +3,10 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Mapping, Sequence
-from typing import TYPE_CHECKING, Any
+from collections.abc import Sequence
+from typing import TYPE_CHECKING
 
-from harvest.model.case import DECLARATIONS, Case, Streams, assumptions, case_hash, display, value_at
+from harvest.model.case import DECLARATIONS, Case, Streams, assumptions, case_hash, display, typed_at, value_at
 from harvest.model.checks import STATUS_NAMES, Check
 from harvest.model.results import Estimate
 from harvest.model.stream_sections import HEAT_SINK, StreamSide
@@ -317,13 +317,6 @@ def _assumption_lines(case: Case) -> list[str]:
     ]
 
 
-def _stands_in(document: Mapping[str, Any], path: str) -> bool:
-    """Whether a document gives a field."""
-    name, _, rest = path.partition(".")
-    inside = document.get(name)
-    return inside is not None if not rest else isinstance(inside, Mapping) and _stands_in(inside, rest)
-
-
 def check_report(case: Case) -> str:
     """What a case says, and what is assumed."""
     given, of_record = [], []
@@ -332,7 +325,7 @@ def check_report(case: Case) -> str:
         if declaration.section is not None or value is None or path.startswith(("size.", "sweep.", "uncertainty")):
             continue
         line = wrapped(f"  {path} = ", display(value, declaration), rest="      ")
-        if _stands_in(case.given, path):
+        if typed_at(case.given, path) is not None:
             given.append(line)
         elif path.startswith("module.") and path not in case.assumed and value != declaration.default:
             of_record.append(line)
